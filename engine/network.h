@@ -1,0 +1,122 @@
+/* SPDX-License-Identifier: MIT */
+/*
+ * The tree of gauges, reaches and points, routed as one, many members at once.
+ *
+ * A river is a set of nodes joined by reaches that run downstream. A node where no reach ends must be a gauge: its inflow is
+ * given. Where several reaches end, their outflows add (a confluence). At most one reach leaves a node.
+ * Side inflow enters a reach at a stated place, as a constant or as a share of a gauge's flow some time later. A point lies
+ * on a reach, anywhere from its head (at_m 0) to its foot (at_m = length).
+ *
+ * Members are innermost in every array. They come in roughness groups: all members of a group share tables built with the
+ * roughness of every section times the group's factor. Member index = group * members_per_group + place within the group.
+ */
+#ifndef FOREWATER_ENGINE_NETWORK_H
+#define FOREWATER_ENGINE_NETWORK_H
+
+#include <stddef.h>
+#include <stdint.h>
+
+#include "engine/section.h"
+#include "engine/status.h"
+
+enum network_method {
+    NETWORK_MUSKINGUM_CUNGE = 0, /* storage form, volume-conserving: the default */
+    NETWORK_KINEMATIC,           /* the same with no diffusion of its own */
+    NETWORK_KINEMATIC_LINEAR     /* the published linear scheme: rival and check */
+};
+
+#define NETWORK_NONE ((size_t)-1)
+
+struct network_reach {
+    const char *id;
+    size_t from_node, to_node;
+    double length_m;
+    double slope_m_per_m;
+    const struct section *section;
+    double cell_m; /* wanted cell length; 0: chosen from celerity and time step */
+    enum network_method method;
+};
+
+struct network_side_inflow {
+    size_t reach_index;
+    double at_m;
+    size_t share_of_gauge; /* index into gauge_node, or NETWORK_NONE for a constant */
+    double share;          /* of the gauge's flow */
+    double delay_s;
+    double constant_m3s;
+};
+
+struct network_stage_rating { /* a point's own level for a flow: straight lines between rows */
+    size_t row_count;         /* 0: the section's normal stage instead */
+    const double *discharge_m3s;
+    const double *stage_m;    /* above the point's invert */
+};
+
+struct network_point {
+    const char *id;
+    size_t reach_index;
+    double at_m;
+    struct network_stage_rating stage_rating;
+};
+
+struct network_river { /* the caller's; must outlive the network */
+    size_t node_count;
+    size_t gauge_count;
+    const size_t *gauge_node;
+    size_t reach_count;
+    const struct network_reach *reaches;
+    size_t side_inflow_count;
+    const struct network_side_inflow *side_inflows;
+    size_t point_count;
+    const struct network_point *points;
+};
+
+struct network_options {
+    double time_step_s;
+    size_t fixed_cell_count; /* per reach; 0: chosen */
+    size_t group_count;
+    const double *roughness_factors; /* group_count */
+    size_t members_per_group;
+    double largest_discharge_m3s; /* the tables reach several octaves above it */
+    double typical_peak_m3s;      /* cells are sized by the celerity at this flow; 0: largest */
+};
+
+struct network_fault {
+    char text[256]; /* what and where: "reach 'x': ..." */
+};
+
+struct network;
+
+/*
+ * FW_BAD_INPUT  a loop, an orphan, a node without inflow, a gauge in mid-river, an index outside, a shape or number
+ *               refused; fault_out says which. FW_NO_MEMORY.
+ * The only allocations of this room are here. The caller destroys.
+ */
+FW_MUST_CHECK enum fw_status network_create(const struct network_river *river, const struct network_options *options,
+                                            struct network **network_out, struct network_fault *fault_out);
+void network_destroy(struct network *network); /* NULL is fine */
+
+size_t network_member_count(const struct network *network);
+size_t network_cell_count(const struct network *network, size_t reach_index);
+
+/* Steady flow everywhere, from one inflow per gauge and member: inflow_m3s[gauge][member]. Delay lines are filled with it. */
+FW_MUST_CHECK enum fw_status network_start_steady(struct network *network, const double inflow_m3s[]);
+
+/*
+ * Routes step_count steps on from the present state.
+ *
+ *   inflow_m3s           [gauge][step_count + 1][member]; step 0 is the present and must equal the last inflow given
+ *   point_discharge_m3s  [point][step_count + 1][member]; step 0 is the present
+ * Inflows must be finite and not negative (FW_BAD_INPUT, the state unchanged). Allocates nothing.
+ */
+FW_MUST_CHECK enum fw_status network_advance(struct network *network, size_t step_count, const double inflow_m3s[],
+                                             double point_discharge_m3s[]);
+
+/* Level above the point's invert for a flow there, in the tables of the member's group. */
+double network_point_stage_m(const struct network *network, size_t point_index, size_t member_index,
+                             double discharge_m3s);
+
+/* Water held between the gauges and the last nodes (all reaches), one member, m3. For volume balances. */
+double network_volume_m3(const struct network *network, size_t member_index);
+
+#endif
