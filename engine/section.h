@@ -5,6 +5,10 @@
  * Depths are measured above the lowest point of the section (its invert). Conveyance is Manning's, in SI units,
  * with the divided-channel rule: K = sum over panels of A_i R_i^(2/3) / n_i, where the vertical interface between
  * two panels is not counted in the wetted perimeter of either.
+ * What rubs: bed and banks; the outer wall at each end of a plain or a survey; nothing but the width for
+ * SECTION_WIDE, its plain included. A wall that stands where two panels meet belongs to the one on its low side.
+ * Water stands at one level across the section: a hollow behind a ridge fills from its own bed up.
+ * Widths and slopes are limits from below: exactly at bank full the plain does not count yet.
  * Source: Chow, Open-Channel Hydraulics (1959), sections 5-6, 6-5; Cunge, Holly, Verwey (1980).
  */
 #ifndef FOREWATER_ENGINE_SECTION_H
@@ -14,6 +18,8 @@
 #include <stddef.h>
 
 #include "engine/status.h"
+
+#define SECTION_GRAVITY_M_S2 9.80665
 
 enum section_shape {
     SECTION_WIDE,      /* bottom_m wide; the wetted perimeter is the width, the banks rub nothing */
@@ -29,7 +35,11 @@ struct section {
     double side_h_per_v;
     double roughness_n; /* the channel's; for SECTION_POINTS, where no panel says otherwise */
 
-    bool has_plain;       /* flood plain beside a wide, rectangle or trapezoid shape */
+    /*
+     * Flood plain beside a wide, rectangle or trapezoid shape: one flat panel with an outer wall at each end. Above
+     * it the channel keeps its bank-full width and perimeter.
+     */
+    bool has_plain;
     double plain_above_m; /* depth at which the water leaves the channel */
     double plain_width_m; /* added width, both banks together */
     double plain_roughness_n;
@@ -52,26 +62,40 @@ struct section_properties {
 };
 
 /*
- * FW_BAD_INPUT  something is missing, not finite or impossible; *fault_out (may be NULL) names the member and says why, a
- *               string that lives for ever.
+ * FW_BAD_INPUT  something is missing, not finite or impossible; *fault_out (may be NULL) names the member and says
+ *               why, a string that lives for ever.
  */
 FW_MUST_CHECK enum fw_status section_check(const struct section *section, const char **fault_out);
 
 /* All properties at one depth; all zero at or below depth 0. The section must have passed section_check. */
 void section_properties_at(const struct section *section, double depth_m, struct section_properties *properties_out);
 
-/* Steady uniform flow, K sqrt(S0). */
+/*
+ * Whether conveyance falls somewhere as the water rises, and from which depth on: water that spreads over a berm
+ * within one panel adds perimeter before area, and the divided-channel rule then takes flow away. The cure is a panel
+ * boundary at the edge of the berm.
+ */
+bool section_conveyance_falls(const struct section *section, double *from_depth_out_m);
+
+/* Steady uniform flow, K sqrt(S0); zero unless slope and depth are above zero. */
 double section_normal_discharge_m3s(const struct section *section, double slope_m_per_m, double depth_m);
 
-/* FW_BAD_INPUT  slope not positive, discharge negative or not finite. */
+/*
+ * The lowest depth that carries a discharge as steady uniform flow, to 1e-12 of itself; 0 for 0.
+ * FW_BAD_INPUT     slope not positive or not finite, discharge negative or not finite
+ * FW_OUT_OF_RANGE  no depth below 1e30 m carries it
+ */
 FW_MUST_CHECK enum fw_status section_normal_depth_m(const struct section *section, double slope_m_per_m,
                                                     double discharge_m3s, double *depth_out_m);
 
-/* The depth of least specific energy (first from below). FW_BAD_INPUT as above. */
+/*
+ * The depth of least specific energy, Q^2 B = g A^3 with the energy coefficient taken as 1; where a section has
+ * several, the lowest. Accuracy and statuses as above. Source: Chow (1959), section 4-1.
+ */
 FW_MUST_CHECK enum fw_status section_critical_depth_m(const struct section *section, double discharge_m3s,
                                                       double *depth_out_m);
 
-/* Celerity of a kinematic wave at a depth, dQ/dA = sqrt(S0) (dK/dh) / B. */
+/* Celerity of a kinematic wave, dQ/dA = sqrt(S0) (dK/dh) / B; zero unless slope and depth are above zero. */
 double section_celerity_m_s(const struct section *section, double slope_m_per_m, double depth_m);
 
 #endif

@@ -1,5 +1,5 @@
 /* SPDX-License-Identifier: MIT */
-/* Whether the reader of the published tables reads what is in them, so that the checks that lean on it mean something. */
+/* Whether the published tables are read as they stand, so that the checks that lean on them mean something. */
 #include <setjmp.h>
 #include <stdarg.h>
 #include <stddef.h>
