@@ -161,8 +161,8 @@ enum fw_status picture_add_reading(struct picture *picture, const struct reading
             *known = (struct known_reading){.reading = *reading};
         return FW_OK;
     }
-    enum fw_status status = buffer_grow(&gauge->readings, &gauge->reading_capacity, gauge->reading_count,
-                                        sizeof *gauge->readings);
+    enum fw_status status =
+        buffer_grow(&gauge->readings, &gauge->reading_capacity, gauge->reading_count, sizeof *gauge->readings);
     if (status != FW_OK)
         return status;
     memmove(&gauge->readings[place + 1], &gauge->readings[place],

@@ -84,7 +84,7 @@ struct settings_point {
     size_t deck_mark;            /* index: the first mark named as the deck ("deck": true), else the closing mark */
     bool has_crew;               /* false: the point is watched, nobody closes it */
     struct advice_policy policy;
-    double reopen_below_m;       /* below the closing mark by this much */
+    double reopen_below_m;       /* below the deck mark by this much */
     int64_t reopen_and_reclose_s; /* how long reopening and closing again takes */
     const char *detour_over;     /* point id or NULL */
     size_t access_over_count;
