@@ -2,6 +2,8 @@
 /*
  * Until when a point rests on measured water: the first time at which two futures along the edges of a stated
  * envelope differ there by more than a stated level.
+ *
+ * Never the distance over a wave speed: on a channel with plains a later, bigger rise overtakes the water before it.
  */
 #ifndef FOREWATER_ENGINE_HORIZON_H
 #define FOREWATER_ENGINE_HORIZON_H
@@ -9,8 +11,10 @@
 #include <stddef.h>
 
 /*
- *   low_stage_m, high_stage_m  stages at step 0 .. count-1, stride doubles apart (members innermost)
+ *   low_stage_m, high_stage_m  stages at step 0 .. count-1, stride doubles apart (members innermost): the first
+ *                              value of each is its member's; which of the two lies above does not matter
  * Returns the time from step 0, straight line between steps; INFINITY when they never part by more than tolerance_m.
+ * What cannot be judged counts as parted: 0 without a step, and the last good step before a stage that is not finite.
  */
 double horizon_measured_until_s(size_t count, size_t stride, const double low_stage_m[], const double high_stage_m[],
                                 double step_s, double tolerance_m);
