@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: MIT */
 /*
  * Reads one of the published tables in tests/reference/: lines that begin with '#', then a line of column names, then
- * rows (RFC 4180 quoting). Any fault (no such file, column or row, a ragged row, a cell that is not a number) fails the
- * test that asked, naming file, row and column. Include <cmocka.h> with its companions first.
+ * rows (RFC 4180 quoting). Any fault (no such file, column or row, a ragged row, a cell that is not a number) fails
+ * the test that asked, naming file, row and column. Include <cmocka.h> with its companions first.
  *
  *     struct reference_table table = reference_table_load("flood_wye1960.csv");
  *     double *inflow_m3s = reference_table_column(&table, "inflow");   table.row_count values, to be freed
@@ -66,7 +66,7 @@ static inline char *reference_table_read_file(const struct reference_table *tabl
     return text;
 }
 
-/* Ends the cell that begins at *at, undoes its quoting in place and moves *at to what follows; gives the separator. */
+/* Ends the cell that begins at *at, undoes its quoting in place, moves *at to what follows; gives the separator. */
 static inline char reference_table_end_cell(char **at)
 {
     char *from = *at, *to = *at;
