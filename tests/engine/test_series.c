@@ -278,8 +278,8 @@ static double steepening_m(int64_t utc_s)
 
 /*
  * Over a window the least-squares line through a parabola has the slope of its middle: 0.1 m/h2 x 3.5 h at the end of
- * four hours, with a window of one. Readings that turn from 15 to 1 minute inside the window may miss it by a tenth of
- * what the rate itself changes in 15 minutes, 0.025 m/h; were all samples weighed alike, they would by a third.
+ * four hours, with a window of one. Readings that turn from 15 to 1 minute inside that window may miss it by a tenth
+ * of what the rate itself changes in 15 minutes, 0.025 m/h; were all samples weighed alike, they would by a third.
  */
 static void a_logger_that_reads_more_often_does_not_change_the_rate(void **state)
 {
