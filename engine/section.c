@@ -386,10 +386,6 @@ static double log_excess(const struct sought *sought, double depth_m, double *sl
     struct section_properties at;
     double width_rate;
     measure(sought->section, depth_m, &at, &width_rate);
-    if (!(at.area_m2 > 0)) { /* so shallow that the area is below the smallest number */
-        *slope_out = 0;
-        return -(double)INFINITY;
-    }
     if (sought->is_critical) {
         *slope_out = 0.5 * depth_m * (3 * at.top_width_m / at.area_m2 - width_rate / at.top_width_m);
         return log(at.area_m2 * sqrt(at.area_m2 / at.top_width_m) / sought->wanted);

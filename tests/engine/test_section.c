@@ -478,6 +478,22 @@ static void no_flow_has_no_depth(void **state)
     assert_true(normal_m == 0 && critical_m == 0);
 }
 
+/* Where conveyance is below the smallest number the search must still end, with a depth that means "dry". */
+static void the_smallest_numbers_still_have_a_depth(void **state)
+{
+    (void)state;
+    static const double discharges_m3s[] = {5e-324, 1e-310, 1e-300, 1e-200};
+    for (size_t index = 0; index < SECTION_COUNT; index++)
+        for (size_t flow = 0; flow < sizeof discharges_m3s / sizeof *discharges_m3s; flow++) {
+            const struct section *section = every_section[index].section;
+            double normal_m = -1, critical_m = -1;
+            assert_int_equal(section_normal_depth_m(section, 0.0024, discharges_m3s[flow], &normal_m), FW_OK);
+            assert_int_equal(section_normal_depth_m(section, 1e300, discharges_m3s[flow], &normal_m), FW_OK);
+            assert_int_equal(section_critical_depth_m(section, discharges_m3s[flow], &critical_m), FW_OK);
+            assert_true(normal_m >= 0 && normal_m < 1e-60 && critical_m >= 0 && critical_m < 1e-60);
+        }
+}
+
 static void impossible_flows_and_slopes_are_refused(void **state)
 {
     (void)state;
@@ -746,6 +762,7 @@ int main(void)
         cmocka_unit_test(closed_forms_of_depth_are_met),
         cmocka_unit_test(where_conveyance_falls_the_lowest_depth_that_carries_the_flow_is_given),
         cmocka_unit_test(no_flow_has_no_depth),
+        cmocka_unit_test(the_smallest_numbers_still_have_a_depth),
         cmocka_unit_test(impossible_flows_and_slopes_are_refused),
         cmocka_unit_test(published_normal_and_critical_depths_are_met),
         cmocka_unit_test(published_kinematic_celerities_of_a_wide_channel_are_met),
