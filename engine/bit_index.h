@@ -16,7 +16,7 @@
 enum { BIT_INDEX_ROWS_PER_OCTAVE = 32, BIT_INDEX_SHIFT = 52 - 5 };
 
 struct bit_index {
-    double lowest;  /* the argument is held between these two before its bits are read */
+    double lowest; /* the argument is held between these two before its bits are read */
     double highest;
     uint64_t base;
     size_t row_count;

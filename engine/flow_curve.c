@@ -125,14 +125,13 @@ static enum fw_status allocate_nodes(struct flow_curve *curve, size_t node_count
     return curve->depth_m == NULL || curve->area_m2 == NULL || curve->conveyance_m3s == NULL ? FW_NO_MEMORY : FW_OK;
 }
 
-enum fw_status flow_curve_init(struct flow_curve *curve, const struct section *section, double smallest_conveyance_m3s,
-                               double largest_conveyance_m3s)
+enum fw_status flow_curve_init(struct flow_curve *curve, const struct section *section,
+                               double smallest_conveyance_m3s, double largest_conveyance_m3s)
 {
     double *bend_m = NULL;
     double bottom, top;
     memset(curve, 0, sizeof *curve);
-    enum fw_status status =
-        bracket_depths(section, smallest_conveyance_m3s, largest_conveyance_m3s, &bottom, &top);
+    enum fw_status status = bracket_depths(section, smallest_conveyance_m3s, largest_conveyance_m3s, &bottom, &top);
     if (status != FW_OK)
         return status;
 

@@ -30,8 +30,8 @@ struct flow_curve {
 struct flow_curve_place {
     double depth_m;
     double area_m2;
-    double top_width_m;           /* dA/dh */
-    double conveyance_slope_m_s;  /* dK/dA; times sqrt(S0)/f it is the celerity */
+    double top_width_m;          /* dA/dh */
+    double conveyance_slope_m_s; /* dK/dA; times sqrt(S0)/f it is the celerity */
 };
 
 /*

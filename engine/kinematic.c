@@ -42,8 +42,8 @@ enum fw_status kinematic_linear_step(const struct kinematic_channel *channel, si
         if (mean <= 0.0)
             continue; /* dry, and stays so */
         double held = alpha_beta * pow(mean, channel->beta - 1.0);
-        discharge[i] = (dt_per_dx * discharge[i - 1] + held * discharge[i] + channel->time_step * lateral) /
-                       (dt_per_dx + held);
+        discharge[i] =
+            (dt_per_dx * discharge[i - 1] + held * discharge[i] + channel->time_step * lateral) / (dt_per_dx + held);
     }
     return FW_OK;
 }

@@ -20,7 +20,8 @@ static void potentials_clear(struct potentials *potentials)
 }
 
 /* The share of E that one interval of the curve adds. Differences, not point values of c, which jumps at bank full. */
-static double matched_increment_m3(const struct muskingum_cunge_reach *reach, size_t node, double discharge_per_conveyance)
+static double matched_increment_m3(const struct muskingum_cunge_reach *reach, size_t node,
+                                   double discharge_per_conveyance)
 {
     const struct flow_curve *curve = reach->curve;
     double depth_rise = curve->depth_m[node + 1] - curve->depth_m[node];
@@ -39,7 +40,8 @@ static double matched_increment_m3(const struct muskingum_cunge_reach *reach, si
 }
 
 /* E at the lowest node, below which H and b run straight to the origin. */
-static double matched_start_m3(const struct muskingum_cunge_reach *reach, size_t node, double discharge_per_conveyance)
+static double matched_start_m3(const struct muskingum_cunge_reach *reach, size_t node,
+                               double discharge_per_conveyance)
 {
     const struct flow_curve *curve = reach->curve;
     double area = curve->area_m2[node];
@@ -76,7 +78,8 @@ static enum fw_status potentials_init(const struct muskingum_cunge_reach *reach,
     const struct flow_curve *curve = reach->curve;
     double discharge_per_conveyance = sqrt(reach->slope_m_per_m) / reach->roughness_factor;
     size_t first = 0;
-    while (first < curve->count && curve->conveyance_m3s[first] * discharge_per_conveyance < reach->smallest_discharge_m3s)
+    while (first < curve->count &&
+           curve->conveyance_m3s[first] * discharge_per_conveyance < reach->smallest_discharge_m3s)
         first++;
     if (first + 2 > curve->count)
         return FW_BAD_INPUT;
@@ -91,8 +94,8 @@ static enum fw_status potentials_init(const struct muskingum_cunge_reach *reach,
 }
 
 /* Passing volume and b at a potential that is not less than the one asked for before; *node remembers the place. */
-static void read_potentials(const struct potentials *potentials, double potential_m3, size_t *node, double *passing_out_m3,
-                            double *b_out_m3)
+static void read_potentials(const struct potentials *potentials, double potential_m3, size_t *node,
+                            double *passing_out_m3, double *b_out_m3)
 {
     const double *h = potentials->potential_m3;
     while (*node + 2 < potentials->count && h[*node + 1] <= potential_m3)
@@ -124,8 +127,7 @@ static void fill_rows(const struct potentials *potentials, struct muskingum_cung
         read_potentials(potentials, end, &node, &end_passing, &end_b);
         double outflow_1 = (end_passing - passing) / (end - start);
         double b_1 = (end_b - b) / (end - start);
-        table->rows[row] =
-            (struct muskingum_cunge_row){passing - outflow_1 * start, outflow_1, b - b_1 * start, b_1};
+        table->rows[row] = (struct muskingum_cunge_row){passing - outflow_1 * start, outflow_1, b - b_1 * start, b_1};
         table->row_outflow[row] = passing;
         start = end;
         passing = end_passing;
@@ -151,7 +153,8 @@ static bool is_positive(double value)
     return value > 0.0 && isfinite(value);
 }
 
-enum fw_status muskingum_cunge_table_init(struct muskingum_cunge_table *table, const struct muskingum_cunge_reach *reach)
+enum fw_status muskingum_cunge_table_init(struct muskingum_cunge_table *table,
+                                          const struct muskingum_cunge_reach *reach)
 {
     struct potentials potentials = {0};
     memset(table, 0, sizeof *table);
@@ -230,8 +233,8 @@ void muskingum_cunge_step(const struct muskingum_cunge_table *table, size_t cell
     }
 }
 
-double muskingum_cunge_steady_state_m3(const struct muskingum_cunge_table *table, double lateral_m3, double *passing_m3,
-                                       double *b_m3)
+double muskingum_cunge_steady_state_m3(const struct muskingum_cunge_table *table, double lateral_m3,
+                                       double *passing_m3, double *b_m3)
 {
     double out_m3 = *passing_m3 + lateral_m3;
     double potential = muskingum_cunge_potential_m3(table, out_m3);

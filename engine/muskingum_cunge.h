@@ -43,10 +43,10 @@ struct muskingum_cunge_table {
     double cell_m;
     struct bit_index by_potential; /* H to row */
     struct muskingum_cunge_row *rows;
-    struct bit_index by_outflow;   /* dt O to the row it begins in */
+    struct bit_index by_outflow; /* dt O to the row it begins in */
     uint32_t *first_row;
-    double *row_outflow;           /* dt O at which a row begins; one more than rows, the last infinite */
-    double largest_discharge_m3s;  /* where the tables end and the last row is carried on */
+    double *row_outflow;          /* dt O at which a row begins; one more than rows, the last infinite */
+    double largest_discharge_m3s; /* where the tables end and the last row is carried on */
 };
 
 struct muskingum_cunge_reach { /* what a table is built from */
@@ -85,7 +85,7 @@ void muskingum_cunge_step(const struct muskingum_cunge_table *table, size_t cell
  * The state that a steady flow holds.
  *   lateral_m3  into the cell each step; passing_m3 and b_m3 as in a step, for one member
  */
-double muskingum_cunge_steady_state_m3(const struct muskingum_cunge_table *table, double lateral_m3, double *passing_m3,
-                                       double *b_m3);
+double muskingum_cunge_steady_state_m3(const struct muskingum_cunge_table *table, double lateral_m3,
+                                       double *passing_m3, double *b_m3);
 
 #endif

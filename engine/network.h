@@ -26,6 +26,7 @@ enum network_method {
 };
 
 #define NETWORK_NONE ((size_t)-1)
+#define NETWORK_LARGEST_INFLOW_M3S 1e9 /* more than that at one place is a mistake of units, not a flood */
 
 struct network_reach {
     const char *id;
@@ -37,7 +38,7 @@ struct network_reach {
     enum network_method method;
 };
 
-struct network_side_inflow {
+struct network_side_inflow { /* enters the cell that holds at_m, at the mean of its flows at both ends of a step */
     size_t reach_index;
     double at_m;
     size_t share_of_gauge; /* index into gauge_node, or NETWORK_NONE for a constant */
@@ -46,10 +47,11 @@ struct network_side_inflow {
     double constant_m3s;
 };
 
-struct network_stage_rating { /* a point's own level for a flow: straight lines between rows */
-    size_t row_count;         /* 0: the section's normal stage instead */
-    const double *discharge_m3s;
-    const double *stage_m;    /* above the point's invert */
+struct network_stage_rating {    /* a point's own level for a flow: straight lines between rows */
+    size_t row_count;            /* 0: the section's normal stage instead */
+    const double *discharge_m3s; /* rising; below the first row its stage stands */
+    const double
+        *stage_m; /* above the point's invert, never falling; beyond the last row the last line is carried on */
 };
 
 struct network_point {
@@ -88,8 +90,10 @@ struct network_fault {
 struct network;
 
 /*
- * FW_BAD_INPUT  a loop, an orphan, a node without inflow, a gauge in mid-river, an index outside, a shape or number
- *               refused; fault_out says which. FW_NO_MEMORY.
+ * A new network is dry. Cells: the celerity at typical_peak_m3s times the time step, 3 to 400 of them to a reach.
+ *
+ * FW_BAD_INPUT  a loop, an orphan, a node without inflow, a gauge in mid-river, a fork, an index outside, a shape or number
+ *               refused; fault_out (written only then) says which, by the reach's or point's id. FW_NO_MEMORY.
  * The only allocations of this room are here. The caller destroys.
  */
 FW_MUST_CHECK enum fw_status network_create(const struct network_river *river, const struct network_options *options,
@@ -99,7 +103,10 @@ void network_destroy(struct network *network); /* NULL is fine */
 size_t network_member_count(const struct network *network);
 size_t network_cell_count(const struct network *network, size_t reach_index);
 
-/* Steady flow everywhere, from one inflow per gauge and member: inflow_m3s[gauge][member]. Delay lines are filled with it. */
+/*
+ * Steady flow everywhere, from one inflow per gauge and member: inflow_m3s[gauge][member]. Delay lines are filled with it.
+ * FW_BAD_INPUT: an inflow negative, not finite or above NETWORK_LARGEST_INFLOW_M3S; the state is unchanged then.
+ */
 FW_MUST_CHECK enum fw_status network_start_steady(struct network *network, const double inflow_m3s[]);
 
 /*
@@ -107,7 +114,9 @@ FW_MUST_CHECK enum fw_status network_start_steady(struct network *network, const
  *
  *   inflow_m3s           [gauge][step_count + 1][member]; step 0 is the present and must equal the last inflow given
  *   point_discharge_m3s  [point][step_count + 1][member]; step 0 is the present
- * Inflows must be finite and not negative (FW_BAD_INPUT, the state unchanged). Allocates nothing.
+ * Several calls one after another give what one call gives, bit for bit. Allocates nothing.
+ * FW_BAD_INPUT: an inflow negative, not finite or above NETWORK_LARGEST_INFLOW_M3S, or step 0 is not the present; the state is
+ * unchanged then.
  */
 FW_MUST_CHECK enum fw_status network_advance(struct network *network, size_t step_count, const double inflow_m3s[],
                                              double point_discharge_m3s[]);
@@ -116,7 +125,46 @@ FW_MUST_CHECK enum fw_status network_advance(struct network *network, size_t ste
 double network_point_stage_m(const struct network *network, size_t point_index, size_t member_index,
                              double discharge_m3s);
 
-/* Water held between the gauges and the last nodes (all reaches), one member, m3. For volume balances. */
+/*
+ * Water held between the gauges and the last nodes (all reaches), one member, m3. It balances to rounding with inflows, side
+ * inflows and outflows summed by the trapezoidal rule (but not with NETWORK_KINEMATIC_LINEAR, which conserves nothing).
+ */
 double network_volume_m3(const struct network *network, size_t member_index);
+
+/*
+ * Steps so far in which a member's flow at some reach's head or foot lay above the tables (32 times largest_discharge_m3s;
+ * their last line is carried on there), and in which it was negative (which must not be). Over all members.
+ */
+size_t network_steps_above_tables(const struct network *network);
+size_t network_steps_below_zero(const struct network *network);
+
+struct network_reach_steps {
+    size_t cell_count;
+    double cell_m;
+    double time_step_s;
+};
+
+struct network_reach_flow { /* of steady uniform flow in a reach */
+    double discharge_m3s;
+    double depth_m;
+    double top_width_m;
+    double velocity_m_s;
+    double celerity_m_s;  /* of a flood wave, dQ/dA */
+    double travel_time_s; /* length / celerity */
+    double diffusivity_m2_s;
+    double courant_number; /* celerity times time step by cell length */
+};
+
+/*
+ * What a reach is computed with, and what each of some flows does in it.
+ *   roughness_factor  on the section's roughness, 1 for as given
+ *   flow_out          flow_count
+ * FW_BAD_INPUT: an index outside, a flow or factor not positive or not finite; nothing is written then.
+ */
+FW_MUST_CHECK enum fw_status network_reach_summary(const struct network *network, size_t reach_index,
+                                                   double roughness_factor, size_t flow_count,
+                                                   const double discharge_m3s[],
+                                                   struct network_reach_steps *steps_out,
+                                                   struct network_reach_flow flow_out[]);
 
 #endif
