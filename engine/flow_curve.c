@@ -47,7 +47,8 @@ static int compare_doubles(const void *left, const void *right)
     return (a > b) - (a < b);
 }
 
-/* Sorted depths from bottom to top: the even ones, and the bends instead of even ones too near to them. Returns how many. */
+/* Sorted depths from bottom to top: the even ones, and the bends instead of even ones too near to them. Returns how
+ * many. */
 static size_t merge_depths(size_t even_count, double bottom_m, double ratio, size_t bend_count, const double bend_m[],
                            double depth_m[])
 {

@@ -3,11 +3,11 @@
  * A cross-section as a curve: depth, area and conveyance, each rising with the next, finely spaced.
  *
  * Steady uniform flow at bed slope S0 and with every roughness times f is Q = K sqrt(S0) / f, so one curve serves all
- * roughness groups of a reach. Depths are spaced evenly in their logarithm; depths at which the outline bends (bank full, the
- * surveyed points) are in it exactly.
+ * roughness groups of a reach. Depths are spaced evenly in their logarithm; depths at which the outline bends (bank
+ * full, the surveyed points) are in it exactly.
  *
- * Where the outline widens suddenly within one panel the formula lets conveyance fall while the water rises. Such a dip is
- * bridged: conveyance rises at least as the square root of depth (any real channel: at least as depth itself).
+ * Where the outline widens suddenly within one panel the formula lets conveyance fall while the water rises. Such a
+ * dip is bridged: conveyance rises at least as the square root of depth (any real channel: at least as depth itself).
  */
 #ifndef FOREWATER_ENGINE_FLOW_CURVE_H
 #define FOREWATER_ENGINE_FLOW_CURVE_H
@@ -47,8 +47,9 @@ void flow_curve_at(const struct flow_curve *curve, double conveyance_m3s, struct
 double flow_curve_depth_m(const struct flow_curve *curve, double conveyance_m3s);
 
 /*
- * Hydraulic diffusivity of a flood wave, Q / (2 B S0) (1 - (m - 1)^2 Fr^2), m = c A / Q, never less than a twentieth of its
- * first factor. Source: Cunge (1969); the inertia term from the linearised full equations (Ponce and Simons 1977).
+ * Hydraulic diffusivity of a flood wave, Q / (2 B S0) (1 - (m - 1)^2 Fr^2), m = c A / Q, never less than a twentieth
+ * of its first factor. Source: Cunge (1969); the inertia term from the linearised full equations (Ponce and Simons
+ * 1977).
  */
 double flow_curve_diffusivity_m2_s(double discharge_m3s, double area_m2, double top_width_m, double celerity_m_s,
                                    double slope_m_per_m);

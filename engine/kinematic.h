@@ -5,8 +5,8 @@
  *     Q[i+1][j+1] = (dt/dx Q[i][j+1] + alpha beta Qm^(beta-1) Q[i+1][j] + dt qm) / (dt/dx + alpha beta Qm^(beta-1)),
  *     Qm = (Q[i+1][j] + Q[i][j+1]) / 2,   A = alpha Q^beta
  * Source: Chow, Maidment and Mays, Applied Hydrology (1988), section 9.6, Example 9.6.1.
- * It does not conserve volume: never use it for a balance. In a dry cell (Qm = 0) half the cell's side inflow stands for Qm, and
- * without side inflow the cell stays dry.
+ * It does not conserve volume: never use it for a balance. In a dry cell (Qm = 0) half the cell's side inflow stands
+ * for Qm, and without side inflow the cell stays dry.
  */
 #ifndef FOREWATER_ENGINE_KINEMATIC_H
 #define FOREWATER_ENGINE_KINEMATIC_H

@@ -19,7 +19,8 @@ static void potentials_clear(struct potentials *potentials)
     free(potentials->b_m3);
 }
 
-/* The share of E that one interval of the curve adds. Differences, not point values of c, which jumps at bank full. */
+/* The share of E that one interval of the curve adds. Differences, not point values of c, which jumps at bank
+ * full. */
 static double matched_increment_m3(const struct muskingum_cunge_reach *reach, size_t node,
                                    double discharge_per_conveyance)
 {
@@ -133,7 +134,7 @@ static void fill_rows(const struct potentials *potentials, struct muskingum_cung
         passing = end_passing;
         b = end_b;
     }
-    table->row_outflow[row_count] = INFINITY;
+    table->row_outflow[row_count] = (double)INFINITY;
 }
 
 static void fill_outflow_index(struct muskingum_cunge_table *table)

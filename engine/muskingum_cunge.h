@@ -7,13 +7,13 @@
  *     H(Q) = (dx A(Q) + dt Q) / 2 + E(Q),      b(Q) = (dx A(Q) + dt Q) / 2 - E(Q)
  * one step from old to new (primed) values is
  *     H(O') = H(O) - dt O + b(I) + dt I' - b(I') + lateral volume.
- * It is the box scheme whose numerical diffusion equals D at every flow, written with potentials, so that volume telescopes.
- * The max() keeps it monotone: the least diffusion a two-point scheme may have (Godunov 1959). Source of the matching:
- * Cunge (1969), Ponce and Yevjevich (1978); of conservative forms: Todini (2007), Price (2009); derived in
- * docs/hydraulics-routing.md.
+ * It is the box scheme whose numerical diffusion equals D at every flow, written with potentials, so that volume
+ * telescopes. The max() keeps it monotone: the least diffusion a two-point scheme may have (Godunov 1959). Source of
+ * the matching: Cunge (1969), Ponce and Yevjevich (1978); of conservative forms: Todini (2007), Price (2009);
+ * derived in docs/hydraulics-routing.md.
  *
- * A cell's whole memory is one double, S = H(O) - dt O + b(I), and S' = S + dt I' - dt O' + lateral volume, exactly: volume is
- * conserved to rounding however coarse the tables are. What a cell stores is dx (A_I + A_O) / 2 + E_O - E_I
+ * A cell's whole memory is one double, S = H(O) - dt O + b(I), and S' = S + dt I' - dt O' + lateral volume, exactly:
+ * volume is conserved to rounding however coarse the tables are. What a cell stores is dx (A_I + A_O) / 2 + E_O - E_I
  * = S - (dt I - dt O) / 2, which balances with volumes taken by the trapezoidal rule.
  *
  * The kinematic wave is the same kernel with H = dx A + dt Q, b = 0 (first-order upwind).
@@ -59,14 +59,14 @@ struct muskingum_cunge_reach { /* what a table is built from */
     enum muskingum_cunge_diffusion diffusion;
 };
 
-/* FW_BAD_INPUT  a number not positive or not finite, or fewer than two points of the curve above the smallest discharge;
- * FW_NO_MEMORY. The caller clears. */
+/* FW_BAD_INPUT  a number not positive or not finite, or fewer than two points of the curve above the smallest
+ * discharge; FW_NO_MEMORY. The caller clears. */
 FW_MUST_CHECK enum fw_status muskingum_cunge_table_init(struct muskingum_cunge_table *table,
                                                         const struct muskingum_cunge_reach *reach);
 void muskingum_cunge_table_clear(struct muskingum_cunge_table *table); /* an all-zero one is fine */
 
-/* b at the head of a reach, and H of a steady flow, for a passing volume: the tables of the cells read backwards, so that a
- * reach cut in two at a cell boundary routes as one. */
+/* b at the head of a reach, and H of a steady flow, for a passing volume: the tables of the cells read backwards, so
+ * that a reach cut in two at a cell boundary routes as one. */
 double muskingum_cunge_head_b(const struct muskingum_cunge_table *table, double passing_m3);
 double muskingum_cunge_potential_m3(const struct muskingum_cunge_table *table, double passing_m3);
 

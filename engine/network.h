@@ -2,13 +2,14 @@
 /*
  * The tree of gauges, reaches and points, routed as one, many members at once.
  *
- * A river is a set of nodes joined by reaches that run downstream. A node where no reach ends must be a gauge: its inflow is
- * given. Where several reaches end, their outflows add (a confluence). At most one reach leaves a node.
- * Side inflow enters a reach at a stated place, as a constant or as a share of a gauge's flow some time later. A point lies
- * on a reach, anywhere from its head (at_m 0) to its foot (at_m = length).
+ * A river is a set of nodes joined by reaches that run downstream. A node where no reach ends must be a gauge: its
+ * inflow is given. Where several reaches end, their outflows add (a confluence). At most one reach leaves a node.
+ * Side inflow enters a reach at a stated place, as a constant or as a share of a gauge's flow some time later. A
+ * point lies on a reach, anywhere from its head (at_m 0) to its foot (at_m = length).
  *
- * Members are innermost in every array. They come in roughness groups: all members of a group share tables built with the
- * roughness of every section times the group's factor. Member index = group * members_per_group + place within the group.
+ * Members are innermost in every array. They come in roughness groups: all members of a group share tables built
+ * with the roughness of every section times the group's factor. Member index = group * members_per_group + place
+ * within the group.
  */
 #ifndef FOREWATER_ENGINE_NETWORK_H
 #define FOREWATER_ENGINE_NETWORK_H
@@ -92,8 +93,9 @@ struct network;
 /*
  * A new network is dry. Cells: the celerity at typical_peak_m3s times the time step, 3 to 400 of them to a reach.
  *
- * FW_BAD_INPUT  a loop, an orphan, a node without inflow, a gauge in mid-river, a fork, an index outside, a shape or number
- *               refused; fault_out (written only then) says which, by the reach's or point's id. FW_NO_MEMORY.
+ * FW_BAD_INPUT  a loop, an orphan, a node without inflow, a gauge in mid-river, a fork, an index outside, a shape or
+ *               number refused; fault_out (written only then) says which, by the reach's or point's id.
+ * FW_NO_MEMORY.
  * The only allocations of this room are here. The caller destroys.
  */
 FW_MUST_CHECK enum fw_status network_create(const struct network_river *river, const struct network_options *options,
@@ -104,8 +106,9 @@ size_t network_member_count(const struct network *network);
 size_t network_cell_count(const struct network *network, size_t reach_index);
 
 /*
- * Steady flow everywhere, from one inflow per gauge and member: inflow_m3s[gauge][member]. Delay lines are filled with it.
- * FW_BAD_INPUT: an inflow negative, not finite or above NETWORK_LARGEST_INFLOW_M3S; the state is unchanged then.
+ * Steady flow everywhere, from one inflow per gauge and member: inflow_m3s[gauge][member]. Delay lines are filled
+ * with it. FW_BAD_INPUT: an inflow negative, not finite or above NETWORK_LARGEST_INFLOW_M3S; the state is unchanged
+ * then.
  */
 FW_MUST_CHECK enum fw_status network_start_steady(struct network *network, const double inflow_m3s[]);
 
@@ -115,8 +118,8 @@ FW_MUST_CHECK enum fw_status network_start_steady(struct network *network, const
  *   inflow_m3s           [gauge][step_count + 1][member]; step 0 is the present and must equal the last inflow given
  *   point_discharge_m3s  [point][step_count + 1][member]; step 0 is the present
  * Several calls one after another give what one call gives, bit for bit. Allocates nothing.
- * FW_BAD_INPUT: an inflow negative, not finite or above NETWORK_LARGEST_INFLOW_M3S, or step 0 is not the present; the state is
- * unchanged then.
+ * FW_BAD_INPUT: an inflow negative, not finite or above NETWORK_LARGEST_INFLOW_M3S, or step 0 is not the present;
+ * the state is unchanged then.
  */
 FW_MUST_CHECK enum fw_status network_advance(struct network *network, size_t step_count, const double inflow_m3s[],
                                              double point_discharge_m3s[]);
@@ -126,14 +129,16 @@ double network_point_stage_m(const struct network *network, size_t point_index, 
                              double discharge_m3s);
 
 /*
- * Water held between the gauges and the last nodes (all reaches), one member, m3. It balances to rounding with inflows, side
- * inflows and outflows summed by the trapezoidal rule (but not with NETWORK_KINEMATIC_LINEAR, which conserves nothing).
+ * Water held between the gauges and the last nodes (all reaches), one member, m3. It balances to rounding with
+ * inflows, side inflows and outflows summed by the trapezoidal rule (but not with NETWORK_KINEMATIC_LINEAR, which
+ * conserves nothing).
  */
 double network_volume_m3(const struct network *network, size_t member_index);
 
 /*
- * Steps so far in which a member's flow at some reach's head or foot lay above the tables (32 times largest_discharge_m3s;
- * their last line is carried on there), and in which it was negative (which must not be). Over all members.
+ * Steps so far in which a member's flow at some reach's head or foot lay above the tables (32 times
+ * largest_discharge_m3s; their last line is carried on there), and in which it was negative (which must not be).
+ * Over all members.
  */
 size_t network_steps_above_tables(const struct network *network);
 size_t network_steps_below_zero(const struct network *network);

@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * One reach of a network: its cells, its tables for every roughness group, and where side inflow enters and flow is read.
+ * One reach of a network: its cells, its tables for every roughness group, and where side inflow enters and flow is
+ * read.
  *
  * State is the network's memory, state_count(reach) doubles to a member:
  *   storage form   [cell][member]
