@@ -20,6 +20,6 @@ struct clock clock_real(void);
 struct clock clock_driven(int64_t start_utc_s);
 int64_t clock_world_utc_s(const struct clock *clock);
 void clock_advance(struct clock *clock, int64_t utc_s); /* driven only; never backwards */
-int64_t clock_machine_ms(void);                       /* CLOCK_BOOTTIME */
+int64_t clock_machine_ms(void);                         /* CLOCK_BOOTTIME */
 
 #endif

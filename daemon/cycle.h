@@ -28,16 +28,16 @@ struct ledger_entry {
 
 struct delta {
     const struct picture *before;
-    struct picture *next;                  /* the delta's until taken */
-    const struct news *news;               /* the raw payloads to keep */
-    struct reading *readings;              /* new ones, numbered */
+    struct picture *next;     /* the delta's until taken */
+    const struct news *news;  /* the raw payloads to keep */
+    struct reading *readings; /* new ones, numbered */
     size_t reading_count, reading_capacity;
     struct judgement *judgements;
     size_t judgement_count, judgement_capacity;
-    struct word *words;                    /* numbered */
+    struct word *words; /* numbered */
     size_t word_count, word_capacity;
-    bool keeps_forecast;                   /* next->forecast is to be stored whole */
-    size_t first_message;                  /* next->outbox from here on is new */
+    bool keeps_forecast;  /* next->forecast is to be stored whole */
+    size_t first_message; /* next->outbox from here on is new */
     struct decision *decisions;
     size_t decision_count, decision_capacity;
     struct ledger_entry ledger;
@@ -46,7 +46,8 @@ struct delta {
 
 struct cycle; /* what is kept between cycles for speed: networks and work space; no state of the river */
 
-FW_MUST_CHECK enum fw_status cycle_create(const struct settings *settings, struct cycle **cycle_out, struct fw_error *error);
+FW_MUST_CHECK enum fw_status cycle_create(const struct settings *settings, struct cycle **cycle_out,
+                                          struct fw_error *error);
 void cycle_destroy(struct cycle *cycle);
 
 /* FW_NO_MEMORY and engine faults; nothing is changed then. The caller clears the delta. */

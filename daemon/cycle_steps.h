@@ -8,7 +8,7 @@
 
 enum {
     CYCLE_FUTURES = ASSUMED_FUTURE_COUNT, /* members of a roughness group: three forecasts, two envelope edges */
-    CYCLE_ALIGN_S = 3600                  /* routing starts at whole hours, so that the same input gives the same bytes */
+    CYCLE_ALIGN_S = 3600 /* routing starts at whole hours, so that the same input gives the same bytes */
 };
 
 struct cycle {
@@ -17,15 +17,15 @@ struct cycle {
     size_t member_count;          /* groups x CYCLE_FUTURES */
     size_t forecast_column_count; /* groups x ASSUMED_FORECAST_COUNT */
     size_t *forecast_columns;
-    size_t step_capacity;         /* steps the arrays can hold */
+    size_t step_capacity; /* steps the arrays can hold */
 
     /* of the present pass */
     int64_t start_utc_s;
-    size_t step_count;            /* from start to now + horizon */
-    bool *has_inflow;             /* [gauge]: there is something to route */
-    double *inflow_m3s;           /* [gauge][step + 1][member] */
-    double *point_m3s;            /* [point][step + 1][member] */
-    double *stage_m;              /* [point][step + 1][member], above the point's invert */
+    size_t step_count;  /* from start to now + horizon */
+    bool *has_inflow;   /* [gauge]: there is something to route */
+    double *inflow_m3s; /* [gauge][step + 1][member] */
+    double *point_m3s;  /* [point][step + 1][member] */
+    double *stage_m;    /* [point][step + 1][member], above the point's invert */
 
     /* scratch */
     int64_t *sample_utc_s;
@@ -34,10 +34,10 @@ struct cycle {
     struct quality_verdict *verdicts;
     size_t *sample_index;
     size_t sample_capacity;
-    double *future_m3s;           /* [step + 1] */
+    double *future_m3s; /* [step + 1] */
     double *even_value;
     enum series_origin *even_origin;
-    bool *is_above;               /* [gauge] */
+    bool *is_above; /* [gauge] */
 };
 
 static inline double cycle_quantity_discharge(const struct settings_gauge *gauge, double value)

@@ -26,6 +26,8 @@ int exit_code_of(enum fw_status status)
         return EX_TEMPFAIL;
     case FW_UNAVAILABLE:
         return EX_UNAVAILABLE;
+    case FW_BAD_SETTINGS:
+        return EX_CONFIG;
     }
     return EX_SOFTWARE;
 }

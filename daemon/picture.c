@@ -148,6 +148,24 @@ static int compare_place(const struct reading *left, const struct reading *right
     return (left->source > right->source) - (left->source < right->source);
 }
 
+bool picture_knows_reading(const struct picture *picture, const struct reading *reading)
+{
+    const struct gauge_picture *gauge = &picture->gauges[reading->gauge];
+    size_t low = 0;
+    size_t high = gauge->reading_count;
+    while (low < high) {
+        size_t middle = low + (high - low) / 2;
+        int order = compare_place(reading, &gauge->readings[middle].reading);
+        if (order == 0)
+            return gauge->readings[middle].reading.value_si == reading->value_si;
+        if (order < 0)
+            high = middle;
+        else
+            low = middle + 1;
+    }
+    return false;
+}
+
 enum fw_status picture_add_reading(struct picture *picture, const struct reading *reading, bool *was_new_out)
 {
     struct gauge_picture *gauge = &picture->gauges[reading->gauge];

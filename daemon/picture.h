@@ -15,7 +15,7 @@
 struct known_reading { /* the newest value of one source for one observed time */
     struct reading reading;
     struct quality_verdict verdict;
-    bool is_judged;      /* the verdict has been recorded */
+    bool is_judged; /* the verdict has been recorded */
 };
 
 struct gauge_picture {
@@ -24,20 +24,20 @@ struct gauge_picture {
 
     /* from the newest accepted observation; observed 0: there is none in the window */
     int64_t newest_utc_s;
-    double newest_value;        /* m or m3/s */
+    double newest_value; /* m or m3/s */
     double newest_discharge_m3s;
-    double rate_per_s;          /* of the measured quantity */
+    double rate_per_s; /* of the measured quantity */
     bool is_rising;
-    bool is_hand;               /* the newest is a person's reading */
-    bool is_unconfirmed;        /* it counts at lower confidence */
-    bool is_beyond_gauging;     /* above the highest gauging */
-    bool is_frozen;             /* newer readings came but stand still */
-    int64_t heard_utc_s;        /* newest observed time of any reading, believed or not */
-    int64_t held_utc_s;         /* observed time of a reading held unconfirmed now; 0: none */
+    bool is_hand;           /* the newest is a person's reading */
+    bool is_unconfirmed;    /* it counts at lower confidence */
+    bool is_beyond_gauging; /* above the highest gauging */
+    bool is_frozen;         /* newer readings came but stand still */
+    int64_t heard_utc_s;    /* newest observed time of any reading, believed or not */
+    int64_t held_utc_s;     /* observed time of a reading held unconfirmed now; 0: none */
     double held_value;
-    int64_t silent_s;           /* now - newest */
-    bool is_blind;              /* silent for longer than the limit */
-    int64_t blind_limit_s;      /* the limit in force (tighter while rising) */
+    int64_t silent_s;      /* now - newest */
+    bool is_blind;         /* silent for longer than the limit */
+    int64_t blind_limit_s; /* the limit in force (tighter while rising) */
 };
 
 struct mark_picture {
@@ -46,43 +46,45 @@ struct mark_picture {
 
 struct road_fact {
     enum road_state state;
-    int64_t at_utc_s;           /* 0: nobody said */
+    int64_t at_utc_s; /* 0: nobody said */
     char by[FACT_ROLE_SIZE];
 };
 
 struct water_fact {
     bool is_known, is_wet;
-    double depth_cm;            /* NAN: not stated */
+    double depth_cm; /* NAN: not stated */
     int64_t at_utc_s;
     char by[FACT_ROLE_SIZE];
 };
 
 struct point_picture {
     struct advice advice;
-    struct mark_picture *marks;            /* as many as the point has */
-    struct passage_peak peak;              /* level above invert, over all runs */
-    struct { double low_m, likely_m, high_m; } level_now;
-    int64_t measured_until_utc_s;          /* PASSAGE_NEVER: beyond the horizon */
-    double unmeasured_share;               /* of the flow now, that no gauge on the path measures */
-    bool is_blind;                         /* a gauge above it is blind */
-    bool is_rising;                        /* a gauge above it rises, or was rising when last heard */
-    int64_t silent_s;                      /* of the gauge on the path that has been silent longest */
-    int64_t newest_utc_s;                  /* its newest accepted observation */
+    struct mark_picture *marks; /* as many as the point has */
+    struct passage_peak peak;   /* level above invert, over all runs */
+    struct {
+        double low_m, likely_m, high_m;
+    } level_now;
+    int64_t measured_until_utc_s; /* PASSAGE_NEVER: beyond the horizon */
+    double unmeasured_share;      /* of the flow now, that no gauge on the path measures */
+    bool is_blind;                /* a gauge above it is blind */
+    bool is_rising;               /* a gauge above it rises, or was rising when last heard */
+    int64_t silent_s;             /* of the gauge on the path that has been silent longest */
+    int64_t newest_utc_s;         /* its newest accepted observation */
     bool trigger_holds, assumed_trigger_holds;
-    size_t trigger;                        /* which one, when one holds */
-    int64_t trigger_since_utc_s;           /* since when (assumed: the moment the carried rise passes it) */
-    bool is_peak_beyond_gauging;           /* the flow behind the peak is above a gauge's highest gauging */
-    double chance_of_return;               /* see advice_facts */
-    int64_t below_since_utc_s;             /* computed level below closing mark - reopen margin since; 0: it is not */
+    size_t trigger;              /* which one, when one holds */
+    int64_t trigger_since_utc_s; /* since when (assumed: the moment the carried rise passes it) */
+    bool is_peak_beyond_gauging; /* the flow behind the peak is above a gauge's highest gauging */
+    double chance_of_return;     /* see advice_facts */
+    int64_t below_since_utc_s;   /* computed level below closing mark - reopen margin since; 0: it is not */
     struct road_fact road;
     struct water_fact water;
-    int64_t accepted_utc_s;                /* newest acceptance of this thread; 0: none */
+    int64_t accepted_utc_s; /* newest acceptance of this thread; 0: none */
     char accepted_by[FACT_ROLE_SIZE];
-    int64_t told_number;                   /* number of the newest message of this thread; 0: none */
+    int64_t told_number; /* number of the newest message of this thread; 0: none */
 };
 
-struct forecast { /* whole curves, thinned to curve_step */
-    int64_t issued_utc_s;                  /* 0: none yet */
+struct forecast {         /* whole curves, thinned to curve_step */
+    int64_t issued_utc_s; /* 0: none yet */
     int64_t start_utc_s;
     int64_t step_s;
     size_t step_count;                     /* values per curve */
@@ -90,22 +92,22 @@ struct forecast { /* whole curves, thinned to curve_step */
 };
 
 struct picture {
-    int64_t as_of_utc_s;                   /* world time of the cycle that made it; 0: before the first */
-    int64_t next_entry;                    /* the next free entry number, from 1 */
+    int64_t as_of_utc_s; /* world time of the cycle that made it; 0: before the first */
+    int64_t next_entry;  /* the next free entry number, from 1 */
     int64_t next_message_number;
-    char newest_link[FACT_DIGEST_SIZE];    /* of the ledger; "" before the first */
+    char newest_link[FACT_DIGEST_SIZE]; /* of the ledger; "" before the first */
     bool is_store_failing;
     char store_trouble[FACT_NOTE_SIZE];
-    int64_t away_from_utc_s;               /* after a restart: when the run before ended; 0: not */
+    int64_t away_from_utc_s; /* after a restart: when the run before ended; 0: not */
 
     size_t gauge_count;
     struct gauge_picture *gauges;
     size_t point_count;
     struct point_picture *points;
     struct forecast forecast;
-    int64_t forecast_kept_utc_s;           /* when a whole forecast was last stored */
+    int64_t forecast_kept_utc_s; /* when a whole forecast was last stored */
 
-    struct message *outbox;                /* not yet settled, oldest first; plus those settled in the last hours */
+    struct message *outbox; /* not yet settled, oldest first; plus those settled in the last hours */
     size_t outbox_count, outbox_capacity;
 };
 
@@ -119,7 +121,11 @@ void picture_destroy(struct picture *picture); /* NULL is fine */
  * Puts a reading in its place. *was_new_out: false when the same source had the same value for that time.
  * A different value replaces the older one of the same source here (the store keeps both).
  */
-FW_MUST_CHECK enum fw_status picture_add_reading(struct picture *picture, const struct reading *reading, bool *was_new_out);
+FW_MUST_CHECK enum fw_status picture_add_reading(struct picture *picture, const struct reading *reading,
+                                                 bool *was_new_out);
+
+/* The same source has the same value for that time already. */
+bool picture_knows_reading(const struct picture *picture, const struct reading *reading);
 
 /* Takes one word's facts (road, water seen, accept) into the points. Readings are added apart. */
 void picture_take_word(const struct settings *settings, struct picture *picture, const struct word *word);

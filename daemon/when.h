@@ -14,8 +14,8 @@ enum { WHEN_TEXT_SIZE = 40, WHEN_ZONE_SIZE = 64 };
 /* The district's zone: a fixed offset, or one IANA name through the C library. */
 struct when_zone {
     bool is_fixed;
-    int32_t offset_s;             /* when fixed */
-    char name[WHEN_ZONE_SIZE];    /* when not; "" is UTC */
+    int32_t offset_s;          /* when fixed */
+    char name[WHEN_ZONE_SIZE]; /* when not; "" is UTC */
 };
 
 /* "+01:00", "Z" or an IANA name known to this machine. FW_BAD_INPUT. An IANA name sets the process's zone (one per box). */

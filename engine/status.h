@@ -19,7 +19,8 @@ enum fw_status {
     FW_DAMAGED,     /* the store is not whole */
     FW_FOREIGN,     /* the store is of another program, or newer than this one */
     FW_UNAVAILABLE, /* not there now: no daemon, no network, no such file */
-    FW_USAGE        /* a command line that cannot be read */
+    FW_USAGE,       /* a command line that cannot be read */
+    FW_BAD_SETTINGS /* the configuration has faults, each told apart */
 };
 
 #endif
