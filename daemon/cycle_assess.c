@@ -43,20 +43,12 @@ static int64_t measured_until(const struct cycle *cycle, size_t point)
     return isfinite(earliest_s) ? cycle->start_utc_s + (int64_t)floor(earliest_s) : PASSAGE_NEVER;
 }
 
-/* Does water at this node come past the reach? At most one reach leaves a node, and a tree has no loops. */
+/* Does water at this node come past the reach? */
 static bool drains_through(const struct network_river *river, size_t node, size_t wanted_reach)
 {
-    size_t reach = 0;
-    while (reach < river->reach_count) {
-        if (river->reaches[reach].from_node != node) {
-            reach++;
-            continue;
-        }
+    for (size_t reach; (reach = network_reach_from(river, node)) != NETWORK_NONE; node = river->reaches[reach].to_node)
         if (reach == wanted_reach)
             return true;
-        node = river->reaches[reach].to_node;
-        reach = 0;
-    }
     return false;
 }
 

@@ -74,6 +74,15 @@ struct network_river { /* the caller's; must outlive the network */
     const struct network_point *points;
 };
 
+/* The reach that leaves a node; NETWORK_NONE: the river goes on unmodelled. */
+static inline size_t network_reach_from(const struct network_river *river, size_t node)
+{
+    for (size_t reach = 0; reach < river->reach_count; reach++)
+        if (river->reaches[reach].from_node == node)
+            return reach;
+    return NETWORK_NONE;
+}
+
 struct network_options {
     double time_step_s;
     size_t fixed_cell_count; /* per reach; 0: chosen */
