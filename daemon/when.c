@@ -101,7 +101,7 @@ static bool is_zone_name(const char *text)
     return strspn(text, "ABCDEFGHIJKLMNOPQRSTUVWXYZabcdefghijklmnopqrstuvwxyz0123456789_+-/") == length;
 }
 
-/* The C library takes any name without a word and works in UTC then: its file is looked for first (RFC 8536: "TZif"). */
+/* The C library takes any name without a word and works in UTC then: its file is looked for first (RFC 8536). */
 static bool is_zone_on_this_machine(const char *name)
 {
     const char *folder = getenv("TZDIR");
@@ -200,7 +200,7 @@ static bool take_number(const char **cursor, int width, char follows, int *value
     return true;
 }
 
-/* ":ss" and ".fff", both of which may be missing. A fraction is cut off: nothing is dated later than it was written. */
+/* ":ss" and ".fff", both of which may be missing. A fraction is cut off: nothing is dated later than written. */
 static bool take_seconds(const char **cursor, int *second_out)
 {
     *second_out = 0;

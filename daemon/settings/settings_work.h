@@ -1,0 +1,64 @@
+/* SPDX-License-Identifier: MIT */
+/* Building struct settings from a checked tree. Internal to this room. */
+#ifndef FOREWATER_DAEMON_SETTINGS_SETTINGS_WORK_H
+#define FOREWATER_DAEMON_SETTINGS_SETTINGS_WORK_H
+
+#include "daemon/settings/json_tree.h"
+#include "daemon/settings/settings_keys.h"
+
+struct settings_work {
+    struct arena *arena;
+    struct settings *settings;
+    struct settings_report *report;
+    struct json_value *root;
+    enum settings_need need;
+    const char *folder; /* of the file */
+};
+
+/*
+ * All of these take the full path of a key as the table has it ("points[].crew.night_min") and the object of which it
+ * is a member; object may be NULL. A faulty value gives NAN, NULL, false: it has been reported, and no check that
+ * compares it may report again.
+ */
+struct json_value *settings_work_member(const struct json_value *object, const char *key_path); /* only if sound */
+bool settings_work_has(const struct json_value *object, const char *key_path);      /* there, in whatever state */
+double settings_work_number(const struct json_value *object, const char *key_path); /* or its default; else NAN */
+int64_t settings_work_seconds(const struct json_value *object, const char *key_path, double unit_s);
+const char *settings_work_string(const struct json_value *object, const char *key_path); /* NULL: not there */
+bool settings_work_truth(const struct json_value *object, const char *key_path);
+
+/* Number of elements of an array that are sound, and the next sound one at or after *index; NULL: no more. */
+size_t settings_work_count(const struct json_value *array);
+struct json_value *settings_work_next(const struct json_value *array, size_t *index);
+
+/* No fault in it or below it. */
+bool settings_work_is_whole(const struct json_value *value);
+
+/* Reports a member that is needed, and why, unless it is there. */
+void settings_work_need(struct settings_work *work, const struct json_value *object, const char *key_path,
+                        const char *why);
+/* Reports a member that does nothing there, if it is there. `expected` says what was expected. */
+void settings_work_refuse(struct settings_work *work, const struct json_value *object, const char *key_path,
+                          const char *why);
+
+/*
+ * Reports a fault that a check of the engine found. Its text begins with the member of the engine's struct and ": ";
+ * names leads from there to the key. The value of the key is named if it is there, else the object.
+ */
+struct settings_work_name {
+    const char *member, *key_path;
+};
+void settings_work_engine_fault(struct settings_work *work, struct json_value *object, const char *fault,
+                                size_t name_count, const struct settings_work_name names[]);
+
+/* Absolute, in the arena; NULL: no memory. */
+const char *settings_work_path(struct settings_work *work, const char *path);
+
+/* The parts; false: no memory. Faults are in the report. In this order. */
+bool settings_build_base(struct settings_work *work);
+bool settings_build_channels(struct settings_work *work);
+bool settings_build_gauges(struct settings_work *work);
+bool settings_build_river(struct settings_work *work);
+bool settings_build_points(struct settings_work *work);
+
+#endif
