@@ -40,6 +40,15 @@ static void write_feed(const struct night *night, FILE *stream)
     }
 }
 
+static void write_outages(const struct night *night, FILE *stream)
+{
+    char from[NIGHT_TIME_SIZE], to[NIGHT_TIME_SIZE];
+    (void)night;
+    fputs("from,to\n", stream);
+    fprintf(stream, "%s,%s\n", night_time_rfc3339(story_router_out_utc_s(), from),
+            night_time_rfc3339(story_router_back_utc_s(), to));
+}
+
 static void write_words(const struct night *night, FILE *stream)
 {
     char at[NIGHT_TIME_SIZE];
@@ -98,6 +107,7 @@ bool night_files_write(const struct recipe *recipe, const struct truth *truth, c
     }
     bool is_whole = write_file(into, "readings.csv", &night, write_readings) &&
                     write_file(into, "feed.csv", &night, write_feed) &&
+                    write_file(into, "outages.csv", &night, write_outages) &&
                     write_file(into, "words.csv", &night, write_words);
     if (recipe->is_as_told)
         is_whole = is_whole && write_file(into, "expected.csv", &night, write_expected);

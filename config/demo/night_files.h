@@ -4,6 +4,7 @@
  *
  *   readings.csv        observed,stage_m,received      every reading that came, in the order in which it came
  *   feed.csv            observed,stage_m,received,way  the same, with the way it comes in the live demonstration
+ *   outages.csv         from,to                        when the office reaches no web page
  *   words.csv           time,words...                  the words of `forewater say`, one per column
  *   truth_<point>.csv   time,stage_m                   every minute, depth above the section's invert
  *   expected.csv        see expected.h; variant A alone

@@ -23,6 +23,16 @@ const char *story_way_name(enum story_way way)
     return names[way];
 }
 
+int64_t story_router_out_utc_s(void)
+{
+    return night_time_at("00:20");
+}
+
+int64_t story_router_back_utc_s(void)
+{
+    return night_time_at("00:47");
+}
+
 static int is_within(int64_t utc_s, const char *from_clock, const char *to_clock)
 {
     return utc_s >= night_time_at(from_clock) && utc_s <= night_time_at(to_clock);
@@ -47,8 +57,8 @@ static int64_t received_utc_s(int64_t observed_utc_s)
 {
     if (is_within(observed_utc_s, "21:20", "22:15"))
         return night_time_at("22:18");
-    if (is_within(observed_utc_s, "00:20", "00:45"))
-        return night_time_at("00:47");
+    if (observed_utc_s >= story_router_out_utc_s() && observed_utc_s < story_router_back_utc_s())
+        return story_router_back_utc_s();
     if (is_within(observed_utc_s, "02:55", "04:50"))
         return night_time_at("04:52");
     return observed_utc_s + MINUTE_S;

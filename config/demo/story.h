@@ -51,6 +51,10 @@ void story_tell_feed(const struct recipe *recipe, struct story *story);
 /* The two hand readings and the water seen follow the truth; 06:55 is as the story says it. */
 void story_tell_words(const struct recipe *recipe, const struct truth *truth, struct story *story);
 
+/* Between these the office reaches no web page. */
+int64_t story_router_out_utc_s(void);
+int64_t story_router_back_utc_s(void);
+
 const char *story_way_name(enum story_way way);
 
 #endif
