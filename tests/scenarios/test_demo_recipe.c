@@ -16,6 +16,7 @@
 #include "config/demo/night_time.h"
 #include "config/demo/smooth_curve.h"
 #include "config/demo/story.h"
+#include "daemon/settings/settings.h"
 
 #define COUNT_OF(array) (sizeof(array) / sizeof((array)[0]))
 
@@ -229,6 +230,23 @@ static void assert_number(const cJSON *object, const char *name, double expected
         fail_msg("%s: %g, the recipe has %g", name, found, expected);
 }
 
+static void the_daemon_takes_the_configuration_without_a_fault(void **state)
+{
+    (void)state;
+    struct settings *settings = NULL;
+    struct settings_faults faults = {0};
+    struct fw_error error = {0};
+    enum fw_status status =
+        settings_read_file(FW_SOURCE_DIR "/config/demo/vennmark.json", SETTINGS_FOR_RUN, &settings, &faults, &error);
+    for (size_t i = 0; i < faults.count; i++)
+        print_error("%s\n", faults.faults[i].text);
+    if (status != FW_OK)
+        fail_msg("%s", error.text);
+    assert_int_equal(faults.count, 0);
+    settings_destroy(settings);
+    settings_faults_clear(&faults);
+}
+
 static void the_configuration_has_the_section_and_rating_of_the_recipe(void **state)
 {
     (void)state;
@@ -345,6 +363,7 @@ int main(void)
         cmocka_unit_test(readings_stand_in_order_of_arrival),
         cmocka_unit_test(the_batch_is_twelve_readings_two_of_them_twice_and_shuffled),
         cmocka_unit_test(the_faults_of_the_feed_are_at_their_minutes),
+        cmocka_unit_test(the_daemon_takes_the_configuration_without_a_fault),
         cmocka_unit_test(the_configuration_has_the_section_and_rating_of_the_recipe),
         cmocka_unit_test(the_configuration_has_the_reaches_crossings_and_beck_of_the_recipe),
         cmocka_unit_test(the_bridges_rows_are_within_two_millimetres_of_its_curve),
