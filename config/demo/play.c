@@ -5,7 +5,8 @@
  *
  *     play --forewater FILE --config FILE --hook FILE --night FOLDER --work FOLDER [--until TIME] [--short]
  *
- * Fails when the daemon died or would not answer, a word was refused, a cycle failed, or nothing was told.
+ * Fails when the daemon died or would not answer, a word was refused, a cycle failed or was not recorded, or nothing
+ * was told.
  */
 #include <errno.h>
 #include <getopt.h>
@@ -266,19 +267,21 @@ static bool play_night(struct play *play)
 
 /* --- afterwards ------------------------------------------------------------------------------------------------- */
 
-/* Cycles that failed, by what the daemon's log says. */
-static size_t count_failed_cycles(void)
+/* Lines of the daemon's log that say a cycle failed or was not recorded. */
+static size_t count_failures_in_log(void)
 {
+    static const char *const signs[] = {"no forecast at this cycle", "nothing is being recorded"};
     size_t count = 0, size = 0;
     char *line = NULL;
     FILE *log = fopen(DRIVEN_DAEMON_LOG, "r");
     if (log == NULL)
         return 0;
     while (getline(&line, &size, log) >= 0)
-        if (strstr(line, "cycle failed") != NULL) {
-            fprintf(stderr, "play: " DRIVEN_DAEMON_LOG ": %s", line);
-            count++;
-        }
+        for (size_t i = 0; i < sizeof signs / sizeof signs[0]; i++)
+            if (strstr(line, signs[i]) != NULL) {
+                fprintf(stderr, "play: " DRIVEN_DAEMON_LOG ": %s", line);
+                count++;
+            }
     free(line);
     fclose(log);
     return count;
@@ -295,12 +298,12 @@ static bool close_night(struct play *play, bool was_played)
            play->steps, play->told.message_count, play->files, page.whole, page.unchanged, page.cut_off);
     printf("the daemon ended %.0f ms after SIGTERM%s\n", took_ms,
            ended ? "" : ", and not by itself with exit code 0");
-    size_t failed_cycles = count_failed_cycles();
-    if (failed_cycles > 0)
-        fprintf(stderr, "play: %zu cycles failed\n", failed_cycles);
+    size_t failures = count_failures_in_log();
+    if (failures > 0)
+        fprintf(stderr, "play: %zu cycles failed or were not recorded\n", failures);
     if (play->told.message_count == 0)
         fputs("play: nothing was told\n", stderr);
-    return was_played && ended && failed_cycles == 0 && play->refused == 0 && play->told.message_count > 0 &&
+    return was_played && ended && failures == 0 && play->refused == 0 && play->told.message_count > 0 &&
            play->told.unreadable_count == 0;
 }
 
