@@ -1,11 +1,11 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * A gauge read from an HTTP JSON endpoint, on the daemon's event loop. The reply is judged by its content and the observed times in it, never
- * by its status alone: a web page with status 200 is a fault, a cached page is stale.
+ * A gauge read from an HTTP JSON endpoint, on the daemon's event loop. The reply is judged by its content and the
+ * observed times in it, never by its status alone: a web page with status 200 is a fault, a cached page is stale.
  *
- * Limits: connect 10 s, whole transfer 30 s, under 100 B/s for 15 s ends it, body 4 MiB counted as it arrives, 3 redirects, http
- * and https only and never from https to http, TLS 1.2 verified. Conditional GET (ETag, Last-Modified). After failures it waits 1, 2, 4 ... 32 min with
- * jitter, in world time.
+ * Limits: connect 10 s, whole transfer 30 s, under 100 B/s for 15 s ends it, body 4 MiB counted as it arrives, 3
+ * redirects, http and https only and never from https to http, TLS 1.2 verified. Conditional GET (ETag,
+ * Last-Modified). After failures it waits 1, 2, 4 ... 32 min with jitter, in world time.
  */
 #ifndef FOREWATER_DAEMON_FEED_HTTP_FEED_H
 #define FOREWATER_DAEMON_FEED_HTTP_FEED_H
@@ -22,8 +22,8 @@ typedef void http_feeds_arrived(void *context);
 
 /* `news` is where arrivals are put. FW_NO_MEMORY, FW_IO. settings, news and context must outlive it. */
 FW_MUST_CHECK enum fw_status http_feeds_open(const struct settings *settings, sd_event *event, struct news *news,
-                                             http_feeds_arrived *arrived, void *context, struct http_feeds **feeds_out,
-                                             struct fw_error *error);
+                                             http_feeds_arrived *arrived, void *context,
+                                             struct http_feeds **feeds_out, struct fw_error *error);
 void http_feeds_close(struct http_feeds *feeds); /* ends what is under way; NULL is fine */
 
 /* Starts every fetch that is due at this world time. */
@@ -33,8 +33,8 @@ int64_t http_feeds_next_poll_utc_s(const struct http_feeds *feeds);
 size_t http_feeds_under_way(const struct http_feeds *feeds);
 
 /*
- * The reader by itself: a reply body to readings. Elements that cannot be read are noted and skipped; FW_BAD_INPUT: not JSON, nothing at the pointer,
- * or no element could be read.
+ * The reader by itself: a reply body to readings. Elements that cannot be read are noted and skipped; FW_BAD_INPUT:
+ * not JSON, nothing at the pointer, or no element could be read.
  */
 FW_MUST_CHECK enum fw_status http_feed_read_json(const struct settings *settings, size_t gauge, size_t feed,
                                                  const char *bytes, size_t length, int64_t received_utc_s,

@@ -7,7 +7,8 @@
 
 #include "daemon/settings/settings.h"
 
-/* A finite number with a decimal point, whatever the locale: "2.31", "-0.4", "1.2e-3". No comma, no blanks, no hexadecimal, no nan. */
+/* A finite number with a decimal point, whatever the locale: "2.31", "-0.4", "1.2e-3". No comma, no blanks, no
+ * hexadecimal, no nan. */
 bool quantity_read_number(const char *text, double *value_out);
 
 /* To m above gauge zero (m, cm, mm, ft) or to m3/s (m3/s, l/s). FW_BAD_INPUT: the unit does not measure this. */
