@@ -52,18 +52,8 @@ static void list_points(const struct settings *settings, struct text *list)
 
 static const struct settings_gauge *find_gauge(const struct settings *settings, const char *id)
 {
-    for (size_t i = 0; i < settings->gauge_count; i++)
-        if (strcmp(settings->gauges[i].id, id) == 0)
-            return &settings->gauges[i];
-    return NULL;
-}
-
-static bool is_point(const struct settings *settings, const char *id)
-{
-    for (size_t i = 0; i < settings->point_count; i++)
-        if (strcmp(settings->points[i].id, id) == 0)
-            return true;
-    return false;
+    size_t index = settings_gauge_index(settings, id);
+    return index != SETTINGS_NONE ? &settings->gauges[index] : NULL;
 }
 
 static enum fw_status check_gauge_word(const struct settings *settings, const struct word *word,
@@ -90,7 +80,7 @@ static enum fw_status check_gauge_word(const struct settings *settings, const st
 static enum fw_status check_point_word(const struct settings *settings, const struct word *word,
                                        struct fw_error *error)
 {
-    if (!is_point(settings, word->subject)) {
+    if (settings_point_index(settings, word->subject) == SETTINGS_NONE) {
         struct text known = {0};
         list_points(settings, &known);
         fw_error_set(error, FW_BAD_INPUT, "'%s' is not a point; expected one of: %.600s", word->subject,
