@@ -139,7 +139,8 @@ static void step_ladder(const struct advice_policy *policy, const struct advice_
     const enum advice_level held = is_on_ladder(last->level) ? last->level : ADVICE_QUIET;
 
     next->reasons = wanted.reasons;
-    if (held != ADVICE_QUIET && wanted.level == ADVICE_QUIET && !(facts->closing.chance < policy->step_down_chance)) {
+    const bool is_low_enough = facts->closing.chance < policy->step_down_chance || facts->closing.chance <= 0.0;
+    if (held != ADVICE_QUIET && wanted.level == ADVICE_QUIET && !is_low_enough) {
         wanted.level = ADVICE_MUSTER;
         next->reasons |= ADVICE_HELD_DWELL;
     }

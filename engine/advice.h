@@ -57,7 +57,7 @@ struct advice_policy { /* signed by the engineer */
     double crew_day_s, crew_night_s, margin_s;
     double muster_chance;        /* at most 0.10 */
     double slack_s;              /* one cycle + 5 min */
-    double step_down_chance;     /* MUSTER stays while the chance is not below this; at most muster_chance */
+    double step_down_chance;     /* MUSTER stays while the chance is not below this (or 0); at most muster_chance */
     double step_down_dwell_s;    /* a lower level must have been wanted this long without a break */
     double blind_dead_s;         /* silent this long: never QUIET */
     double reopen_hold_s;        /* below the deck by the margin for this long, measured */

@@ -567,6 +567,14 @@ static void muster_stays_while_the_chance_is_between_the_two_limits(void **state
     muster = step(&facts, &muster);
     facts.now_utc_s += DWELL;
     assert_int_equal(step(&facts, &muster).level, ADVICE_QUIET);
+    /* a limit of zero is met by no chance at all */
+    struct advice_policy strict = POLICY;
+    strict.step_down_chance = 0.0;
+    muster = standing_at(ADVICE_MUSTER);
+    facts = quiet_at(NOW);
+    muster = advice_step(&strict, &facts, &muster, NULL);
+    facts.now_utc_s += DWELL;
+    assert_int_equal(advice_step(&strict, &facts, &muster, NULL).level, ADVICE_QUIET);
 }
 
 static void a_chance_that_swings_about_its_limit_is_one_change(void **state)
@@ -788,6 +796,7 @@ static const struct shift_row {
     {"earlier, crew called", ROAD_CREW_CALLED, 2 * HOUR, HOUR, true},
     {"earlier, crew out", ROAD_CREW_OUT, 2 * HOUR, HOUR, true},
     {"earlier, and past before it was told", ROAD_OPEN, 30 * MINUTE, -20 * MINUTE, true},
+    {"the one told is this second", ROAD_OPEN, 0, -HOUR, true},
     {"the one told is past: later", ROAD_OPEN, -1, 2 * HOUR, false},
     {"the one told is past: earlier", ROAD_OPEN, -1, -HOUR, false},
     {"none before, one now", ROAD_OPEN, 1, 2 * HOUR, true},
