@@ -175,8 +175,8 @@ static double top_time_s(const struct passage_curves *curves, size_t member, siz
     double top_m = stage_at_step(curves, member, top);
     double after_m = stage_at_step(curves, member, top + 1);
     double bend_m = before_m - 2.0 * top_m + after_m;
-    /* a highest sample bends the parabola downwards, unless all three are level or the top lies before now */
-    if (bend_m >= 0.0 || before_m > top_m)
+    /* a highest sample bends the parabola downwards, unless all three are level or higher ones lie before now */
+    if (bend_m >= 0.0)
         return time_s;
     return time_s + 0.5 * (before_m - after_m) / bend_m * (double)curves->step_s;
 }

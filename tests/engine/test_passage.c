@@ -148,10 +148,14 @@ static void below_again_spans_the_runs_that_arrive(void **state)
     /* three runs over 1.5 m: 150-750 s, 450-1350 s, never */
     static const double stage_m[] = {1.0, 1.0, 1.0, 2.0, 1.0, 1.1, 2.0, 2.0, 1.2,
                                      1.0, 2.0, 1.3, 1.0, 2.0, 1.3, 1.0, 1.0, 1.2};
+    static const size_t orders[][3] = {{0, 1, 2}, {1, 0, 2}, {2, 1, 0}};
     struct passage_curves curves = curves_of(6, 3, stage_m);
-    struct passage passage = passage_in(&curves, START, 1.5);
-    assert_int_equal(passage.below_again_earliest_utc_s, START + 750);
-    assert_int_equal(passage.below_again_latest_utc_s, START + 1350);
+    for (size_t i = 0; i < COUNT(orders); i++) {
+        curves.member_column = orders[i];
+        struct passage passage = passage_in(&curves, START, 1.5);
+        assert_int_equal(passage.below_again_earliest_utc_s, START + 750);
+        assert_int_equal(passage.below_again_latest_utc_s, START + 1350);
+    }
 }
 
 static void a_spell_that_outlasts_the_horizon_never_ends(void **state)
@@ -382,6 +386,12 @@ static void what_cannot_be_answered_is_refused_and_writes_nothing(void **state)
     double chance;
     assert_int_equal(passage_chance_between(&good, 1.2, START + 600, START + 599, &chance), FW_BAD_INPUT);
     assert_int_equal(passage_chance_between(&good, 1.2, START + 600, START + 1501, &chance), FW_BAD_INPUT);
+    /* a hole that only the straight line to the window's edge touches */
+    struct passage_curves holed = good;
+    holed.stage_m = holed_m;
+    assert_int_equal(passage_chance_between(&holed, 1.2, START + 901, START + 1300, &chance), FW_BAD_INPUT);
+    assert_int_equal(passage_chance_between(&holed, 1.2, START + 300, START + 601, &chance), FW_BAD_INPUT);
+    assert_int_equal(passage_chance_between(&holed, 1.2, START + 300, START + 600, &chance), FW_OK);
 }
 
 int main(void)
