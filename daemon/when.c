@@ -119,14 +119,15 @@ static bool is_zone_on_this_machine(const char *name)
 }
 
 /* The C library knows one zone at a time. Settings that were read and then refused may have left another behind. */
-static void make_process_zone(const struct when_zone *zone)
+static bool make_process_zone(const struct when_zone *zone)
 {
     char wanted[WHEN_ZONE_SIZE + 1];
     snprintf(wanted, sizeof wanted, ":%s", zone->name);
     const char *present = getenv("TZ");
-    if (present == NULL || strcmp(present, wanted) != 0)
-        setenv("TZ", wanted, 1);
+    if ((present == NULL || strcmp(present, wanted) != 0) && setenv("TZ", wanted, 1) != 0)
+        return false;
     tzset();
+    return true;
 }
 
 enum fw_status when_zone_parse(const char *text, struct when_zone *zone_out, struct fw_error *error)
@@ -144,7 +145,8 @@ enum fw_status when_zone_parse(const char *text, struct when_zone *zone_out, str
                             text);
     zone = (struct when_zone){.is_fixed = false};
     snprintf(zone.name, sizeof zone.name, "%s", text);
-    make_process_zone(&zone);
+    if (!make_process_zone(&zone))
+        return fw_error_set(error, FW_NO_MEMORY, "zone %s: out of memory", text);
     *zone_out = zone;
     return FW_OK;
 }
@@ -155,9 +157,10 @@ int32_t when_offset_s(const struct when_zone *zone, int64_t utc_s)
         return zone->offset_s;
     if (zone->name[0] == '\0')
         return 0;
-    make_process_zone(zone);
     time_t moment = (time_t)utc_s;
     struct tm local;
+    if (!make_process_zone(zone))
+        return 0; /* out of memory, for a zone that was not in force before */
     return localtime_r(&moment, &local) != NULL ? (int32_t)local.tm_gmtoff : 0;
 }
 

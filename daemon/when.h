@@ -18,12 +18,16 @@ struct when_zone {
     char name[WHEN_ZONE_SIZE]; /* when not; "" is UTC */
 };
 
-/* "+01:00", "Z" or an IANA name known to this machine. FW_BAD_INPUT. An IANA name sets the process's zone (one per box). */
+/*
+ * "+01:00", "Z" or an IANA name known to this machine. An IANA name sets the process's zone (one per box).
+ * FW_BAD_INPUT; FW_NO_MEMORY.
+ */
 FW_MUST_CHECK enum fw_status when_zone_parse(const char *text, struct when_zone *zone_out, struct fw_error *error);
 
 /*
- * RFC 3339 with 'Z' or an offset; fractions of a second are cut off; a blank is accepted for the 'T'; seconds may be missing.
- * A text without offset is refused when `zone` is NULL, and otherwise read in that zone (of a repeated hour the first).
+ * RFC 3339 with 'Z' or an offset; fractions of a second are cut off; a blank is accepted for the 'T'; seconds may be
+ * missing. A text without offset is refused when `zone` is NULL, and otherwise read in that zone: of a repeated hour
+ * the first, in a missing hour not at all.
  * FW_BAD_INPUT says what was expected.
  */
 FW_MUST_CHECK enum fw_status when_parse(const char *text, const struct when_zone *zone, int64_t *utc_s_out,

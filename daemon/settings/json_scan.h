@@ -3,9 +3,9 @@
  * What the JSON parser does not do: comments, positions, and the strictness of RFC 8259.
  *
  * The scan blanks comments (from two slashes to the end of the line, outside of strings), checks the grammar, the
- * form and size of numbers, escapes, UTF-8 and depth, and records where every value stands, in the order in which they
- * stand. What can be mended (a bad number, a bad escape, a comma too many) is noted and mended in the clean copy, so
- * that one run finds the other faults of the file too.
+ * form and size of numbers, escapes, UTF-8 and depth, and records where every value stands, in the order in which
+ * they stand. What can be mended (a bad number, a bad escape, a comma too many) is noted and mended in the clean
+ * copy, so that one run finds the other faults of the file too.
  */
 #ifndef FOREWATER_DAEMON_SETTINGS_JSON_SCAN_H
 #define FOREWATER_DAEMON_SETTINGS_JSON_SCAN_H

@@ -168,11 +168,32 @@ struct json_value *json_tree_member(const struct json_value *object, const char 
     return NULL;
 }
 
+/* A password that someone wrote into an address must not go on into a log: length of what stands before the '@'. */
+static size_t secret_length(const char *raw, size_t length, size_t *begin_out)
+{
+    const char *scheme = memmem(raw, length, "://", 3);
+    if (scheme == NULL)
+        return 0;
+    *begin_out = (size_t)(scheme - raw) + 3;
+    size_t secret = 0;
+    for (size_t i = *begin_out; i < length && strchr("/?#", raw[i]) == NULL; i++)
+        if (raw[i] == '@')
+            secret = i - *begin_out;
+    return secret;
+}
+
 const char *json_tree_raw(const struct json_value *value, char text[JSON_TREE_RAW_SIZE])
 {
     enum { SHOWN = 48 };
     if (value->kind == JSON_OBJECT || value->kind == JSON_ARRAY) {
         snprintf(text, JSON_TREE_RAW_SIZE, value->kind == JSON_OBJECT ? "an object" : "an array");
+        return text;
+    }
+    size_t begin = 0;
+    size_t secret = secret_length(value->raw, value->raw_length, &begin);
+    if (secret > 0 && begin < SHOWN) {
+        snprintf(text, JSON_TREE_RAW_SIZE, "%.*s***@...", (int)begin, value->raw);
+        make_printable(text);
         return text;
     }
     size_t length = value->raw_length;

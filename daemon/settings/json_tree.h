@@ -45,7 +45,7 @@ struct json_value *json_tree_member(const struct json_value *object, const char 
 __attribute__((format(printf, 3, 4))) void json_tree_fault(struct settings_report *report, struct json_value *value,
                                                            const char *format, ...);
 
-/* The value as written, cut to what fits a message; brackets by name. */
+/* The value as written, cut to what fits a message; brackets by name; a password in an address by stars. */
 const char *json_tree_raw(const struct json_value *value, char text[JSON_TREE_RAW_SIZE]);
 
 #endif

@@ -2,9 +2,9 @@
 /*
  * The configuration, read and checked: what the rest of the daemon works from. Immutable once read.
  *
- * The file is JSON with // comments. A fault names file, line, key path, value and what was expected; all faults of a file come in
- * one run. Unknown keys are faults, with the nearest known key suggested. One table of keys (settings_keys.c) feeds the
- * parser, the JSON Schema and the manual.
+ * The file is JSON with // comments. A fault names file, line, key path, value and what was expected; all faults of a
+ * file come in one run. Unknown keys are faults, with the nearest known key suggested. One table of keys
+ * (settings_keys.c) feeds the parser, the JSON Schema and the manual.
  */
 #ifndef FOREWATER_DAEMON_SETTINGS_H
 #define FOREWATER_DAEMON_SETTINGS_H
@@ -169,15 +169,18 @@ enum settings_need {
 };
 
 /*
- * FW_UNAVAILABLE  the file cannot be read; FW_BAD_INPUT: faults_out (the caller clears it) lists every fault, error sums up;
- * FW_NO_MEMORY. The caller destroys *settings_out.
+ * FW_UNAVAILABLE  the file cannot be read
+ * FW_BAD_INPUT    faults_out (the caller clears it) lists every fault, up to 200; error sums up
+ * FW_NO_MEMORY
+ * The caller destroys *settings_out.
  */
-FW_MUST_CHECK enum fw_status settings_read_file(const char *file, enum settings_need need, struct settings **settings_out,
-                                                struct settings_faults *faults_out, struct fw_error *error);
-/* The same from text in memory; `file` names it in messages, and relative paths are taken from its folder. */
-FW_MUST_CHECK enum fw_status settings_read_text(const char *file, const char *text, size_t length, enum settings_need need,
+FW_MUST_CHECK enum fw_status settings_read_file(const char *file, enum settings_need need,
                                                 struct settings **settings_out, struct settings_faults *faults_out,
                                                 struct fw_error *error);
+/* The same from text in memory; `file` names it in messages, and relative paths are taken from its folder. */
+FW_MUST_CHECK enum fw_status settings_read_text(const char *file, const char *text, size_t length,
+                                                enum settings_need need, struct settings **settings_out,
+                                                struct settings_faults *faults_out, struct fw_error *error);
 void settings_destroy(struct settings *settings);
 
 /* Index by id, or SETTINGS_NONE. */

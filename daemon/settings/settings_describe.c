@@ -212,7 +212,8 @@ static void add_row(struct text *markdown, const struct settings_key *key, const
     text_add(markdown, "| `%s` | ", name);
     add_cell(markdown, settings_keys_expected(key, expected, sizeof expected));
     text_add(markdown, " | ");
-    if (key->want != SETTINGS_OPTIONAL)
+    bool is_element = name[strlen(name) - 1] == ']';
+    if (key->want != SETTINGS_OPTIONAL && !is_element)
         text_add(markdown, key->want == SETTINGS_WANTED ? "*needed*" : "*needed, daemon*");
     if (key->fallback != NULL)
         text_add(markdown, "`%s`", key->fallback);
@@ -225,14 +226,27 @@ static void add_row(struct text *markdown, const struct settings_key *key, const
     text_add(markdown, " |\n");
 }
 
-/* Elements that are no objects have no row of their own: the row of their array says what they are. */
+/* The name of a key in the section of `object`: that of a member, or of elements below one that are no objects. */
+static const char *shown_name(const struct settings_key *key, const struct settings_key *object)
+{
+    size_t length = strlen(object->path);
+    const char *name = settings_keys_name_in(key, object);
+    if (name != NULL || strncmp(key->path, object->path, length) != 0 || key->type == SETTINGS_TYPE_OBJECT)
+        return name;
+    name = key->path + length;
+    if (length > 0 && *name++ != '.')
+        return NULL;
+    return strchr(name, '.') == NULL && strstr(name, "[]") != NULL ? name : NULL;
+}
+
 static void add_object_section(struct text *markdown, const struct settings_key *object)
 {
-    text_add(markdown, "\n## %s%s%s\n\n%s\n\n", object->path[0] != '\0' ? "`" : "The whole file", object->path,
-             object->path[0] != '\0' ? "`" : "", object->meaning);
+    bool is_whole = object->path[0] == '\0';
+    text_add(markdown, "\n## %s%s%s\n\n%s\n\n", is_whole ? "The whole file" : "`", object->path, is_whole ? "" : "`",
+             object->meaning);
     text_add(markdown, "| key | value | without it | meaning |\n|---|---|---|---|\n");
     for (size_t i = 0; i < settings_keys_count(); i++) {
-        const char *name = settings_keys_name_in(settings_keys_at(i), object);
+        const char *name = shown_name(settings_keys_at(i), object);
         if (name != NULL)
             add_row(markdown, settings_keys_at(i), name);
     }

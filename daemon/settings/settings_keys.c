@@ -331,7 +331,7 @@ static const struct settings_key keys[] = {
            "The level at this point for a flow, where the section's normal stage is not enough: a low bridge, a weir "
            "over the road."),
     ARRAY("points[].stage_rating.clean", WANTED, 2, 1000, NULL,
-          "Rows of discharge (m3/s) and stage above the invert (m), both rising."),
+          "Rows of discharge (m3/s), rising, and stage above the invert (m), never falling; straight lines between."),
     ARRAY("points[].stage_rating.clean[]", WANTED, 2, 2, NULL, "Discharge (m3/s), stage (m)."),
     NUMBER("points[].stage_rating.clean[][]", WANTED, "", 0, 1e6, NULL, "Discharge or stage."),
     ARRAY("points[].stage_rating.part_blocked", OPTIONAL, 2, 1000, NULL,

@@ -278,11 +278,14 @@ static bool build_rows(struct settings_work *work, const struct json_value *rows
     for (size_t i = 0; (row = settings_work_next(rows, &i)) != NULL; last = row, ++*count_out) {
         (*discharge_out_m3s)[*count_out] = row->children[0].number;
         (*stage_out_m)[*count_out] = row->children[1].number;
-        for (size_t column = 0; last != NULL && column < 2; column++)
-            if (row->children[column].number <= last->children[column].number)
-                json_tree_fault(work->report, &row->children[column],
-                                "is not above that of the row before, %.10g (line %zu): expected rising rows",
-                                last->children[column].number, last->line);
+        if (last != NULL && row->children[0].number <= last->children[0].number)
+            json_tree_fault(work->report, &row->children[0],
+                            "is not above the discharge of the row before, %.10g (line %zu): expected rising rows",
+                            last->children[0].number, last->line);
+        if (last != NULL && row->children[1].number < last->children[1].number)
+            json_tree_fault(work->report, &row->children[1],
+                            "is below the stage of the row before, %.10g (line %zu): expected one that never falls",
+                            last->children[1].number, last->line);
     }
     return true;
 }

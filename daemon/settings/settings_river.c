@@ -3,7 +3,10 @@
 #include "daemon/settings/settings_work.h"
 
 #include <math.h>
+#include <stdio.h>
 #include <string.h>
+
+#include "engine/river.h"
 
 static const double MINUTE_S = 60;
 
@@ -353,17 +356,18 @@ static bool is_in_ring(const struct network_river *river, size_t reach, size_t *
 
 static void report_no_inflow(struct settings_work *work, struct json_value *from)
 {
+    enum { CANDIDATES_MAX = 200 };
     const struct settings *settings = work->settings;
-    const char *nearest = settings_report_nearest(from->string, settings->river.node_count, settings->node_names);
-    const char *gauge = NULL;
-    for (size_t i = 0; i < settings->gauge_count && gauge == NULL; i++)
-        if (settings->gauges[i].id != NULL)
-            gauge = settings_report_nearest(from->string, 1, &settings->gauges[i].id);
-    if (nearest != NULL && strcmp(nearest, from->string) == 0)
-        nearest = NULL;
-    const char *hint = gauge != NULL ? gauge : nearest;
+    const char *candidates[CANDIDATES_MAX];
+    size_t count = 0;
+    for (size_t i = 0; i < settings->gauge_count && count < CANDIDATES_MAX; i++)
+        candidates[count++] = settings->gauges[i].id;
+    for (size_t i = 0; i < settings->river.node_count && count < CANDIDATES_MAX; i++)
+        if (reach_into(&settings->river, i) != NETWORK_NONE)
+            candidates[count++] = settings->node_names[i];
+    const char *nearest = settings_report_nearest(from->string, count, candidates);
     json_tree_fault(work->report, from, "has no inflow: expected a gauge, or a node where another reach ends%s%s%s",
-                    hint != NULL ? ", perhaps '" : "", hint != NULL ? hint : "", hint != NULL ? "'" : "");
+                    nearest != NULL ? ", perhaps '" : "", nearest != NULL ? nearest : "", nearest != NULL ? "'" : "");
 }
 
 /* Gauges must be placed, and every reach must have both its nodes. */
@@ -408,5 +412,40 @@ bool settings_build_river(struct settings_work *work)
     if (!place_gauges(work))
         return false;
     check_tree(work, reaches);
+    return true;
+}
+
+/* The engine names reaches by id. */
+static void report_refusal(struct settings_work *work, const struct json_value *reaches, const char *text)
+{
+    const struct json_value *blamed = reaches;
+    for (size_t i = 0; i < reaches->child_count; i++) {
+        char prefix[80];
+        const char *id = settings_work_string(&reaches->children[i], "reaches[].id");
+        snprintf(prefix, sizeof prefix, "reach '%s':", id);
+        if (strncmp(text, prefix, strlen(prefix)) == 0)
+            blamed = &reaches->children[i];
+    }
+    settings_report_add(work->report, blamed->line, "%s: cannot be used: %s", blamed->path, text);
+}
+
+bool settings_check_river(struct settings_work *work)
+{
+    const struct settings *settings = work->settings;
+    const struct network_options options = {.time_step_s = (double)settings->time_step_s,
+                                            .group_count = settings->roughness_factor_count,
+                                            .roughness_factors = settings->roughness_factors,
+                                            .members_per_group = 1,
+                                            .largest_discharge_m3s = 1};
+    size_t *order = arena_take(work->arena, settings->river.reach_count, sizeof *order);
+    size_t *waiting = arena_take(work->arena, settings->river.node_count, sizeof *waiting);
+    struct network_fault fault = {.text = ""};
+    if (order == NULL || waiting == NULL)
+        return false;
+    enum fw_status status = river_check_values(&settings->river, &options, &fault);
+    if (status == FW_OK)
+        status = river_order(&settings->river, order, waiting, &fault);
+    if (status != FW_OK)
+        report_refusal(work, settings_work_member(work->root, "reaches"), fault.text);
     return true;
 }

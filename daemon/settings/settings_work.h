@@ -60,5 +60,7 @@ bool settings_build_channels(struct settings_work *work);
 bool settings_build_gauges(struct settings_work *work);
 bool settings_build_river(struct settings_work *work);
 bool settings_build_points(struct settings_work *work);
+/* What the engine itself would refuse and nothing above has found. Only when there is no fault so far. */
+bool settings_check_river(struct settings_work *work);
 
 #endif
