@@ -40,11 +40,10 @@ static enum fw_status renumber(struct seed *seed, int64_t *entry, int64_t number
     return FW_OK;
 }
 
-static enum fw_status is_taken(struct store *store, enum store_statement which, int64_t entry, bool *taken_out,
-                               struct fw_error *error)
+static enum fw_status is_taken(struct store *store, int64_t entry, bool *taken_out, struct fw_error *error)
 {
     struct store_row row;
-    enum fw_status status = store_prepare(store, which, &row, error);
+    enum fw_status status = store_prepare(store, STORE_HAS_ENTRY, &row, error);
     if (status != FW_OK)
         return status;
     store_put_integer(&row, entry);
@@ -91,7 +90,7 @@ static enum fw_status seed_reading(struct seed *seed, struct reading *reading, i
         *entry_out = found.entry;
         return renumber(seed, &reading->entry, found.entry, error);
     }
-    status = is_taken(seed->store, STORE_HAS_READING, reading->entry, &taken, error);
+    status = is_taken(seed->store, reading->entry, &taken, error);
     if (taken || reading->entry <= found.entry)
         added.entry = seed->next_entry++;
     if (status == FW_OK)
@@ -155,7 +154,7 @@ static enum fw_status seed_message(struct seed *seed, struct message *message, s
     bool taken = false;
     enum fw_status status = find_message(seed, message, &entry, error);
     if (status == FW_OK && entry == 0)
-        status = is_taken(seed->store, STORE_HAS_MESSAGE, message->entry, &taken, error);
+        status = is_taken(seed->store, message->entry, &taken, error);
     if (status != FW_OK)
         return status;
     if (entry != 0)

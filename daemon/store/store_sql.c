@@ -52,7 +52,10 @@ static const char *const statement_text[STORE_STATEMENT_COUNT] = {
         "SELECT " READING_COLUMNS " FROM reading r WHERE r.received >= ? AND r.received < ? ORDER BY r.entry",
     [STORE_NEWEST_READING_AT] = "SELECT " READING_COLUMNS " FROM reading r WHERE r.gauge = ? AND r.source = ? "
                                 "AND r.observed = ? ORDER BY r.entry DESC LIMIT 1",
-    [STORE_HAS_READING] = "SELECT 1 FROM reading WHERE entry = ?",
+    [STORE_HAS_ENTRY] =
+        "SELECT 1 WHERE EXISTS (SELECT 1 FROM reading WHERE entry = ?1) OR EXISTS (SELECT 1 FROM "
+        "judgement WHERE entry = ?1) OR EXISTS (SELECT 1 FROM word WHERE entry = ?1) OR EXISTS (SELECT "
+        "1 FROM outbox WHERE entry = ?1) OR EXISTS (SELECT 1 FROM ledger WHERE entry = ?1)",
     [STORE_NEWEST_JUDGEMENT] =
         "SELECT flag, use, reasons FROM judgement WHERE reading = ? ORDER BY entry DESC LIMIT 1",
     [STORE_NEWEST_ADVICE] = "SELECT level, is_blind, near_sides_only, reasons, act_by, since, onset, step_down_from, "
@@ -62,7 +65,6 @@ static const char *const statement_text[STORE_STATEMENT_COUNT] = {
                        "next_try, settled, note FROM outbox WHERE settled IS NULL OR settled >= ? OR made >= ? "
                        "ORDER BY entry",
     [STORE_FIND_MESSAGE] = "SELECT entry FROM outbox WHERE id = ? AND channel = ?",
-    [STORE_HAS_MESSAGE] = "SELECT 1 FROM outbox WHERE entry = ?",
     [STORE_FACT_WORDS] = "SELECT " WORD_COLUMNS " FROM word WHERE kind IN ('accept', 'seen', 'road') ORDER BY entry",
     [STORE_WORDS_RECEIVED] = "SELECT " WORD_COLUMNS " FROM word WHERE received >= ? AND received < ? ORDER BY entry",
     [STORE_HAS_WORD] = "SELECT 1 FROM word WHERE id = ?",

@@ -17,27 +17,10 @@
 #include "daemon/store/ledger.h"
 #include "daemon/store/store_internal.h"
 
-/* Until the settings' own file has them. */
-__attribute__((weak)) size_t settings_gauge_index(const struct settings *settings, const char *id)
-{
-    for (size_t index = 0; index < settings->gauge_count; index++)
-        if (strcmp(settings->gauges[index].id, id) == 0)
-            return index;
-    return SETTINGS_NONE;
-}
-
-__attribute__((weak)) size_t settings_point_index(const struct settings *settings, const char *id)
-{
-    for (size_t index = 0; index < settings->point_count; index++)
-        if (strcmp(settings->points[index].id, id) == 0)
-            return index;
-    return SETTINGS_NONE;
-}
-
 enum { SCENE_SCAR, SCENE_MILL, SCENE_GAUGES };
 enum { SCENE_FORD, SCENE_CAUSEWAY, SCENE_POINTS };
 enum { SCENE_PAGE, SCENE_MAIL, SCENE_CHANNELS };
-#define SCENE_NOW_S INT64_C(1928875200) /* 2031-02-14T16:00:00Z */
+#define SCENE_NOW_S INT64_C(1928851200) /* 2031-02-14T16:00:00Z */
 
 struct scene {
     char directory[64];
