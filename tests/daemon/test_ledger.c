@@ -114,7 +114,7 @@ static void pruned_payloads_leave_the_chain_whole(void **state)
     store_close(store);
 }
 
-/* Each change is made to entry 3 of 5; %lld is its number. `found_at` is the index of the entry that no longer fits. */
+/* Each change is made to entry 3 of 5; %lld is its number. `found_at`: index of the entry that no longer fits. */
 static const struct {
     const char *sql, *says, *shows;
     size_t found_at;
@@ -158,7 +158,7 @@ static void every_change_to_the_chain_is_found_and_its_entry_named(void **state)
     free(whole);
 }
 
-/* Rebuilding the chain from a changed entry on leaves a whole chain, but another newest link: the one that was printed does not fit. */
+/* A chain rebuilt from a changed entry on is whole, but its newest link is not the one that was printed. */
 static void a_rebuilt_chain_ends_in_another_link(void **state)
 {
     struct scene *scene = *state;

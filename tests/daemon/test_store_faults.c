@@ -1,5 +1,8 @@
 /* SPDX-License-Identifier: MIT */
-/* What the store does when something is wrong with it, with its file or with the disk: it says so, and loses nothing it had acknowledged. */
+/*
+ * What the store does when something is wrong with it, with its file or with the disk: it says so, and loses nothing
+ * that it had acknowledged.
+ */
 #include "store_scene.h"
 
 #include <fcntl.h>
