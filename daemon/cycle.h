@@ -15,6 +15,9 @@ struct decision { /* one change of decision at one point */
     int32_t point;
     struct advice before, after;
     int64_t message_number;
+    bool wakes;        /* see facts.h, message */
+    bool is_headline;  /* it has a message of its own; the others of a cycle ride in the headline's */
+    size_t also_count; /* how many ride with this headline */
 };
 
 struct ledger_entry {

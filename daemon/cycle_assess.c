@@ -46,19 +46,26 @@ static int64_t measured_until(const struct cycle *cycle, size_t point)
 /* Does water at this node come past the reach? */
 static bool drains_through(const struct network_river *river, size_t node, size_t wanted_reach)
 {
-    for (size_t reach; (reach = network_reach_from(river, node)) != NETWORK_NONE; node = river->reaches[reach].to_node)
+    for (size_t reach; (reach = network_reach_from(river, node)) != NETWORK_NONE;
+         node = river->reaches[reach].to_node)
         if (reach == wanted_reach)
             return true;
     return false;
 }
 
-/* Side water that enters above the point and no gauge measures, as a share of the flow there now. */
-static double unmeasured_share(const struct cycle *cycle, const struct picture *picture, size_t point,
-                               size_t now_step)
+/*
+ * Side water that enters above the point and no gauge measures, as a share of all water on its way there. Both are taken at the gauges' newest
+ * flow, so that the share does not swing with where on the river a flood's front is.
+ */
+static double unmeasured_share(const struct cycle *cycle, const struct picture *picture, size_t point)
 {
     const struct network_river *river = &cycle->settings->river;
     const struct network_point *place = &river->points[point];
+    double measured_m3s = 0.0;
     double unmeasured_m3s = 0.0;
+    for (size_t gauge = 0; gauge < picture->gauge_count; gauge++)
+        if (cycle->is_above[gauge])
+            measured_m3s += picture->gauges[gauge].newest_discharge_m3s;
     for (size_t side = 0; side < river->side_inflow_count; side++) {
         const struct network_side_inflow *inflow = &river->side_inflows[side];
         bool is_above = inflow->reach_index == place->reach_index
@@ -69,9 +76,7 @@ static double unmeasured_share(const struct cycle *cycle, const struct picture *
                                   ? inflow->constant_m3s
                                   : inflow->share * picture->gauges[inflow->share_of_gauge].newest_discharge_m3s;
     }
-    const double *row = cycle->point_m3s + (point * (cycle->step_count + 1) + now_step) * cycle->member_count;
-    double flow_m3s = row[cycle->forecast_columns[cycle->forecast_column_count / 2]];
-    return flow_m3s > 0.0 ? fmin(1.0, unmeasured_m3s / flow_m3s) : 0.0;
+    return unmeasured_m3s > 0.0 ? unmeasured_m3s / (measured_m3s + unmeasured_m3s) : 0.0;
 }
 
 static bool is_peak_beyond_gauging(const struct cycle *cycle, int64_t now_utc_s)
@@ -114,17 +119,20 @@ static void assess_path(struct cycle *cycle, const struct picture *picture, size
     point->is_rising = false;
     point->silent_s = 0;
     point->newest_utc_s = 0;
+    bool has_hand = false;
     for (size_t gauge = 0; gauge < picture->gauge_count; gauge++) {
         if (!cycle->is_above[gauge])
             continue;
         const struct gauge_picture *above = &picture->gauges[gauge];
         point->is_blind |= above->is_blind;
         point->is_rising |= above->is_rising;
+        has_hand |= above->is_hand;
         if (above->silent_s >= point->silent_s) {
             point->silent_s = above->silent_s;
             point->newest_utc_s = above->newest_utc_s;
         }
     }
+    point->is_outage_told &= point->is_blind || has_hand;
 }
 
 /* A signed trigger holds on a reading, or on a rise carried forward while the gauge is silent. */
@@ -178,7 +186,7 @@ static enum fw_status assess_water(struct cycle *cycle, const struct picture *pi
         status = passage_chance_between(&curves, known->marks[known->closing_mark].depth_m, now_utc_s,
                                         now_utc_s + known->reopen_and_reclose_s, &point->chance_of_return);
     point->measured_until_utc_s = measured_until(cycle, index);
-    point->unmeasured_share = unmeasured_share(cycle, picture, index, now_step);
+    point->unmeasured_share = unmeasured_share(cycle, picture, index);
     point->is_peak_beyond_gauging = is_peak_beyond_gauging(cycle, now_utc_s);
     point->below_since_utc_s =
         below_since(cycle, index, now_utc_s, known->marks[known->deck_mark].depth_m - known->reopen_below_m);
@@ -192,6 +200,28 @@ static size_t lowest_wet_mark(const struct settings_point *known)
         if (known->marks[mark].is_trafficked)
             return mark;
     return known->closing_mark;
+}
+
+/*
+ * Must this change wake someone? A step up, an act-by that came nearer while nobody is on the way, or silence that asks for an act. What comes
+ * down, comes back or concerns a shut road is an update; and one outage wakes once, however often hand readings interrupt it.
+ */
+static bool change_wakes(const struct settings_point *known, const struct point_picture *point,
+                         const struct advice *before, const struct advice *after)
+{
+    bool is_open = point->road.state == ROAD_OPEN || point->road.state == ROAD_HANDED_BACK;
+    bool is_on_ladder = after->level <= ADVICE_LATE;
+    bool turned_blind = after->is_blind && !before->is_blind;
+    if (is_on_ladder && before->level <= ADVICE_LATE && after->level > before->level)
+        return true;
+    if (is_on_ladder && before->level > ADVICE_LATE && after->level >= ADVICE_SEND)
+        return true;
+    if (after->near_sides_only && !before->near_sides_only)
+        return true;
+    if (turned_blind && is_on_ladder && !point->is_outage_told)
+        return point->is_rising || after->level >= ADVICE_MUSTER;
+    return is_open && is_on_ladder && after->level >= ADVICE_MUSTER && before->told_act_by_utc_s != PASSAGE_NEVER &&
+           after->act_by_utc_s < before->told_act_by_utc_s - (int64_t)known->policy.act_by_shift_s;
 }
 
 static enum fw_status assess_advice(struct cycle *cycle, size_t index, int64_t now_utc_s, struct point_picture *point,
@@ -213,6 +243,7 @@ static enum fw_status assess_advice(struct cycle *cycle, size_t index, int64_t n
         .silent_s = (double)point->silent_s,
         .water_seen_wet = point->water.is_known && point->water.is_wet,
         .road = point->road.state,
+        .crew_called_utc_s = point->crew_called_utc_s,
         .below_deck_for_s = is_on_measured_water && point->below_since_utc_s > 0
                                 ? (double)(now_utc_s - point->below_since_utc_s)
                                 : 0.0,
@@ -225,11 +256,13 @@ static enum fw_status assess_advice(struct cycle *cycle, size_t index, int64_t n
         point->told_number = 0; /* a new thread has a new number */
     if (!has_changed)
         return FW_OK;
+    bool wakes = change_wakes(known, point, &before, &point->advice);
+    point->is_outage_told |= point->advice.is_blind;
     enum fw_status status =
         buffer_grow(&delta->decisions, &delta->decision_capacity, delta->decision_count, sizeof *delta->decisions);
     if (status == FW_OK)
         delta->decisions[delta->decision_count++] =
-            (struct decision){.point = (int32_t)index, .before = before, .after = point->advice};
+            (struct decision){.point = (int32_t)index, .before = before, .after = point->advice, .wakes = wakes};
     return status;
 }
 

@@ -73,12 +73,20 @@ static enum fw_status add_message(struct cycle *cycle, struct delta *delta, cons
     if (status != FW_OK)
         return status;
     struct message *message = &next->outbox[next->outbox_count];
+    const struct passage *deck =
+        &next->points[decision->point].marks[cycle->settings->points[decision->point].deck_mark].passage;
     *message = (struct message){.entry = next->next_entry,
                                 .number = decision->message_number,
                                 .kind = MESSAGE_DECISION,
                                 .point = decision->point,
                                 .channel = (int32_t)channel,
                                 .made_utc_s = next->as_of_utc_s,
+                                .wakes = decision->wakes,
+                                .level = decision->after.level,
+                                .act_by_utc_s = decision->after.act_by_utc_s,
+                                .deck_earliest_utc_s = deck->earliest_utc_s,
+                                .deck_likely_utc_s = deck->likely_utc_s,
+                                .deck_latest_utc_s = deck->latest_utc_s,
                                 .state = DELIVERY_WAITING,
                                 .next_try_utc_s = next->as_of_utc_s};
     sentence_short(cycle->settings, next, decision, message->short_text);
@@ -91,20 +99,74 @@ static enum fw_status add_message(struct cycle *cycle, struct delta *delta, cons
 }
 
 /* Who is told first: the first role of the roster, or every channel where there is no roster. */
-static enum fw_status tell_decision(struct cycle *cycle, struct delta *delta, struct decision *decision)
+static enum fw_status tell_headline(struct cycle *cycle, struct delta *delta, const struct decision *decision)
 {
     const struct settings *settings = cycle->settings;
-    struct point_picture *point = &delta->next->points[decision->point];
     struct text bulletin = {0};
-    if (point->told_number == 0)
-        point->told_number = delta->next->next_message_number++;
-    decision->message_number = point->told_number;
     enum fw_status status = sentence_bulletin(settings, delta->next, decision, &bulletin);
     size_t count = settings->role_count > 0 ? settings->roster[0].to_count : settings->channel_count;
     for (size_t index = 0; index < count && status == FW_OK; index++)
         status = add_message(cycle, delta, decision, settings->role_count > 0 ? settings->roster[0].to[index] : index,
                              text_string(&bulletin));
     text_clear(&bulletin);
+    return status;
+}
+
+/* More urgent first: what wakes, then the higher level, then the earlier act-by. */
+static bool is_more_urgent(const struct decision *left, const struct decision *right)
+{
+    if (left->wakes != right->wakes)
+        return left->wakes;
+    bool is_left_shut = left->after.level > ADVICE_LATE;
+    bool is_right_shut = right->after.level > ADVICE_LATE;
+    if (is_left_shut != is_right_shut)
+        return is_right_shut;
+    if (left->after.level != right->after.level)
+        return left->after.level > right->after.level;
+    return left->after.act_by_utc_s < right->after.act_by_utc_s;
+}
+
+/*
+ * One silence at one gauge changes the advice of every crossing below it: that is one message, not three. A crossing where a crew is to
+ * be sent always has a message of its own; the other changes of a cycle ride with the most urgent among them.
+ */
+static void choose_headlines(struct delta *delta)
+{
+    struct decision *common = NULL;
+    size_t common_count = 0;
+    for (size_t index = 0; index < delta->decision_count; index++) {
+        struct decision *decision = &delta->decisions[index];
+        decision->is_headline =
+            decision->wakes && (decision->after.level == ADVICE_SEND || decision->after.level == ADVICE_LATE);
+        if (decision->is_headline)
+            continue;
+        common_count++;
+        if (common == NULL || is_more_urgent(decision, common))
+            common = decision;
+    }
+    if (common == NULL)
+        return;
+    common->is_headline = true;
+    common->also_count = common_count - 1;
+    for (size_t index = 0; index < delta->decision_count; index++)
+        if (!delta->decisions[index].is_headline)
+            common->wakes |= delta->decisions[index].wakes;
+}
+
+static enum fw_status tell_decisions(struct cycle *cycle, struct delta *delta)
+{
+    enum fw_status status = FW_OK;
+    choose_headlines(delta);
+    for (size_t index = 0; index < delta->decision_count; index++) {
+        struct decision *decision = &delta->decisions[index];
+        struct point_picture *point = &delta->next->points[decision->point];
+        if (point->told_number == 0)
+            point->told_number = delta->next->next_message_number++;
+        decision->message_number = point->told_number;
+    }
+    for (size_t index = 0; index < delta->decision_count && status == FW_OK; index++)
+        if (delta->decisions[index].is_headline)
+            status = tell_headline(cycle, delta, &delta->decisions[index]);
     return status;
 }
 
@@ -126,8 +188,8 @@ enum fw_status cycle_record(struct cycle *cycle, int64_t now_utc_s, struct delta
 {
     enum fw_status status = thin_forecast(cycle, now_utc_s, delta->next);
     delta->first_message = delta->next->outbox_count;
-    for (size_t index = 0; index < delta->decision_count && status == FW_OK; index++)
-        status = tell_decision(cycle, delta, &delta->decisions[index]);
+    if (status == FW_OK)
+        status = tell_decisions(cycle, delta);
     if (status != FW_OK)
         return status;
     delta->keeps_forecast =

@@ -71,6 +71,9 @@ struct message { /* one message on one channel: a row of the outbox */
     int32_t point;   /* index, or -1 */
     int32_t channel; /* index */
     int64_t made_utc_s;
+    bool wakes;              /* a person must act or know now; false: an update, to be read when they look */
+    enum advice_level level; /* of that point when it was made */
+    int64_t act_by_utc_s, deck_earliest_utc_s, deck_likely_utc_s, deck_latest_utc_s; /* PASSAGE_NEVER: none */
     char short_text[FACT_SHORT_SIZE];
     char *bulletin; /* heap; the owner of the message frees it */
     enum delivery_state state;

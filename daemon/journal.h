@@ -22,13 +22,14 @@ enum journal_priority {
 struct journal {
     FILE *stream;
     bool has_prefix;
-    enum journal_priority most; /* lines above this are dropped */
+    enum journal_priority most;          /* lines above this are dropped */
     enum journal_priority last_priority; /* 0: nothing was said yet */
     char last[1024];
     size_t repeated;
 };
 
-struct journal journal_open(FILE *stream, enum journal_priority most); /* looks at JOURNAL_STREAM; a NULL stream is silence */
+struct journal journal_open(FILE *stream,
+                            enum journal_priority most); /* looks at JOURNAL_STREAM; a NULL stream is silence */
 __attribute__((format(printf, 3, 4))) void journal_say(struct journal *journal, enum journal_priority priority,
                                                        const char *format, ...);
 void journal_flush(struct journal *journal); /* says how often the last line came again */

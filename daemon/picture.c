@@ -212,6 +212,17 @@ static void take_accept(struct picture *picture, const struct word *word)
     }
 }
 
+static void take_road(struct point_picture *point, const struct word *word)
+{
+    point->road = (struct road_fact){.state = word->road, .at_utc_s = word->at_utc_s};
+    memcpy(point->road.by, word->by, sizeof point->road.by);
+    bool is_crew = word->road == ROAD_CREW_CALLED || word->road == ROAD_CREW_OUT;
+    if (is_crew && point->crew_called_utc_s == 0)
+        point->crew_called_utc_s = word->at_utc_s;
+    if (word->road == ROAD_OPEN || word->road == ROAD_HANDED_BACK)
+        point->crew_called_utc_s = 0;
+}
+
 void picture_take_word(const struct settings *settings, struct picture *picture, const struct word *word)
 {
     if (word->kind == WORD_ACCEPT) {
@@ -223,8 +234,7 @@ void picture_take_word(const struct settings *settings, struct picture *picture,
         return;
     struct point_picture *point = &picture->points[index];
     if (word->kind == WORD_ROAD && word->at_utc_s >= point->road.at_utc_s) {
-        point->road = (struct road_fact){.state = word->road, .at_utc_s = word->at_utc_s};
-        memcpy(point->road.by, word->by, sizeof point->road.by);
+        take_road(point, word);
     } else if (word->kind == WORD_SEEN && word->at_utc_s >= point->water.at_utc_s) {
         point->water = (struct water_fact){
             .is_known = true, .is_wet = word->is_wet, .depth_cm = word->value, .at_utc_s = word->at_utc_s};

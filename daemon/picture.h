@@ -77,9 +77,11 @@ struct point_picture {
     double chance_of_return;     /* see advice_facts */
     int64_t below_since_utc_s;   /* computed level below closing mark - reopen margin since; 0: it is not */
     struct road_fact road;
+    int64_t crew_called_utc_s; /* when a person said CREW CALLED (or OUT) in this thread; 0: nobody did */
     struct water_fact water;
     int64_t accepted_utc_s; /* newest acceptance of this thread; 0: none */
     char accepted_by[FACT_ROLE_SIZE];
+    bool is_outage_told; /* this outage of telemetry has been told: hand readings do not end it */
     int64_t told_number; /* number of the newest message of this thread; 0: none */
 };
 

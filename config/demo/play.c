@@ -202,11 +202,12 @@ static void set_reach(struct play *play, int64_t utc_s)
     gauge_page_set_in_reach(play->page, is_in_reach);
 }
 
+/* Spoken as it happens: the daemon stamps it with the world's time. */
 static void say(struct play *play, const struct script_word *word)
 {
-    static char command[] = "say", config[] = "--config", config_file[] = DRIVEN_DAEMON_CONFIG, at[] = "--at";
-    char time[sizeof word->at], clock[NIGHT_TIME_SIZE];
-    char *arguments[SCRIPT_PARTS_MAX + 6] = {command};
+    static char command[] = "say", config[] = "--config", config_file[] = DRIVEN_DAEMON_CONFIG;
+    char clock[NIGHT_TIME_SIZE];
+    char *arguments[SCRIPT_PARTS_MAX + 4] = {command};
     size_t count = 1;
     printf("\n%s  say", night_time_clock(word->at_utc_s, clock));
     for (size_t i = 0; i < word->part_count; i++) {
@@ -214,9 +215,6 @@ static void say(struct play *play, const struct script_word *word)
         printf(strchr(word->parts[i], ' ') != NULL ? " '%s'" : " %s", word->parts[i]);
     }
     putchar('\n');
-    memcpy(time, word->at, sizeof time);
-    arguments[count++] = at;
-    arguments[count++] = time;
     arguments[count++] = config;
     arguments[count++] = config_file;
     int exit_code = driven_daemon_command(&play->daemon, arguments);
@@ -251,7 +249,7 @@ static bool step(struct play *play, int64_t utc_s)
 static bool play_night(struct play *play)
 {
     int64_t cycle_s = play->crossings.cycle_s;
-    int64_t utc_s = night_script_start(&play->script);
+    int64_t utc_s = night_script_next(&play->script, night_script_start(&play->script) - 1);
     if (!driven_daemon_start(&play->daemon, play->forewater, utc_s) || !step(play, utc_s))
         return false;
     for (;;) {

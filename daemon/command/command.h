@@ -1,0 +1,27 @@
+/* SPDX-License-Identifier: MIT */
+/*
+ * The subcommands. Each takes argv with its own name at [0] and writes to stdout; a failure comes back as a status with its text, which main
+ * prints. A command that found something amiss (check) returns FW_BAD_INPUT after having printed it, with an empty text.
+ */
+#ifndef FOREWATER_DAEMON_COMMAND_COMMAND_H
+#define FOREWATER_DAEMON_COMMAND_COMMAND_H
+
+#include "daemon/error.h"
+#include "daemon/settings/settings.h"
+
+typedef enum fw_status command_function(int argument_count, char *arguments[], struct fw_error *error);
+
+command_function command_run;
+command_function command_check;
+command_function command_route;
+command_function command_replay;
+command_function command_status;
+command_function command_say;
+
+#define COMMAND_DEFAULT_CONFIG "/etc/forewater/forewater.json"
+
+/* Reads the settings; every fault goes to stderr, one a line. */
+FW_MUST_CHECK enum fw_status command_read_settings(const char *file, enum settings_need need,
+                                                   struct settings **settings_out, struct fw_error *error);
+
+#endif

@@ -1,0 +1,410 @@
+/* SPDX-License-Identifier: MIT */
+/* Routes hydrographs from files: the engine alone, no store, no clock. */
+#include "daemon/command/command.h"
+
+#include <errno.h>
+#include <math.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+#include "daemon/command/options.h"
+#include "daemon/command/table.h"
+#include "daemon/facts.h"
+
+enum { STEPS_MOST = 4000000 };
+
+struct hydrograph { /* discharge at a gauge, at uneven times */
+    size_t count;
+    double *time_s;
+    double *discharge_m3s;
+};
+
+struct route_plan {
+    const struct settings *settings;
+    struct network_reach *reaches; /* a copy, with the method asked for */
+    struct network_river river;
+    struct hydrograph *inflow; /* [gauge] */
+    bool is_in_seconds;        /* times came as plain numbers */
+    struct when_zone zone;     /* else: the offset they came with */
+    double start_s, until_s, every_s, step_s;
+    size_t fixed_cell_count;
+};
+
+/* --- input -------------------------------------------------------------------------------------------------------- */
+
+static bool is_plain_number(const char *text)
+{
+    return text[0] != '\0' && strspn(text, "+-0123456789.eE") == strlen(text) && strchr(text + 1, '-') == NULL;
+}
+
+/* The offset of the first time ("+01:00", "Z"), so that times go out as they came in. */
+static void take_zone(struct route_plan *plan, const char *text)
+{
+    struct fw_error ignored;
+    size_t length = strlen(text);
+    const char *offset = length > 6 && (text[length - 6] == '+' || text[length - 6] == '-') ? text + length - 6 : "Z";
+    if (when_zone_parse(offset, &plan->zone, &ignored) != FW_OK)
+        plan->zone = (struct when_zone){.is_fixed = true};
+}
+
+static enum fw_status read_time(const struct route_plan *plan, const struct table *table, size_t row, size_t column,
+                                double *time_s_out, struct fw_error *error)
+{
+    if (plan->is_in_seconds)
+        return table_number(table, row, column, time_s_out, error);
+    int64_t utc_s = 0;
+    enum fw_status status = table_time(table, row, column, &utc_s, error);
+    *time_s_out = (double)utc_s;
+    return status;
+}
+
+static enum fw_status read_value(const struct settings_gauge *gauge, const struct table *table, size_t row,
+                                 size_t discharge_column, size_t stage_column, double *discharge_out_m3s,
+                                 struct fw_error *error)
+{
+    double value = 0.0;
+    bool is_discharge = discharge_column != TABLE_NO_COLUMN;
+    enum fw_status status = table_number(table, row, is_discharge ? discharge_column : stage_column, &value, error);
+    if (status != FW_OK)
+        return status;
+    if (is_discharge && value < 0.0)
+        return fw_error_set(error, FW_BAD_INPUT, "%s:%zu: discharge_m3s: %g is below zero", table->file,
+                            table->line[row + 1], value);
+    *discharge_out_m3s = is_discharge ? value : rating_discharge_m3s(&gauge->rating, value, NULL);
+    return FW_OK;
+}
+
+static enum fw_status read_rows(struct route_plan *plan, const struct settings_gauge *gauge,
+                                const struct table *table, bool is_first, struct hydrograph *inflow,
+                                struct fw_error *error)
+{
+    size_t time_column = table_column(table, "time");
+    size_t discharge_column = table_column(table, "discharge_m3s");
+    size_t stage_column = table_column(table, "stage_m");
+    if (time_column == TABLE_NO_COLUMN || (discharge_column == TABLE_NO_COLUMN && stage_column == TABLE_NO_COLUMN))
+        return fw_error_set(error, FW_BAD_INPUT,
+                            "%s:%zu: the header must name the columns time and discharge_m3s or stage_m", table->file,
+                            table->line[0]);
+    if (discharge_column == TABLE_NO_COLUMN && !gauge->has_rating)
+        return fw_error_set(error, FW_BAD_INPUT, "%s: stage_m needs a rating, and gauge '%s' has none", table->file,
+                            gauge->id);
+    if (table->row_count == 0)
+        return fw_error_set(error, FW_BAD_INPUT, "%s: no rows below the header", table->file);
+    if (is_first) {
+        const char *first = table_cell(table, 0, time_column);
+        plan->is_in_seconds = is_plain_number(first);
+        take_zone(plan, first);
+    }
+    inflow->time_s = calloc(table->row_count, sizeof(double));
+    inflow->discharge_m3s = calloc(table->row_count, sizeof(double));
+    if (inflow->time_s == NULL || inflow->discharge_m3s == NULL)
+        return fw_error_set(error, FW_NO_MEMORY, "%s: no memory", table->file);
+    enum fw_status status = FW_OK;
+    for (size_t row = 0; row < table->row_count && status == FW_OK; row++) {
+        status = read_time(plan, table, row, time_column, &inflow->time_s[row], error);
+        if (status == FW_OK)
+            status =
+                read_value(gauge, table, row, discharge_column, stage_column, &inflow->discharge_m3s[row], error);
+        if (status == FW_OK && row > 0 && inflow->time_s[row] <= inflow->time_s[row - 1])
+            status = fw_error_set(error, FW_BAD_INPUT, "%s:%zu: time: '%s' is not after the row before it",
+                                  table->file, table->line[row + 1], table_cell(table, row, time_column));
+        inflow->count = row + 1;
+    }
+    return status;
+}
+
+static enum fw_status read_inflows(struct route_plan *plan, const struct option_values *given, struct fw_error *error)
+{
+    enum fw_status status = FW_OK;
+    for (size_t index = 0; index < given->count && status == FW_OK; index++) {
+        char id[FACT_ID_SIZE];
+        const char *file = NULL;
+        struct table table = {0};
+        status = table_split_argument("inflow", given->values[index], id, sizeof id, &file, error);
+        if (status != FW_OK)
+            return status;
+        size_t gauge = settings_gauge_index(plan->settings, id);
+        if (gauge == SETTINGS_NONE)
+            return fw_error_set(error, FW_USAGE, "--inflow: '%s' is not a gauge of the configuration", id);
+        if (plan->inflow[gauge].count > 0)
+            return fw_error_set(error, FW_USAGE, "--inflow: gauge '%s' is given twice", id);
+        status = table_read(file, &table, error);
+        if (status == FW_OK)
+            status = read_rows(plan, &plan->settings->gauges[gauge], &table, index == 0, &plan->inflow[gauge], error);
+        table_clear(&table);
+    }
+    for (size_t gauge = 0; gauge < plan->settings->gauge_count && status == FW_OK; gauge++)
+        if (plan->inflow[gauge].count == 0)
+            status =
+                fw_error_set(error, FW_USAGE, "gauge '%s' has no --inflow file", plan->settings->gauges[gauge].id);
+    return status;
+}
+
+/* --- plan --------------------------------------------------------------------------------------------------------- */
+
+static enum fw_status choose_method(struct route_plan *plan, const char *name, struct fw_error *error)
+{
+    static const struct {
+        const char *name;
+        enum network_method method;
+    } methods[] = {{"muskingum-cunge", NETWORK_MUSKINGUM_CUNGE},
+                   {"auto", NETWORK_MUSKINGUM_CUNGE},
+                   {"kinematic", NETWORK_KINEMATIC},
+                   {"kinematic-linear", NETWORK_KINEMATIC_LINEAR}};
+    plan->river = plan->settings->river;
+    plan->reaches = calloc(plan->river.reach_count + 1, sizeof *plan->reaches);
+    if (plan->reaches == NULL)
+        return fw_error_set(error, FW_NO_MEMORY, "no memory");
+    memcpy(plan->reaches, plan->river.reaches, plan->river.reach_count * sizeof *plan->reaches);
+    plan->river.reaches = plan->reaches;
+    if (name == NULL)
+        return FW_OK;
+    for (size_t index = 0; index < sizeof methods / sizeof *methods; index++) {
+        if (strcmp(name, methods[index].name) != 0)
+            continue;
+        for (size_t reach = 0; reach < plan->river.reach_count; reach++)
+            plan->reaches[reach].method = methods[index].method;
+        return FW_OK;
+    }
+    if (strcmp(name, "diffusive") == 0 || strcmp(name, "dynamic") == 0)
+        return fw_error_set(error, FW_UNAVAILABLE,
+                            "--method: '%s' (the full equations) is not in this version; it has "
+                            "muskingum-cunge, kinematic and kinematic-linear",
+                            name);
+    return fw_error_set(error, FW_USAGE,
+                        "--method: '%s' is not one of kinematic-linear, kinematic, muskingum-cunge, "
+                        "diffusive, dynamic, auto",
+                        name);
+}
+
+static enum fw_status plan_times(struct route_plan *plan, const char *until, long every_s, long step_s,
+                                 struct fw_error *error)
+{
+    double shortest_s = INFINITY;
+    plan->start_s = INFINITY;
+    plan->until_s = -INFINITY;
+    for (size_t gauge = 0; gauge < plan->settings->gauge_count; gauge++) {
+        const struct hydrograph *inflow = &plan->inflow[gauge];
+        plan->start_s = fmin(plan->start_s, inflow->time_s[0]);
+        plan->until_s = fmax(plan->until_s, inflow->time_s[inflow->count - 1]);
+        for (size_t row = 1; row < inflow->count; row++)
+            shortest_s = fmin(shortest_s, inflow->time_s[row] - inflow->time_s[row - 1]);
+    }
+    if (until != NULL && plan->is_in_seconds) {
+        char *end = NULL;
+        plan->until_s = strtod(until, &end);
+        if (end == until || *end != '\0' || !isfinite(plan->until_s))
+            return fw_error_set(error, FW_USAGE, "--until: '%s' is not a number of seconds, as the input has", until);
+    } else if (until != NULL) {
+        int64_t utc_s = 0;
+        enum fw_status status = when_parse(until, NULL, &utc_s, error);
+        if (status != FW_OK)
+            return fw_error_prefix(error, FW_USAGE, "--until");
+        plan->until_s = (double)utc_s;
+    }
+    if (plan->until_s < plan->start_s)
+        return fw_error_set(error, FW_USAGE, "--until is before the first inflow");
+    plan->step_s = step_s > 0 ? (double)step_s : (double)plan->settings->time_step_s;
+    plan->every_s = every_s > 0 ? (double)every_s : (isfinite(shortest_s) ? shortest_s : plan->step_s);
+    if ((plan->until_s - plan->start_s) / plan->step_s > STEPS_MOST)
+        return fw_error_set(error, FW_USAGE, "more than %d steps of %g s; give a longer --step", STEPS_MOST,
+                            plan->step_s);
+    return FW_OK;
+}
+
+/* --- routing and output ------------------------------------------------------------------------------------------- */
+
+static double inflow_at(const struct hydrograph *inflow, double time_s, size_t *hint)
+{
+    if (time_s <= inflow->time_s[0])
+        return inflow->discharge_m3s[0];
+    if (time_s >= inflow->time_s[inflow->count - 1])
+        return inflow->discharge_m3s[inflow->count - 1];
+    while (inflow->time_s[*hint + 1] < time_s)
+        (*hint)++;
+    double share = (time_s - inflow->time_s[*hint]) / (inflow->time_s[*hint + 1] - inflow->time_s[*hint]);
+    return inflow->discharge_m3s[*hint] + share * (inflow->discharge_m3s[*hint + 1] - inflow->discharge_m3s[*hint]);
+}
+
+static double gauge_stage_m(const struct route_plan *plan, size_t gauge, double discharge_m3s)
+{
+    const struct settings_gauge *known = &plan->settings->gauges[gauge];
+    if (known->has_rating)
+        return rating_stage_m(&known->rating, discharge_m3s, NULL);
+    double depth_m = NAN;
+    for (size_t reach = 0; reach < plan->river.reach_count; reach++)
+        if (plan->reaches[reach].from_node == known->node &&
+            section_normal_depth_m(plan->reaches[reach].section, plan->reaches[reach].slope_m_per_m, discharge_m3s,
+                                   &depth_m) != FW_OK)
+            depth_m = NAN;
+    return depth_m;
+}
+
+static void print_header(const struct route_plan *plan)
+{
+    printf("time");
+    for (size_t gauge = 0; gauge < plan->settings->gauge_count; gauge++)
+        printf(",%s.discharge_m3s,%s.stage_m", plan->settings->gauges[gauge].id, plan->settings->gauges[gauge].id);
+    for (size_t point = 0; point < plan->settings->point_count; point++)
+        printf(",%s.discharge_m3s,%s.stage_m", plan->settings->points[point].id, plan->settings->points[point].id);
+    printf("\n");
+}
+
+static void print_time(const struct route_plan *plan, double time_s)
+{
+    char text[WHEN_TEXT_SIZE];
+    if (plan->is_in_seconds)
+        printf("%.15g", time_s);
+    else
+        printf("%s", plan->zone.offset_s == 0 ? when_rfc3339_utc((int64_t)time_s, text)
+                                              : when_rfc3339_local(&plan->zone, (int64_t)time_s, text));
+}
+
+static double between(const double values[], double steps)
+{
+    size_t index = (size_t)steps;
+    double share = steps - (double)index;
+    return share > 0.0 ? values[index] + share * (values[index + 1] - values[index]) : values[index];
+}
+
+static void print_rows(const struct route_plan *plan, const struct network *network, size_t step_count,
+                       const double inflow_m3s[], const double point_m3s[])
+{
+    print_header(plan);
+    for (size_t row = 0; (double)row * plan->every_s <= plan->until_s - plan->start_s + 1e-6; row++) {
+        double steps = (double)row * plan->every_s / plan->step_s;
+        print_time(plan, plan->start_s + (double)row * plan->every_s);
+        for (size_t gauge = 0; gauge < plan->settings->gauge_count; gauge++) {
+            double flow = between(inflow_m3s + gauge * (step_count + 1), steps);
+            printf(",%.6f,%.4f", flow, gauge_stage_m(plan, gauge, flow));
+        }
+        for (size_t point = 0; point < plan->settings->point_count; point++) {
+            double flow = between(point_m3s + point * (step_count + 1), steps);
+            printf(",%.6f,%.4f", flow, network_point_stage_m(network, point, 0, flow));
+        }
+        printf("\n");
+    }
+}
+
+static enum fw_status build_network(const struct route_plan *plan, double largest_m3s, struct network **network_out,
+                                    struct fw_error *error)
+{
+    static const double one = 1.0;
+    struct network_options options = {.time_step_s = plan->step_s,
+                                      .fixed_cell_count = plan->fixed_cell_count,
+                                      .group_count = 1,
+                                      .roughness_factors = &one,
+                                      .members_per_group = 1,
+                                      .largest_discharge_m3s = largest_m3s,
+                                      .typical_peak_m3s = largest_m3s};
+    struct network_fault fault = {{0}};
+    enum fw_status status = network_create(&plan->river, &options, network_out, &fault);
+    if (status != FW_OK)
+        return fw_error_set(error, status, "%s: %s", plan->settings->file, fault.text);
+    return FW_OK;
+}
+
+static enum fw_status route(const struct route_plan *plan, struct fw_error *error)
+{
+    size_t gauges = plan->settings->gauge_count;
+    size_t points = plan->settings->point_count;
+    size_t step_count = (size_t)ceil((plan->until_s - plan->start_s) / plan->step_s) + 1;
+    struct network *network = NULL;
+    double *inflow_m3s = calloc(gauges * (step_count + 1) + 1, sizeof(double));
+    double *point_m3s = calloc(points * (step_count + 1) + 1, sizeof(double));
+    double *start_m3s = calloc(gauges + 1, sizeof(double));
+    double largest_m3s = 0.0;
+    enum fw_status status = FW_OK;
+    if (inflow_m3s == NULL || point_m3s == NULL || start_m3s == NULL) {
+        status = fw_error_set(error, FW_NO_MEMORY, "no memory for %zu steps", step_count);
+        goto cleanup;
+    }
+    for (size_t gauge = 0; gauge < gauges; gauge++) {
+        size_t hint = 0;
+        double peak_m3s = 0.0;
+        for (size_t step = 0; step <= step_count; step++) {
+            double flow = inflow_at(&plan->inflow[gauge], plan->start_s + (double)step * plan->step_s, &hint);
+            inflow_m3s[gauge * (step_count + 1) + step] = flow;
+            peak_m3s = fmax(peak_m3s, flow);
+        }
+        start_m3s[gauge] = inflow_m3s[gauge * (step_count + 1)];
+        largest_m3s += peak_m3s;
+    }
+    for (size_t side = 0; side < plan->river.side_inflow_count; side++)
+        largest_m3s += plan->river.side_inflows[side].share_of_gauge == NETWORK_NONE
+                           ? plan->river.side_inflows[side].constant_m3s
+                           : plan->river.side_inflows[side].share * largest_m3s;
+    status = build_network(plan, fmax(largest_m3s, 0.001), &network, error);
+    if (status == FW_OK)
+        status = network_start_steady(network, start_m3s);
+    if (status == FW_OK)
+        status = network_advance(network, step_count, inflow_m3s, point_m3s);
+    if (status == FW_OK)
+        print_rows(plan, network, step_count, inflow_m3s, point_m3s);
+    else if (error->text[0] == '\0')
+        fw_error_set(error, status, "the flow could not be routed");
+    if (status == FW_OK && (fflush(stdout) != 0 || ferror(stdout)))
+        status = fw_error_set(error, FW_IO, "standard output: %s", strerror(errno));
+cleanup:
+    network_destroy(network);
+    free(inflow_m3s);
+    free(point_m3s);
+    free(start_m3s);
+    return status;
+}
+
+enum fw_status command_route(int argument_count, char *arguments[], struct fw_error *error)
+{
+    struct option_values config = {0}, inflow = {0}, method = {0}, step = {0}, cells = {0}, every = {0}, until = {0};
+    const struct option_spec options[] = {
+        {"config", "FILE", "the configuration; gauges, sections, reaches and points are enough", &config},
+        {"inflow", "GAUGE=FILE.csv",
+         "columns time (RFC 3339, or seconds) and discharge_m3s or stage_m; one per gauge", &inflow},
+        {"method", "NAME", "kinematic-linear, kinematic, muskingum-cunge, diffusive, dynamic, auto", &method},
+        {"step", "SECONDS", "fixes the time step", &step},
+        {"cells", "N", "fixes the number of cells of every reach", &cells},
+        {"every", "SECONDS", "interval of the output (default: the shortest of the input)", &every},
+        {"until", "TIME", "end of the output, the last inflow held (default: the last inflow)", &until},
+        {NULL, NULL, NULL, NULL}};
+    const struct command_line line = {"route", "", "Routes hydrographs from files to every gauge and point, as CSV.",
+                                      options};
+    struct settings *settings = NULL;
+    struct route_plan plan = {0};
+    int rest = 0;
+    long step_s = 0, cell_count = 0, every_s = 0;
+    enum fw_status status = options_read(&line, argument_count, arguments, &rest, error);
+    if (status == FW_OK && rest < argument_count)
+        status = fw_error_set(error, FW_USAGE, "route: '%s' is not expected here", arguments[rest]);
+    if (status == FW_OK)
+        status = option_whole("step", &step, 1, 86400, 0, &step_s, error);
+    if (status == FW_OK)
+        status = option_whole("cells", &cells, 1, 100000, 0, &cell_count, error);
+    if (status == FW_OK)
+        status = option_whole("every", &every, 1, 31536000, 0, &every_s, error);
+    if (status != FW_OK)
+        return status;
+    status =
+        command_read_settings(option_text(&config, COMMAND_DEFAULT_CONFIG), SETTINGS_FOR_ROUTE, &settings, error);
+    if (status != FW_OK)
+        return status;
+    plan.settings = settings;
+    plan.fixed_cell_count = (size_t)cell_count;
+    plan.inflow = calloc(settings->gauge_count + 1, sizeof *plan.inflow);
+    status = plan.inflow != NULL ? choose_method(&plan, option_text(&method, NULL), error)
+                                 : fw_error_set(error, FW_NO_MEMORY, "no memory");
+    if (status == FW_OK)
+        status = read_inflows(&plan, &inflow, error);
+    if (status == FW_OK)
+        status = plan_times(&plan, option_text(&until, NULL), every_s, step_s, error);
+    if (status == FW_OK)
+        status = route(&plan, error);
+    for (size_t gauge = 0; gauge < settings->gauge_count && plan.inflow != NULL; gauge++) {
+        free(plan.inflow[gauge].time_s);
+        free(plan.inflow[gauge].discharge_m3s);
+    }
+    free(plan.inflow);
+    free(plan.reaches);
+    settings_destroy(settings);
+    return status;
+}
