@@ -172,7 +172,8 @@ static void accept_hand(struct judge *judge, size_t index)
     if (stretch->first == NONE)
         return;
     double away = fabs(change(judge, stretch->first, index)) - MISSING_RESOLUTIONS * judge->rules->resolution;
-    if (away > judge->rules->moving_rate_per_s * elapsed_s(judge, stretch->first, index))
+    double while_s = fmax(elapsed_s(judge, stretch->first, index), judge->rules->frozen_moving_s);
+    if (away > judge->rules->moving_rate_per_s * while_s)
         stretch->is_hand_beside = true;
 }
 

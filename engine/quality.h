@@ -86,11 +86,12 @@ struct quality_verdict {
  * was moving: it came into the stretch faster than moving_rate, and by now three resolutions of movement had to
  * show, both at that rate (rounding taken off) and on the parabola through the readings of the last 3
  * frozen_moving_s before it, so that a flood that rounds its top is not taken for a dead gauge; or a hand reading
- * stands off by as much, or so far that the sensor could not have come back at the fastest rates. It is also FROZEN
- * after frozen_after_s whatever went before. Then all of it but its first reading is suspect and kept out: those
- * times are no news of the river. Until then it counts. Readings further apart than the limit make no stretch. The
- * step that ends a freeze after movement is measured from its first reading, since the river went on meanwhile, and
- * is so no spike.
+ * stands off by three resolutions more than the moving rate explains (over frozen_moving_s at least, since board and
+ * sensor may differ a little), or so far that the sensor could not have come back at the fastest rates. It is also
+ * FROZEN after frozen_after_s whatever went before. Then all of it but its first reading is suspect and kept out:
+ * those times are no news of the river. Until then it counts. Readings further apart than the limit make no stretch.
+ * The step that ends a freeze after movement is measured from its first reading, since the river went on meanwhile,
+ * and is so no spike.
  *
  * FW_BAD_INPUT: times not rising, a value not finite, a rule that is not a number. Nothing is written then.
  * Allocates nothing.

@@ -229,6 +229,10 @@ static void what_is_not_a_number_is_refused(void **state)
     assert_int_equal(assumed_inflow(&RULES, ASSUMED_HELD, NULL, 1.0, HUGE_VAL, 60.0, 2, out), FW_BAD_INPUT);
     assert_int_equal(assumed_inflow(&RULES, ASSUMED_HELD, NULL, 1.0, 0.0, 0.0, 2, out), FW_BAD_INPUT);
     assert_int_equal(assumed_inflow(&RULES, ASSUMED_FUTURE_COUNT, NULL, 1.0, 0.0, 60.0, 2, out), FW_BAD_INPUT);
+    /* none of them need be more than zero but the time constant */
+    const struct assumed_rules still = {.recession_time_constant_s = 40000.0};
+    assert_int_equal(assumed_inflow(&still, ASSUMED_FASTEST_RISE, NULL, 1.0, 0.0, 60.0, 2, out), FW_OK);
+    assert_true(out[2] == 1.0);
     /* 1e308 m3/s and rising runs out of numbers */
     assert_int_equal(assumed_inflow(&RULES, ASSUMED_FASTEST_RISE, NULL, 1e308, 1e308, 60.0, 2, out), FW_BAD_INPUT);
 }

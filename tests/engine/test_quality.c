@@ -326,6 +326,24 @@ static void two_high_readings_that_disagree_stay_held_and_are_denied_together(vo
     assert_verdict(&record, AT(22, 45), QUALITY_PASS, QUALITY_USE, 0);
 }
 
+static void a_step_that_is_left_too_fast_is_not_borne_out(void **state)
+{
+    (void)state;
+    /* more than half of the step is kept, but the way back from it is too fast for any river */
+    struct record record = {0};
+    before_the_spike(&record);
+    add(&record, AT(22, 35), 8.90);
+    add(&record, AT(22, 40), 6.00);
+    judge_at(&record, &RULES, AT(22, 40));
+    assert_verdict(&record, AT(22, 35), QUALITY_SUSPECT, QUALITY_HOLD, QUALITY_RISE_TOO_FAST | QUALITY_UNCONFIRMED);
+    struct record fall = {0};
+    add(&fall, AT(1, 0), 2.80);
+    add(&fall, AT(1, 5), 0.80);
+    add(&fall, AT(1, 10), 1.75);
+    judge_at(&fall, &RULES, AT(1, 10));
+    assert_verdict(&fall, AT(1, 5), QUALITY_SUSPECT, QUALITY_KEEP_OUT, QUALITY_FALL_TOO_FAST);
+}
+
 static void a_reading_out_of_range_neither_bears_out_nor_denies(void **state)
 {
     (void)state;
@@ -417,6 +435,30 @@ static void a_staff_board_a_little_off_the_sensor_makes_no_rate(void **state)
     add_line(&record, AT(3, 36), AT(3, 50), 60, 2.96, 3.10);
     judge_at(&record, &RULES, AT(3, 50));
     assert_all_pass(&record);
+    /* on a still river too */
+    struct record still = {0};
+    add_line(&still, AT(3, 20), AT(3, 35), 60, 2.95, 2.95);
+    add_hand(&still, AT(3, 35), 2.80);
+    add(&still, AT(3, 36), 2.96);
+    judge_at(&still, &RULES, AT(3, 36));
+    assert_all_pass(&still);
+    /* but a spike beside a hand reading is a spike */
+    add(&still, AT(3, 37), 4.20);
+    judge_at(&still, &RULES, AT(3, 37));
+    assert_int_equal(verdict_of(&still, AT(3, 37))->use, QUALITY_HOLD);
+}
+
+static void a_record_may_begin_with_a_hand_reading(void **state)
+{
+    (void)state;
+    struct record record = {0};
+    add_hand(&record, AT(3, 35), 2.90);
+    add(&record, AT(3, 40), 2.99);
+    add(&record, AT(3, 45), 5.99);
+    judge_at(&record, &RULES, AT(3, 45));
+    assert_verdict(&record, AT(3, 35), QUALITY_PASS, QUALITY_USE, QUALITY_HAND);
+    assert_verdict(&record, AT(3, 40), QUALITY_PASS, QUALITY_USE, 0);
+    assert_int_equal(verdict_of(&record, AT(3, 45))->use, QUALITY_HOLD);
 }
 
 static void hand_readings_alone_carry_an_outage(void **state)
@@ -549,6 +591,22 @@ static void the_interval_of_a_logger_does_not_change_when_a_freeze_is_flagged(vo
     }
 }
 
+static void a_slow_river_is_given_longer_before_it_is_called_frozen(void **state)
+{
+    (void)state;
+    /* 0.12 m/h is one centimetre in 5 min: of two in 10 min one may be rounding, and the other alone shows three
+     * resolutions of movement only after more than 30 min */
+    struct record record = {0};
+    add_line(&record, AT(0, 0), AT(1, 0), 300, 2.00, 1.88);
+    const int64_t first = record.samples[record.count - 1].observed_utc_s;
+    const double value = record.samples[record.count - 1].value;
+    for (int64_t utc_s = AT(1, 0); utc_s < AT(1, 45); utc_s += 300) {
+        add(&record, utc_s, value);
+        judge_at(&record, &RULES, utc_s);
+        assert_int_equal(newest_news(&record), utc_s - first > 30 * MINUTE ? first : utc_s);
+    }
+}
+
 static void a_low_flat_recession_is_not_frozen_until_the_long_limit(void **state)
 {
     (void)state;
@@ -644,6 +702,21 @@ static void a_hand_reading_beside_an_unmoved_sensor_shows_it_frozen(void **state
     add(&offset, AT(3, 40), 2.34);
     judge_at(&offset, &RULES, AT(3, 40));
     assert_all_pass(&offset);
+    /* nor soon after the stretch began, when the moving rate alone explains less */
+    struct record early = {0};
+    add(&early, AT(3, 0), 2.34);
+    add(&early, AT(3, 5), 2.34);
+    add_hand(&early, AT(3, 7), 2.29);
+    add_line(&early, AT(3, 10), AT(3, 40), 300, 2.34, 2.34);
+    judge_at(&early, &RULES, AT(3, 35));
+    assert_all_pass(&early);
+    /* a hand reading far enough off shows it without any limit on rates */
+    struct quality_rules no_rates = RULES;
+    no_rates.fastest_rise_per_s = no_rates.fastest_fall_per_s = HUGE_VAL;
+    early.samples[2].value = 2.25;
+    judge_at(&early, &no_rates, AT(3, 35));
+    assert_int_equal(newest_news(&early), AT(3, 7));
+    assert_verdict(&early, AT(3, 35), QUALITY_SUSPECT, QUALITY_KEEP_OUT, QUALITY_FROZEN);
 }
 
 static void a_sensor_back_at_its_old_reading_after_a_hand_reading_far_away_is_frozen(void **state)
@@ -893,6 +966,9 @@ int main(void)
         cmocka_unit_test(a_lone_jump_counts_unconfirmed_when_the_limit_has_passed),
         cmocka_unit_test(a_later_reading_changes_the_mind_about_a_jump_that_counted),
         cmocka_unit_test(two_high_readings_that_disagree_stay_held_and_are_denied_together),
+        cmocka_unit_test(a_step_that_is_left_too_fast_is_not_borne_out),
+        cmocka_unit_test(a_record_may_begin_with_a_hand_reading),
+        cmocka_unit_test(a_slow_river_is_given_longer_before_it_is_called_frozen),
         cmocka_unit_test(a_reading_out_of_range_neither_bears_out_nor_denies),
         cmocka_unit_test(a_suspect_fall_is_kept_out_until_borne_out),
         cmocka_unit_test(a_spike_beside_the_rise_does_not_spoil_the_rise),
