@@ -182,9 +182,12 @@ static enum fw_status assess_water(struct cycle *cycle, const struct picture *pi
     enum fw_status status = passage_peak_after(&curves, now_utc_s, &point->peak);
     for (size_t mark = 0; mark < known->mark_count && status == FW_OK; mark++)
         status = passage_of_mark(&curves, now_utc_s, known->marks[mark].depth_m, &point->marks[mark].passage);
+    int64_t back_by_utc_s = now_utc_s + known->reopen_and_reclose_s;
+    int64_t end_utc_s = cycle->start_utc_s + (int64_t)cycle->step_count * cycle->settings->time_step_s;
     if (status == FW_OK)
-        status = passage_chance_between(&curves, known->marks[known->closing_mark].depth_m, now_utc_s,
-                                        now_utc_s + known->reopen_and_reclose_s, &point->chance_of_return);
+        status =
+            passage_chance_between(&curves, known->marks[known->closing_mark].depth_m, now_utc_s,
+                                   back_by_utc_s < end_utc_s ? back_by_utc_s : end_utc_s, &point->chance_of_return);
     point->measured_until_utc_s = measured_until(cycle, index);
     point->unmeasured_share = unmeasured_share(cycle, picture, index);
     point->is_peak_beyond_gauging = is_peak_beyond_gauging(cycle, now_utc_s);

@@ -138,6 +138,10 @@ static void step_ladder(const struct advice_policy *policy, const struct advice_
     struct wanted wanted = wanted_on_ladder(policy, facts, next->act_by_utc_s);
     const enum advice_level held = is_on_ladder(last->level) ? last->level : ADVICE_QUIET;
 
+    /* as long as one run still has the water of this spell there, SEND would send a crew into it */
+    if (held == ADVICE_LATE && wanted.level == ADVICE_SEND && facts->closing.earliest_utc_s <= now)
+        wanted.level = ADVICE_LATE;
+
     next->reasons = wanted.reasons;
     const bool is_low_enough = facts->closing.chance < policy->step_down_chance || facts->closing.chance <= 0.0;
     if (held != ADVICE_QUIET && wanted.level == ADVICE_QUIET && !is_low_enough) {

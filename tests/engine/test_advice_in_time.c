@@ -330,6 +330,26 @@ static void a_shift_of_act_by_is_news_only_when_someone_still_waits_on_it(void *
     }
 }
 
+static void late_is_not_followed_by_send_while_a_run_still_has_the_water_there(void **state)
+{
+    (void)state;
+    struct advice advice = standing_at(ADVICE_LATE);
+    /* 3 of 9 runs are still in a spell that began two hours ago; the middle one has none any more */
+    struct advice_facts facts = arriving_at(NOW, 3.0 / 9.0, NOW - 2 * HOUR, PASSAGE_NEVER);
+    for (int minute = 0; minute <= 3 * DWELL / MINUTE; minute += 5) {
+        facts.now_utc_s = NOW + minute * MINUTE;
+        advice = step(&facts, &advice);
+        assert_int_equal(advice.level, ADVICE_LATE);
+    }
+    /* the water is gone and comes again in three hours: that is a new reason to send */
+    facts = arriving_at(facts.now_utc_s, 3.0 / 9.0, facts.now_utc_s + 75 * MINUTE, PASSAGE_NEVER);
+    for (int minute = 0; minute <= DWELL / MINUTE; minute += 5) {
+        advice = step(&facts, &advice);
+        facts.now_utc_s += 5 * MINUTE;
+    }
+    assert_int_equal(advice.level, ADVICE_SEND);
+}
+
 static void a_shift_of_act_by_is_no_news_at_quiet_or_late(void **state)
 {
     (void)state;
@@ -533,6 +553,7 @@ int main(void)
         cmocka_unit_test(no_walk_over_between_two_peaks_while_the_second_may_come),
         cmocka_unit_test(a_road_handed_back_stands_on_the_ladder_again),
         cmocka_unit_test(a_shift_of_act_by_is_news_only_when_someone_still_waits_on_it),
+        cmocka_unit_test(late_is_not_followed_by_send_while_a_run_still_has_the_water_there),
         cmocka_unit_test(a_shift_of_act_by_is_no_news_at_quiet_or_late),
         cmocka_unit_test(small_shifts_add_up_to_news_against_what_was_told),
         cmocka_unit_test(every_change_of_level_is_news_and_nothing_else_repeats_it),
