@@ -1,9 +1,9 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * Rows of a table found from the bits of a double: 32 equal segments to the octave, with no logarithm, search or
+ * Rows of a table found from the bits of a double: 64 equal segments to the octave, with no logarithm, search or
  * division.
  *
- * The exponent and the first five fraction bits of a positive double, read as an integer, count those segments in
+ * The exponent and the first six fraction bits of a positive double, read as an integer, count those segments in
  * order. Row 0 takes everything below the first segment (a line through the origin belongs there); the last row
  * takes everything above. Whatever the argument - negative, infinite, not a number - the row lies inside the table.
  */
@@ -14,7 +14,7 @@
 #include <stdint.h>
 #include <string.h>
 
-enum { BIT_INDEX_ROWS_PER_OCTAVE = 32, BIT_INDEX_SHIFT = 52 - 5 };
+enum { BIT_INDEX_ROWS_PER_OCTAVE = 64, BIT_INDEX_SHIFT = 52 - 6 };
 
 struct bit_index {
     double lowest; /* the argument is held between these two before its bits are read */

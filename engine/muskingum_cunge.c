@@ -4,25 +4,31 @@
 #include <math.h>
 #include <stdlib.h>
 
-/* The reach's potentials at the curve's nodes, all rising with the flow but b, which may fall. */
+static const double hair = 1e-12;
+
+/* The reach's potentials at the curve's nodes; none falls as the flow rises. */
 struct potentials {
     size_t count;
     double *passing_m3;
     double *potential_m3;
-    double *b_m3;
+    double *implicit_m3;
 };
 
 static void potentials_clear(struct potentials *potentials)
 {
     free(potentials->passing_m3);
     free(potentials->potential_m3);
-    free(potentials->b_m3);
+    free(potentials->implicit_m3);
 }
 
-/* The share of E that one interval of the curve adds. Differences, not point values of c, which jumps at bank
- * full. */
-static double matched_increment_m3(const struct muskingum_cunge_reach *reach, size_t node,
-                                   double discharge_per_conveyance)
+/* A piece of the curve: from one node to the next, or from nothing to the lowest node. */
+struct piece {
+    double held_m3, passing_m3; /* rise of dx A and of dt Q */
+    double diffusive_m3;        /* of the integral of D/c^2 */
+};
+
+static struct piece piece_above(const struct muskingum_cunge_reach *reach, size_t node,
+                                double discharge_per_conveyance)
 {
     const struct flow_curve *curve = reach->curve;
     double depth_rise = curve->depth_m[node + 1] - curve->depth_m[node];
@@ -32,45 +38,49 @@ static double matched_increment_m3(const struct muskingum_cunge_reach *reach, si
     double area = 0.5 * (curve->area_m2[node + 1] + curve->area_m2[node]);
     double discharge =
         0.5 * discharge_per_conveyance * (curve->conveyance_m3s[node + 1] + curve->conveyance_m3s[node]);
-    double celerity = discharge_rise / area_rise;
+    double celerity = discharge_rise / area_rise; /* by differences: its point values jump at bank full */
     double diffusivity =
         flow_curve_diffusivity_m2_s(discharge, area, area_rise / depth_rise, celerity, reach->slope_m_per_m);
-    double matched = diffusivity / celerity * area_rise;
-    double least = 0.5 * fabs(reach->cell_m * area_rise - reach->time_step_s * discharge_rise);
-    return fmax(matched, least);
+    return (struct piece){.held_m3 = reach->cell_m * area_rise,
+                          .passing_m3 = reach->time_step_s * discharge_rise,
+                          .diffusive_m3 = diffusivity / celerity * area_rise};
 }
 
-/* E at the lowest node, below which H and b run straight to the origin. */
-static double matched_start_m3(const struct muskingum_cunge_reach *reach, size_t node,
-                               double discharge_per_conveyance)
+/* Below the lowest node D/c^2 is taken as it is just above it. */
+static struct piece lowest_piece(const struct muskingum_cunge_reach *reach, size_t node,
+                                 double discharge_per_conveyance)
 {
-    const struct flow_curve *curve = reach->curve;
-    double area = curve->area_m2[node];
-    double discharge = discharge_per_conveyance * curve->conveyance_m3s[node];
-    double area_rise = curve->area_m2[node + 1] - area;
-    double depth_rise = curve->depth_m[node + 1] - curve->depth_m[node];
-    double celerity = (discharge_per_conveyance * curve->conveyance_m3s[node + 1] - discharge) / area_rise;
-    double diffusivity =
-        flow_curve_diffusivity_m2_s(discharge, area, area_rise / depth_rise, celerity, reach->slope_m_per_m);
-    double matched = discharge * diffusivity / (celerity * celerity);
-    double least = 0.5 * fabs(reach->cell_m * area - reach->time_step_s * discharge);
-    return fmax(matched, least);
+    struct piece above = piece_above(reach, node, discharge_per_conveyance);
+    double passing = reach->time_step_s * discharge_per_conveyance * reach->curve->conveyance_m3s[node];
+    return (struct piece){.held_m3 = reach->cell_m * reach->curve->area_m2[node],
+                          .passing_m3 = passing,
+                          .diffusive_m3 = above.diffusive_m3 * (passing / above.passing_m3)};
+}
+
+/* The rise of d over a piece: never less than nothing, so that d never runs backwards, not even by rounding. */
+static double implicit_rise_m3(const struct muskingum_cunge_reach *reach, const struct piece *piece)
+{
+    if (reach->diffusion == MUSKINGUM_CUNGE_UPWIND)
+        return piece->passing_m3;
+    double matched = piece->diffusive_m3 - 0.5 * (piece->held_m3 - piece->passing_m3);
+    return fmax(matched, fmax(0.0, piece->passing_m3 - piece->held_m3));
 }
 
 static void fill_potentials(const struct muskingum_cunge_reach *reach, size_t first_node,
                             double discharge_per_conveyance, struct potentials *potentials)
 {
-    bool is_matched = reach->diffusion == MUSKINGUM_CUNGE_MATCHED;
-    double e = is_matched ? matched_start_m3(reach, first_node, discharge_per_conveyance) : 0.0;
+    double implicit = 0.0;
     for (size_t i = 0; i < potentials->count; i++) {
         size_t node = first_node + i;
+        struct piece piece = i == 0 ? lowest_piece(reach, node, discharge_per_conveyance)
+                                    : piece_above(reach, node - 1, discharge_per_conveyance);
         double passing = reach->time_step_s * discharge_per_conveyance * reach->curve->conveyance_m3s[node];
         double held = reach->cell_m * reach->curve->area_m2[node];
-        if (is_matched && i > 0)
-            e += matched_increment_m3(reach, node - 1, discharge_per_conveyance);
+        implicit += implicit_rise_m3(reach, &piece);
         potentials->passing_m3[i] = passing;
-        potentials->potential_m3[i] = is_matched ? 0.5 * (held + passing) + e : held + passing;
-        potentials->b_m3[i] = is_matched ? 0.5 * (held + passing) - e : 0.0;
+        potentials->implicit_m3[i] = reach->diffusion == MUSKINGUM_CUNGE_UPWIND ? passing : implicit;
+        /* more than passes, if only by a hair: no rounding may let more out of a cell than is in it */
+        potentials->potential_m3[i] = fmax(held + potentials->implicit_m3[i], passing * (1.0 + hair));
     }
 }
 
@@ -87,30 +97,31 @@ static enum fw_status potentials_init(const struct muskingum_cunge_reach *reach,
     potentials->count = curve->count - first;
     potentials->passing_m3 = calloc(potentials->count, sizeof *potentials->passing_m3);
     potentials->potential_m3 = calloc(potentials->count, sizeof *potentials->potential_m3);
-    potentials->b_m3 = calloc(potentials->count, sizeof *potentials->b_m3);
-    if (potentials->passing_m3 == NULL || potentials->potential_m3 == NULL || potentials->b_m3 == NULL)
+    potentials->implicit_m3 = calloc(potentials->count, sizeof *potentials->implicit_m3);
+    if (potentials->passing_m3 == NULL || potentials->potential_m3 == NULL || potentials->implicit_m3 == NULL)
         return FW_NO_MEMORY;
     fill_potentials(reach, first, discharge_per_conveyance, potentials);
     return FW_OK;
 }
 
-/* Passing volume and b at a potential that is not less than the one asked for before; *node remembers the place. */
-static void read_potentials(const struct potentials *potentials, double potential_m3, size_t *node,
-                            double *passing_out_m3, double *b_out_m3)
+struct volumes {
+    double passing_m3, implicit_m3;
+};
+
+/* At a potential that is not less than the one asked for before; *node remembers the place. */
+static struct volumes read_potentials(const struct potentials *potentials, double potential_m3, size_t *node)
 {
     const double *h = potentials->potential_m3;
+    const double *passing = potentials->passing_m3;
+    const double *implicit = potentials->implicit_m3;
+    if (potential_m3 <= h[0])
+        return (struct volumes){passing[0] * (potential_m3 / h[0]), implicit[0] * (potential_m3 / h[0])};
     while (*node + 2 < potentials->count && h[*node + 1] <= potential_m3)
         ++*node;
-    if (potential_m3 <= h[0]) {
-        *passing_out_m3 = potentials->passing_m3[0] * (potential_m3 / h[0]);
-        *b_out_m3 = potentials->b_m3[0] * (potential_m3 / h[0]);
-        return;
-    }
-    double share = (potential_m3 - h[*node]) / (h[*node + 1] - h[*node]);
-    const double *passing = potentials->passing_m3 + *node;
-    const double *b = potentials->b_m3 + *node;
-    *passing_out_m3 = passing[0] + share * (passing[1] - passing[0]);
-    *b_out_m3 = b[0] + share * (b[1] - b[0]);
+    size_t i = *node;
+    double share = (potential_m3 - h[i]) / (h[i + 1] - h[i]);
+    return (struct volumes){passing[i] + share * (passing[i + 1] - passing[i]),
+                            implicit[i] + share * (implicit[i + 1] - implicit[i])};
 }
 
 static void fill_rows(const struct potentials *potentials, struct muskingum_cunge_table *table)
@@ -118,21 +129,20 @@ static void fill_rows(const struct potentials *potentials, struct muskingum_cung
     size_t row_count = table->by_potential.row_count;
     size_t node = 0;
     double start = bit_index_row_start(&table->by_potential, 1);
-    double passing, b;
-    read_potentials(potentials, start, &node, &passing, &b);
-    table->rows[0] = (struct muskingum_cunge_row){0.0, passing / start, 0.0, b / start};
+    struct volumes at_start = read_potentials(potentials, start, &node);
+    table->rows[0] =
+        (struct muskingum_cunge_row){0.0, at_start.passing_m3 / start, 0.0, at_start.implicit_m3 / start};
     table->row_outflow[0] = 0.0;
     for (size_t row = 1; row < row_count; row++) {
         double end = bit_index_row_start(&table->by_potential, row + 1);
-        double end_passing, end_b;
-        read_potentials(potentials, end, &node, &end_passing, &end_b);
-        double outflow_1 = (end_passing - passing) / (end - start);
-        double b_1 = (end_b - b) / (end - start);
-        table->rows[row] = (struct muskingum_cunge_row){passing - outflow_1 * start, outflow_1, b - b_1 * start, b_1};
-        table->row_outflow[row] = passing;
+        struct volumes at_end = read_potentials(potentials, end, &node);
+        double outflow_1 = (at_end.passing_m3 - at_start.passing_m3) / (end - start);
+        double implicit_1 = (at_end.implicit_m3 - at_start.implicit_m3) / (end - start);
+        table->rows[row] = (struct muskingum_cunge_row){at_start.passing_m3 - outflow_1 * start, outflow_1,
+                                                        at_start.implicit_m3 - implicit_1 * start, implicit_1};
+        table->row_outflow[row] = at_start.passing_m3;
         start = end;
-        passing = end_passing;
-        b = end_b;
+        at_start = at_end;
     }
     table->row_outflow[row_count] = (double)INFINITY;
 }
@@ -210,37 +220,37 @@ double muskingum_cunge_potential_m3(const struct muskingum_cunge_table *table, d
     return (passing_m3 - row->outflow_0) / row->outflow_1;
 }
 
-double muskingum_cunge_head_b(const struct muskingum_cunge_table *table, double passing_m3)
+double muskingum_cunge_implicit_m3(const struct muskingum_cunge_table *table, double passing_m3)
 {
     const struct muskingum_cunge_row *row = row_of_passing(table, passing_m3);
-    return row->b_0 + row->b_1 * ((passing_m3 - row->outflow_0) / row->outflow_1);
+    return row->implicit_0 + row->implicit_1 * ((passing_m3 - row->outflow_0) / row->outflow_1);
 }
 
 void muskingum_cunge_step(const struct muskingum_cunge_table *table, size_t cell_count, size_t member_count,
-                          double state_m3[restrict], double passing_m3[restrict], double b_m3[restrict])
+                          double state_m3[restrict], double passing_m3[restrict], double implicit_m3[restrict])
 {
     const struct bit_index index = table->by_potential;
     const struct muskingum_cunge_row *const rows = table->rows;
     for (size_t cell = 0; cell < cell_count; cell++, state_m3 += member_count) {
         for (size_t member = 0; member < member_count; member++) {
-            double potential = state_m3[member] + (passing_m3[member] - b_m3[member]);
+            double potential = state_m3[member] + implicit_m3[member];
             const struct muskingum_cunge_row *row = rows + bit_index_row(&index, potential);
             double passing = row->outflow_0 + row->outflow_1 * potential;
-            double b = row->b_0 + row->b_1 * potential;
-            state_m3[member] = (potential - passing) + b_m3[member]; /* in this order, or volume does not close */
+            double implicit = row->implicit_0 + row->implicit_1 * potential;
+            /* in this order: each difference is of numbers near to each other, and volume closes to rounding */
+            state_m3[member] = (potential - passing) + (passing_m3[member] - implicit_m3[member]);
             passing_m3[member] = passing;
-            b_m3[member] = b;
+            implicit_m3[member] = implicit;
         }
     }
 }
 
 double muskingum_cunge_steady_state_m3(const struct muskingum_cunge_table *table, double lateral_m3,
-                                       double *passing_m3, double *b_m3)
+                                       double *passing_m3, double *implicit_m3)
 {
     double out_m3 = *passing_m3 + lateral_m3;
-    double potential = muskingum_cunge_potential_m3(table, out_m3);
-    double state = potential - lateral_m3 - (*passing_m3 - *b_m3);
+    double state = muskingum_cunge_potential_m3(table, out_m3) - lateral_m3 - *implicit_m3;
     *passing_m3 = out_m3;
-    *b_m3 = muskingum_cunge_head_b(table, out_m3);
+    *implicit_m3 = muskingum_cunge_implicit_m3(table, out_m3);
     return state;
 }

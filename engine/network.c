@@ -55,7 +55,7 @@ struct network {
 
     double *side_m3; /* scratch of one group, [side inflow][member] */
     double *stop_m3;
-    double *b_m3;
+    double *implicit_m3;
     double *passing_m3;
     double *lateral_m3;
 
@@ -207,11 +207,11 @@ static enum fw_status allocate_values(struct network *network)
     network->blocks = room_for(network->group_count * layout->count, sizeof *network->blocks);
     network->side_m3 = room_for(river->side_inflow_count * members, sizeof *network->side_m3);
     network->stop_m3 = room_for(most_stops * members, sizeof *network->stop_m3);
-    network->b_m3 = room_for(members, sizeof *network->b_m3);
+    network->implicit_m3 = room_for(members, sizeof *network->implicit_m3);
     network->passing_m3 = room_for(members, sizeof *network->passing_m3);
     network->lateral_m3 = room_for(most_cells, sizeof *network->lateral_m3);
     bool is_short = network->blocks == NULL || network->side_m3 == NULL || network->stop_m3 == NULL ||
-                    network->b_m3 == NULL || network->passing_m3 == NULL || network->lateral_m3 == NULL;
+                    network->implicit_m3 == NULL || network->passing_m3 == NULL || network->lateral_m3 == NULL;
     return is_short ? FW_NO_MEMORY : FW_OK;
 }
 
@@ -272,7 +272,7 @@ void network_destroy(struct network *network)
     free(network->blocks);
     free(network->side_m3);
     free(network->stop_m3);
-    free(network->b_m3);
+    free(network->implicit_m3);
     free(network->passing_m3);
     free(network->lateral_m3);
     free(network);
@@ -286,7 +286,7 @@ static struct routed_flows flows_of(const struct network *network)
         .member_count = network->members_per_group,
         .side_m3 = network->side_m3,
         .stop_m3 = network->stop_m3,
-        .b_m3 = network->b_m3,
+        .implicit_m3 = network->implicit_m3,
         .passing_m3 = network->passing_m3,
         .lateral_m3 = network->lateral_m3,
     };

@@ -246,7 +246,7 @@ static void start_member(const struct routed_reach *reach, size_t group, const s
     size_t members = flows->member_count;
     size_t stop = 1;
     double passing = flows->stop_m3[member];
-    double b = reach->tables != NULL ? muskingum_cunge_head_b(&reach->tables[group], passing) : 0.0;
+    double implicit = reach->tables != NULL ? muskingum_cunge_implicit_m3(&reach->tables[group], passing) : 0.0;
     gather_lateral(reach, flows, member);
     if (reach->tables == NULL)
         state[member * (reach->cell_count + 1)] = passing / reach->time_step_s;
@@ -254,7 +254,7 @@ static void start_member(const struct routed_reach *reach, size_t group, const s
         double lateral = flows->lateral_m3[cell];
         if (reach->tables != NULL) {
             state[cell * members + member] =
-                muskingum_cunge_steady_state_m3(&reach->tables[group], lateral, &passing, &b);
+                muskingum_cunge_steady_state_m3(&reach->tables[group], lateral, &passing, &implicit);
         } else {
             passing += lateral;
             state[member * (reach->cell_count + 1) + cell + 1] = passing / reach->time_step_s;
@@ -278,7 +278,7 @@ static void step_storage(const struct routed_reach *reach, size_t group, const s
     size_t members = flows->member_count;
     for (size_t member = 0; member < members; member++) {
         flows->passing_m3[member] = flows->stop_m3[member];
-        flows->b_m3[member] = muskingum_cunge_head_b(table, flows->stop_m3[member]);
+        flows->implicit_m3[member] = muskingum_cunge_implicit_m3(table, flows->stop_m3[member]);
     }
     for (size_t i = 0; i < reach->side_count; i++) {
         double *cell = state + reach->sides[i].cell * members;
@@ -289,7 +289,7 @@ static void step_storage(const struct routed_reach *reach, size_t group, const s
     for (size_t stop = 1; stop < reach->stop_count; stop++) {
         size_t from = reach->stop_node[stop - 1];
         muskingum_cunge_step(table, reach->stop_node[stop] - from, members, state + from * members, flows->passing_m3,
-                             flows->b_m3);
+                             flows->implicit_m3);
         memcpy(flows->stop_m3 + stop * members, flows->passing_m3, members * sizeof *flows->passing_m3);
     }
 }

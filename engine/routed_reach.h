@@ -40,7 +40,7 @@ struct routed_flows { /* arrays of one group of members, and what a step reads a
     size_t member_count;
     const double *side_m3; /* [side inflow][member], volume of the step (steady: of every step) */
     double *stop_m3;       /* [stop][member]: [0] in, the others out */
-    double *b_m3;          /* [member], scratch */
+    double *implicit_m3;   /* [member], scratch */
     double *passing_m3;    /* [member], scratch */
     double *lateral_m3;    /* cell_count, scratch */
 };
