@@ -295,4 +295,45 @@ static inline void scene_write_file(const char *path, const char *bytes, size_t 
     assert_int_equal(fclose(file), 0);
 }
 
+/* --- files --- */
+
+static inline enum fw_status scene_try_open(struct scene *scene, enum store_access access)
+{
+    struct store *store = NULL;
+    enum fw_status status = store_open(scene->file, access, &store, &scene->error);
+    store_close(store);
+    return status;
+}
+
+static inline void scene_assert_says(const struct scene *scene, const char *text)
+{
+    if (strstr(scene->error.text, text) == NULL)
+        fail_msg("'%s' is not in: %s", text, scene->error.text);
+}
+
+static inline void scene_path(const struct scene *scene, const char *suffix, char path[STORE_PATH_SIZE])
+{
+    snprintf(path, STORE_PATH_SIZE, "%s%s", scene->file, suffix);
+}
+
+static inline bool scene_has_file(const struct scene *scene, const char *suffix)
+{
+    char path[STORE_PATH_SIZE];
+    scene_path(scene, suffix, path);
+    return access(path, F_OK) == 0;
+}
+
+/* A closed store with some cycles in it; the picture that belongs to it. */
+static inline struct picture *scene_fill(struct scene *scene, size_t cycles)
+{
+    struct store *store = scene_open(scene, STORE_WRITE);
+    struct picture *picture = scene_picture(scene);
+    for (size_t index = 0; index < cycles; index++)
+        assert_int_equal(
+            scene_cycle(scene, store, &picture, SCENE_NOW_S + 300 * (int64_t)index, 1.0 + 0.01 * (double)index),
+            FW_OK);
+    store_close(store);
+    return picture;
+}
+
 #endif
