@@ -254,8 +254,8 @@ enum fw_status when_parse(const char *text, const struct when_zone *zone, int64_
         return fw_error_set(error, FW_BAD_INPUT, "'%.80s' is not a time: " WHEN_EXPECTED, text);
     if (!is_on_the_calendar(&civil))
         return fw_error_set(error, FW_BAD_INPUT, "'%.80s' is not on the calendar or the clock: " WHEN_EXPECTED, text);
-    int64_t local_s = days_from_date(civil.year, civil.month, civil.day) * DAY_S + civil.hour * HOUR_S +
-                      civil.minute * MINUTE_S + civil.second;
+    int second_of_day = civil.hour * HOUR_S + civil.minute * MINUTE_S + civil.second;
+    int64_t local_s = days_from_date(civil.year, civil.month, civil.day) * DAY_S + second_of_day;
     int64_t utc_s;
     if (*cursor == '\0') {
         if (zone == NULL)
@@ -286,6 +286,12 @@ static bool is_printable(int64_t utc_s)
     return utc_s > -INT64_C(1000000000000) && utc_s < INT64_C(1000000000000);
 }
 
+static const char *print_dash(char text[WHEN_TEXT_SIZE])
+{
+    snprintf(text, WHEN_TEXT_SIZE, "-");
+    return text;
+}
+
 static int print_civil(const struct civil *civil, char text[WHEN_TEXT_SIZE])
 {
     return snprintf(text, WHEN_TEXT_SIZE, "%04lld-%02d-%02dT%02d:%02d:%02d", (long long)civil->year, civil->month,
@@ -301,17 +307,17 @@ static int32_t whole_minutes(int32_t offset_s)
 const char *when_rfc3339_utc(int64_t utc_s, char text[WHEN_TEXT_SIZE])
 {
     if (!is_printable(utc_s))
-        return strcpy(text, "-");
+        return print_dash(text);
     struct civil civil = civil_from_seconds(utc_s);
     int length = print_civil(&civil, text);
-    strcpy(text + length, "Z");
+    snprintf(text + length, (size_t)(WHEN_TEXT_SIZE - length), "Z");
     return text;
 }
 
 const char *when_rfc3339_local(const struct when_zone *zone, int64_t utc_s, char text[WHEN_TEXT_SIZE])
 {
     if (!is_printable(utc_s))
-        return strcpy(text, "-");
+        return print_dash(text);
     int32_t offset_s = whole_minutes(when_offset_s(zone, utc_s));
     struct civil civil = civil_from_seconds(utc_s + offset_s);
     int length = print_civil(&civil, text);
@@ -324,7 +330,7 @@ const char *when_rfc3339_local(const struct when_zone *zone, int64_t utc_s, char
 const char *when_clock(const struct when_zone *zone, int64_t utc_s, char text[WHEN_TEXT_SIZE])
 {
     if (!is_printable(utc_s))
-        return strcpy(text, "-");
+        return print_dash(text);
     int minute = when_minute_of_day(zone, utc_s);
     snprintf(text, WHEN_TEXT_SIZE, "%02d:%02d", minute / 60, minute % 60);
     return text;

@@ -39,8 +39,8 @@ static bool digest_text(const char *text, size_t length, char digest[SETTINGS_DI
     unsigned int size = 0;
     if (EVP_Digest(text, length, bytes, &size, EVP_sha256(), NULL) != 1 || size * 2 >= SETTINGS_DIGEST_SIZE)
         return false;
-    for (unsigned int i = 0; i < size; i++)
-        snprintf(&digest[i * 2], 3, "%02x", (unsigned)bytes[i]);
+    for (size_t i = 0; i < size; i++)
+        snprintf(&digest[2 * i], 3, "%02x", (unsigned)bytes[i]);
     return true;
 }
 

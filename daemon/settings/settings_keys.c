@@ -10,62 +10,65 @@
 #define FOR_RUN SETTINGS_WANTED_FOR_RUN
 #define OBJECT(p, w, m)                                                                                              \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_OBJECT, .want = w, .unit = "", .meaning = m                                 \
+        .path = (p), .type = SETTINGS_TYPE_OBJECT, .want = (w), .unit = "", .meaning = (m)                           \
     }
 #define ARRAY(p, w, lo, hi, d, m)                                                                                    \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_ARRAY, .want = w, .unit = "", .lowest = lo, .highest = hi, .fallback = d,   \
-        .meaning = m                                                                                                 \
+        .path = (p), .type = SETTINGS_TYPE_ARRAY, .want = (w), .unit = "", .lowest = (lo), .highest = (hi),          \
+        .fallback = (d), .meaning = (m)                                                                              \
     }
 #define TEXT(p, w, hi, d, m)                                                                                         \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_TEXT, .want = w, .unit = "", .lowest = 1, .highest = hi, .fallback = d,     \
-        .meaning = m                                                                                                 \
+        .path = (p), .type = SETTINGS_TYPE_TEXT, .want = (w), .unit = "", .lowest = 1, .highest = (hi),              \
+        .fallback = (d), .meaning = (m)                                                                              \
     }
 #define TEXT_OTHERWISE(p, hi, o, m)                                                                                  \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_TEXT, .unit = "", .lowest = 1, .highest = hi, .otherwise = o, .meaning = m  \
+        .path = (p), .type = SETTINGS_TYPE_TEXT, .unit = "", .lowest = 1, .highest = (hi), .otherwise = (o),         \
+        .meaning = (m)                                                                                               \
     }
 #define WORD(p, w, ws, d, m)                                                                                         \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_WORD, .want = w, .unit = "", .words = ws, .fallback = d, .meaning = m       \
+        .path = (p), .type = SETTINGS_TYPE_WORD, .want = (w), .unit = "", .words = (ws), .fallback = (d),            \
+        .meaning = (m)                                                                                               \
     }
 #define NAMES(p, r, m)                                                                                               \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_ID, .want = WANTED, .names = SETTINGS_REFER_##r, .unit = "", .highest = 63, \
-        .meaning = m                                                                                                 \
+        .path = (p), .type = SETTINGS_TYPE_ID, .want = WANTED, .names = SETTINGS_REFER_##r, .unit = "",              \
+        .highest = 63, .meaning = (m)                                                                                \
     }
 #define NODE(p, m)                                                                                                   \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_ID, .want = WANTED, .unit = "", .highest = 63, .meaning = m                 \
+        .path = (p), .type = SETTINGS_TYPE_ID, .want = WANTED, .unit = "", .highest = 63, .meaning = (m)             \
     }
 #define REFERS(p, w, r, m)                                                                                           \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_ID, .want = w, .refers = SETTINGS_REFER_##r, .unit = "", .highest = 63,     \
-        .meaning = m                                                                                                 \
+        .path = (p), .type = SETTINGS_TYPE_ID, .want = (w), .refers = SETTINGS_REFER_##r, .unit = "", .highest = 63, \
+        .meaning = (m)                                                                                               \
     }
 #define NUMBER(p, w, u, lo, hi, d, m)                                                                                \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_NUMBER, .want = w, .unit = u, .lowest = lo, .highest = hi, .fallback = d,   \
-        .meaning = m                                                                                                 \
+        .path = (p), .type = SETTINGS_TYPE_NUMBER, .want = (w), .unit = (u), .lowest = (lo), .highest = (hi),        \
+        .fallback = (d), .meaning = (m)                                                                              \
     }
 #define INTEGER(p, w, u, lo, hi, d, m)                                                                               \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_INTEGER, .want = w, .unit = u, .lowest = lo, .highest = hi, .fallback = d,  \
-        .meaning = m                                                                                                 \
+        .path = (p), .type = SETTINGS_TYPE_INTEGER, .want = (w), .unit = (u), .lowest = (lo), .highest = (hi),       \
+        .fallback = (d), .meaning = (m)                                                                              \
     }
 #define OTHERWISE(p, w, u, lo, hi, o, m)                                                                             \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_NUMBER, .want = w, .unit = u, .lowest = lo, .highest = hi, .otherwise = o,  \
-        .meaning = m                                                                                                 \
+        .path = (p), .type = SETTINGS_TYPE_NUMBER, .want = (w), .unit = (u), .lowest = (lo), .highest = (hi),        \
+        .otherwise = (o), .meaning = (m)                                                                             \
     }
 #define TRUTH(p, w, d, m)                                                                                            \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_TRUTH, .want = w, .unit = "", .fallback = d, .meaning = m                   \
+        .path = (p), .type = SETTINGS_TYPE_TRUTH, .want = (w), .unit = "", .fallback = (d), .meaning = (m)           \
     }
 #define OTHER(p, t, w, d, o, m)                                                                                      \
     {                                                                                                                \
-        .path = p, .type = SETTINGS_TYPE_##t, .want = w, .unit = "", .fallback = d, .otherwise = o, .meaning = m     \
+        .path = (p), .type = SETTINGS_TYPE_##t, .want = (w), .unit = "", .fallback = (d), .otherwise = (o),          \
+        .meaning = (m)                                                                                               \
     }
 
 enum { ID_MAX = 63, NAME_MAX_BYTES = 60, SENTENCE_MAX = 200, PATH_MAX_BYTES = 1000, LIST_MAX = 100 };
