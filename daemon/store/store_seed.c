@@ -24,7 +24,7 @@ struct seed {
     const struct settings *settings;
     struct picture *picture;
     int64_t now_utc_s;
-    int64_t next_entry;
+    int64_t next_entry, next_message_number;
     struct renumbering *changes;
     size_t change_count, change_capacity;
     size_t reading_count, message_count, word_count; /* written: told in the ledger entry */
@@ -258,8 +258,9 @@ static enum fw_status save_counter(struct seed *seed, struct fw_error *error)
     if (status != FW_OK)
         return status;
     int64_t mine = seed->picture->next_message_number;
+    seed->next_message_number = mine > stored ? mine : stored;
     store_put_text(&row, "next message number");
-    store_put_integer(&row, mine > stored ? mine : stored);
+    store_put_integer(&row, seed->next_message_number);
     return store_run(&row, "save a counter", error);
 }
 
@@ -329,6 +330,7 @@ static void take_numbers(struct seed *seed, const struct ledger_entry *ledger)
     for (size_t index = 0; index < seed->change_count; index++)
         *seed->changes[index].entry = seed->changes[index].number;
     seed->picture->next_entry = seed->next_entry;
+    seed->picture->next_message_number = seed->next_message_number;
     snprintf(seed->picture->newest_link, sizeof seed->picture->newest_link, "%s", ledger->link);
     snprintf(seed->store->newest_link, sizeof seed->store->newest_link, "%s", ledger->link);
 }

@@ -376,6 +376,7 @@ static void seeding_a_store_with_other_rows_takes_new_numbers(void **state)
     step.delta.readings[0] = late;
     struct picture *picture = step_end(&step);
     bool was_new = false;
+    scene_meddle(scene, "INSERT INTO counter VALUES ('next message number', 900)");
     late.entry = 2;
     assert_int_equal(picture_add_reading(picture, &late, &was_new), FW_OK);
     assert_int_equal(store_seed(store, &scene->settings, picture, SCENE_NOW_S + 400, "test", &scene->error), FW_OK);
@@ -387,6 +388,7 @@ static void seeding_a_store_with_other_rows_takes_new_numbers(void **state)
     assert_true(mine->entry > 30);
     assert_true(picture->gauges[SCENE_MILL].readings[0].reading.entry > 30);
     assert_true(picture->next_entry > mine->entry);
+    assert_int_equal(picture->next_message_number, 900);
     struct picture *loaded = scene_picture(scene);
     assert_int_equal(store_load_picture(store, &scene->settings, 0, loaded, &scene->error), FW_OK);
     assert_true(loaded->gauges[SCENE_SCAR].readings[0].reading.value == 1.37);
