@@ -61,9 +61,10 @@ FW_MUST_CHECK enum fw_status store_rescue(const char *file, int64_t now_utc_s, c
 /*
  * Makes a store, fresh or with a gap, catch up with the picture, in one transaction: its readings and verdicts,
  * newest advice, messages and how they went, the facts people stated (restated as words), counters, settings, and
- * a ledger entry of kind "reseed" that says why. The picture goes on from that entry: its newest_link,
- * next_entry and next_message_number are set, and whatever the store knows by another number gets that number. On failure neither is
- * changed.
+ * a ledger entry of kind "reseed" that says why. The picture goes on from that entry: its newest_link, next_entry
+ * and next_message_number are set, and whatever the store knows by another number gets that number. On failure
+ * neither is changed. It adds to a store; a picture that was never loaded from a store with a past is to be loaded
+ * from it first, or its empty state would count as the newest.
  */
 FW_MUST_CHECK enum fw_status store_seed(struct store *store, const struct settings *settings, struct picture *picture,
                                         int64_t now_utc_s, const char *why, struct fw_error *error);
