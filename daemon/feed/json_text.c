@@ -194,8 +194,11 @@ static bool is_token(const char *token, size_t length, const char *name)
     const char *end = token + length;
     for (; token < end; token++, name++) {
         char wanted = *token;
-        if (wanted == '~' && token + 1 < end && (token[1] == '0' || token[1] == '1'))
-            wanted = *++token == '1' ? '/' : '~';
+        if (wanted == '~') {
+            if (++token == end || (*token != '0' && *token != '1'))
+                return false; /* no such escape: no pointer */
+            wanted = *token == '1' ? '/' : '~';
+        }
         if (*name != wanted)
             return false;
     }
