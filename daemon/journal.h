@@ -1,8 +1,9 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * What the daemon says on stderr: one line each, who, what, number with unit, what happens next. The priority prefix (<3> .. <7>) is
- * written only when stderr goes to the journal (JOURNAL_STREAM). Control bytes, and bytes that are no UTF-8, are escaped as \x1b; a closing
- * line feed is dropped; a text too long for a line ends in "...". A line repeated word for word is counted, not repeated.
+ * What the daemon says on stderr: one line each, who, what, number with unit, what happens next. The priority prefix
+ * (<3> .. <7>) is written only when stderr goes to the journal (JOURNAL_STREAM). Control bytes, and bytes that are no
+ * UTF-8, are escaped as \x1b; a closing line feed is dropped; a text too long for a line ends in "...". A line
+ * repeated word for word is counted, not repeated.
  */
 #ifndef FOREWATER_DAEMON_JOURNAL_H
 #define FOREWATER_DAEMON_JOURNAL_H

@@ -137,7 +137,9 @@ static void describe_end(const struct hook *hook, const siginfo_t *info, struct 
     end_out->was_told_to_end = hook->was_told_to_end;
 }
 
-/* The leader has ended (or is beyond KILL) and is not yet reaped, so that its process group still bears its number. */
+/*
+ * The leader has ended (or is beyond KILL) and is not yet reaped, so that its process group still bears its number.
+ */
 static void finish(struct hook *hook)
 {
     kill(-hook->pid, SIGKILL);

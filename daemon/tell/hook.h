@@ -1,13 +1,16 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * One command hook: a child process that is given a message on stdin and says by its exit status whether it passed it on.
+ * One command hook: a child process that is given a message on stdin and says by its exit status whether it passed it
+ * on.
  *
- * argv without a shell, the environment exactly as ordered, own process group, every signal at its default and none blocked,
- * no descriptor but 0, 1 and 2. stdin is a file of memory, so that a hook that never reads cannot hold us up. What it writes goes to the journal,
- * line by line, up to a limit; the rest is read and dropped, so that a chatty hook cannot hang on us either.
- * A hook that does not end gets TERM, later KILL, to its whole process group; what a hook leaves running in its group ends with it.
+ * argv without a shell, the environment exactly as ordered, own process group, every signal at its default and none
+ * blocked, no descriptor but 0, 1 and 2. stdin is a file of memory, so that a hook that never reads cannot hold us
+ * up. What it writes goes to the journal, line by line, up to a limit; the rest is read and dropped, so that a chatty
+ * hook cannot hang on us either. A hook that does not end gets TERM, later KILL, to its whole process group; what a
+ * hook leaves running in its group ends with it.
  *
- * The process must not ignore SIGCHLD (its status would be lost); blocked or not makes no difference here: ends are seen by pidfd.
+ * The process must not ignore SIGCHLD (its status would be lost); blocked or not makes no difference here: ends are
+ * seen by pidfd.
  */
 #ifndef FOREWATER_DAEMON_TELL_HOOK_H
 #define FOREWATER_DAEMON_TELL_HOOK_H

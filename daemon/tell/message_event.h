@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * A message as a hook gets it: one JSON object (RFC 8259) of schema "forewater.message.1". docs/messages.md tells every member.
+ * A message as a hook gets it: one JSON object (RFC 8259) of schema "forewater.message.1". docs/messages.md tells
+ * every member.
  */
 #ifndef FOREWATER_DAEMON_TELL_MESSAGE_EVENT_H
 #define FOREWATER_DAEMON_TELL_MESSAGE_EVENT_H

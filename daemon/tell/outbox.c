@@ -117,7 +117,9 @@ static void bring_up_to_date(const struct outbox *outbox, struct picture *pictur
 
 /* --- how a try ends --- */
 
-/* The same on every run: spread by what the message is, so that a restart does not make all channels ring together. */
+/*
+ * The same on every run: spread by what the message is, so that a restart does not make all channels ring together.
+ */
 static uint64_t spread(const struct message *message)
 {
     uint64_t hash = 14695981039346656037u; /* FNV-1a, 64 bits */
