@@ -300,8 +300,9 @@ static double side_flow_m3s(const struct network *network, double *block, size_t
     if (side->share_of_gauge == NETWORK_NONE)
         return side->constant_m3s;
     const struct delayed_share *delay = &network->delays[side_index];
-    size_t later = (newest_slot + network->ring_count - delay->whole) % network->ring_count;
-    size_t earlier = (later + network->ring_count - 1) % network->ring_count;
+    size_t later =
+        newest_slot >= delay->whole ? newest_slot - delay->whole : newest_slot + network->ring_count - delay->whole;
+    size_t earlier = later > 0 ? later - 1 : network->ring_count - 1;
     double gauge_flow = (1.0 - delay->part) * gauge_slot(network, block, side->share_of_gauge, later)[member] +
                         delay->part * gauge_slot(network, block, side->share_of_gauge, earlier)[member];
     return side->constant_m3s + side->share * gauge_flow;
@@ -469,19 +470,22 @@ enum fw_status network_advance(struct network *network, size_t step_count, const
     size_t all_members = network_member_count(network);
     if (!are_inflows_in_order(network, step_count, inflow_m3s))
         return FW_BAD_INPUT;
+    size_t slot = network->ring_at;
     /* groups outermost: one group's cells and tables stay in the nearest cache over all steps */
     for (size_t group = 0; group < network->group_count; group++) {
         const double *group_inflow = inflow_m3s + group * network->members_per_group;
         give_points(network, group, 0, step_count, point_discharge_m3s);
+        slot = network->ring_at;
         for (size_t step = 1; step <= step_count; step++) {
-            enum fw_status status = step_group(network, group, (network->ring_at + step) % network->ring_count,
-                                               group_inflow + step * all_members, (step_count + 1) * all_members);
+            slot = slot + 1 < network->ring_count ? slot + 1 : 0;
+            enum fw_status status =
+                step_group(network, group, slot, group_inflow + step * all_members, (step_count + 1) * all_members);
             if (status != FW_OK)
                 return status;
             give_points(network, group, step, step_count, point_discharge_m3s);
         }
     }
-    network->ring_at = (network->ring_at + step_count) % network->ring_count;
+    network->ring_at = slot;
     return FW_OK;
 }
 

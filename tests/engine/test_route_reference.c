@@ -239,11 +239,12 @@ static void wide_plains_show_the_limit_of_the_method(void **state)
     assert_true(fabs(comparison.time_error_s) <= 120.0);
 }
 
-static struct one_reach_result route_published_wave(double slope)
+static struct one_reach_result route_published_wave(double slope, enum network_method method)
 {
     const struct one_reach one = {.section = &published_rectangle,
                                   .slope_m_per_m = slope,
                                   .length_m = 100e3,
+                                  .method = method,
                                   .time_step_s = 300.0,
                                   .largest_m3s = 900.0,
                                   .flood = gamma_flood_m3s,
@@ -263,7 +264,7 @@ static void published_flood_waves_come_out(void **state)
         double slope = reference_table_number(&table, row, "S0");
         double expected = reference_table_number(&table, row, "peak_Q_100km");
         double expected_h = reference_table_number(&table, row, "t_peak_Q_h");
-        struct one_reach_result routed = route_published_wave(slope);
+        struct one_reach_result routed = route_published_wave(slope, NETWORK_MUSKINGUM_CUNGE);
         struct flood_peak peak = flood_peak_of(routed.step_count + 1, routed.outflow_m3s, routed.time_step_s);
         bool is_judged = slope >= 1e-3;
         print_message("published wave, S0 %g: peak %.2f m3/s (%.2f, %+.2f %%) at %.3f h (%.3f, %+.1f min)%s\n", slope,
@@ -288,7 +289,7 @@ static void the_published_hydrograph_is_followed(void **state)
     double *expected = reference_table_column(&table, "Q_100km");
     double *inflow = reference_table_column(&table, "inflow");
     double *followed = malloc(table.row_count * sizeof *followed);
-    struct one_reach_result routed = route_published_wave(0.001);
+    struct one_reach_result routed = route_published_wave(0.001, NETWORK_MUSKINGUM_CUNGE);
     assert_non_null(followed);
     size_t count = 0;
     for (; count < table.row_count; count++) {
@@ -334,7 +335,7 @@ static void published_thresholds_are_reached_in_time(void **state)
         if (strcmp(reference_table_text(&table, row, "section"), "rectangle") != 0 ||
             sscanf(reference_table_text(&table, row, "threshold"), "Q %lf m3/s", &discharge) != 1)
             continue;
-        struct one_reach_result routed = route_published_wave(slope);
+        struct one_reach_result routed = route_published_wave(slope, NETWORK_MUSKINGUM_CUNGE);
         double error_min =
             60.0 * (upcross_h(&routed, discharge) - reference_table_number(&table, row, "at_100km_upcross_h"));
         print_message("published threshold, S0 %g, %g m3/s: reached %+.1f min from the full equations\n", slope,
@@ -349,6 +350,30 @@ static void published_thresholds_are_reached_in_time(void **state)
     reference_table_clear(&table);
 }
 
+/* Why the published linear scheme is a rival and not the default. */
+static void the_linear_scheme_makes_or_loses_water_and_the_storage_form_does_not(void **state)
+{
+    (void)state;
+    static const double slopes[] = {0.002, 0.001, 0.00025};
+    for (size_t i = 0; i < 3; i++) {
+        struct one_reach_result linear = route_published_wave(slopes[i], NETWORK_KINEMATIC_LINEAR);
+        struct one_reach_result storage = route_published_wave(slopes[i], NETWORK_MUSKINGUM_CUNGE);
+        const struct one_reach_result *const results[] = {&linear, &storage};
+        double imbalance[2];
+        for (size_t k = 0; k < 2; k++) {
+            double in = trapezoidal_volume_m3(results[k]->step_count, results[k]->inflow_m3s, 300.0);
+            double out = trapezoidal_volume_m3(results[k]->step_count, results[k]->outflow_m3s, 300.0);
+            imbalance[k] = (in - out - (results[k]->volume_end_m3 - results[k]->volume_start_m3)) / in;
+        }
+        print_message("published wave, S0 %g: volume imbalance, linear scheme %+.2f %%, storage form %.1e\n",
+                      slopes[i], 100.0 * imbalance[0], imbalance[1]);
+        assert_true(fabs(imbalance[0]) > 1e-4 && fabs(imbalance[0]) < 0.01);
+        assert_true(fabs(imbalance[1]) <= 1e-12);
+        one_reach_result_clear(&linear);
+        one_reach_result_clear(&storage);
+    }
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -359,6 +384,7 @@ int main(void)
         cmocka_unit_test(published_flood_waves_come_out),
         cmocka_unit_test(the_published_hydrograph_is_followed),
         cmocka_unit_test(published_thresholds_are_reached_in_time),
+        cmocka_unit_test(the_linear_scheme_makes_or_loses_water_and_the_storage_form_does_not),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }
