@@ -2,9 +2,9 @@
 /*
  * What one member-cell-step costs, as a ratio to an in-cache triad measured in the same run.
  *
- * The triad, a[i] = b[i] + s c[i] over 3 x 8 KiB (in the first-level cache), compiled with this program's own flags, is
- * what the machine can do with the same few operations when nothing has to be looked up. Best of several runs each;
- * numbers of a busy machine waver.
+ * The triad, a[i] = b[i] + s c[i] over 3 x 8 KiB (in the first-level cache), compiled with this program's own flags,
+ * is what the machine can do with the same few operations when nothing has to be looked up. Best of several runs
+ * each; numbers of a busy machine waver.
  */
 #include <math.h>
 #include <stdio.h>

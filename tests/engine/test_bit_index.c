@@ -15,7 +15,8 @@ static void rows_are_a_sixty_fourth_of_an_octave(void **state)
     (void)state;
     struct bit_index index;
     bit_index_init(&index, 0.37, 913.0);
-    /* 0.37 = 1.48 x 2^-2 lies in segment 30 of its octave, 913 = 1.783 x 2^9 in segment 50 of the eleventh after it */
+    /* 0.37 = 1.48 x 2^-2 lies in segment 30 of its octave, 913 = 1.783 x 2^9 in segment 50 of the eleventh after
+     * it */
     assert_int_equal(index.row_count, 1 + 11 * 64 + 50 - 30 + 1);
     assert_true(bit_index_row_start(&index, 0) == 0.0);
     assert_true(bit_index_row_start(&index, 1) == 0.25 * (1.0 + 30.0 / 64.0));

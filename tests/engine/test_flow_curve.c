@@ -53,8 +53,8 @@ static void the_curve_is_the_section(void **state)
         }
         print_message("%s: depth for a conveyance within %.1e, area within %.1e\n", try_sections[s].name, worst_depth,
                       worst_area);
-        /* straight pieces 0.27 % of depth long: (0.0027)^2/8 times the bend of h^(5/3) and the like; a flooding bar or
-         * plain bends more sharply */
+        /* straight pieces 0.27 % of depth long: (0.0027)^2/8 times the bend of h^(5/3) and the like; a flooding bar
+         * or plain bends more sharply */
         assert_true(worst_depth <= 1e-4);
         assert_true(worst_area <= 1e-4);
         flow_curve_clear(&curve);
@@ -91,7 +91,8 @@ static void celerity_is_the_slope_of_flow_on_area(void **state)
             section_properties_at(try_sections[s].section, depths[i], &exact);
             flow_curve_at(&curve, exact.conveyance_m3s, &place);
             double slope = section_celerity_m_s(try_sections[s].section, 0.0023, depths[i]);
-            /* the mean over 0.27 % of depth; within a freshly flooded strip it changes by several per cent over that */
+            /* the mean over 0.27 % of depth; within a freshly flooded strip it changes by several per cent over
+             * that */
             if (!(fabs(place.conveyance_slope_m_s * sqrt(0.0023) / slope - 1.0) <= 0.02))
                 fail_msg("%s, depth %g: celerity %g, by the section %g", try_sections[s].name, depths[i],
                          place.conveyance_slope_m_s * sqrt(0.0023), slope);

@@ -347,7 +347,8 @@ static void a_pulse_into_a_dry_river_never_runs_backwards(void **state)
                 }
 }
 
-/* --- rivers drawn at random ------------------------------------------------------------------------------------------- */
+/* --- rivers drawn at random
+ * ------------------------------------------------------------------------------------------- */
 
 static double draw(uint64_t *seed, double low, double high)
 {
@@ -423,7 +424,8 @@ static void no_random_river_runs_backwards_or_loses_water(void **state)
     print_message("400 random rivers: no negative flow, worst imbalance %.1e\n", worst);
 }
 
-/* --- grids ---------------------------------------------------------------------------------------------------------- */
+/* --- grids
+ * ---------------------------------------------------------------------------------------------------------- */
 
 static void peaks_stay_when_cells_and_steps_are_halved(void **state)
 {

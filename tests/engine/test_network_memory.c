@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * Every allocation of the network's rooms is made to fail in turn. Their sources are taken into this program, with calloc
- * and free replaced, so that nothing of the kind is needed in the engine itself.
+ * Every allocation of the network's rooms is made to fail in turn. Their sources are taken into this program, with
+ * calloc and free replaced, so that nothing of the kind is needed in the engine itself.
  */
 #include <setjmp.h>
 #include <stdarg.h>
