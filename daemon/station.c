@@ -38,15 +38,47 @@ static enum fw_status open_again(struct station *station, char moved_to[STORE_PA
     return status == FW_OK ? store_open(file, STORE_WRITE, &station->store, error) : status;
 }
 
+static enum fw_status load_picture(struct station *station, struct fw_error *error);
+
+/* A station that started without a store knows nothing of what stands in it: that comes first. Its own unsent messages go with it. */
+static enum fw_status take_over_late(struct station *station, struct fw_error *error)
+{
+    struct picture *memory = station->picture;
+    station->picture = NULL;
+    enum fw_status status = load_picture(station, error);
+    if (status != FW_OK) {
+        station->picture = memory;
+        return status;
+    }
+    struct picture *loaded = station->picture;
+    for (size_t index = 0; index < memory->outbox_count; index++) {
+        struct message *message = &memory->outbox[index];
+        if (buffer_grow(&loaded->outbox, &loaded->outbox_capacity, loaded->outbox_count, sizeof *loaded->outbox) !=
+            FW_OK)
+            break;
+        loaded->outbox[loaded->outbox_count] = *message;
+        loaded->outbox[loaded->outbox_count++].entry = loaded->next_entry++;
+        message->bulletin = NULL; /* the loaded picture's now */
+    }
+    picture_destroy(memory);
+    outbox_use_picture(station->outbox, loaded);
+    return FW_OK;
+}
+
 /* A fresh or healed store takes over what memory holds. */
 static void heal_store(struct station *station)
 {
     char moved_to[STORE_PATH_SIZE] = "";
+    char trouble[FACT_NOTE_SIZE];
+    bool was_never_open = station->store == NULL;
     struct fw_error error = {.status = FW_OK};
+    memcpy(trouble, station->picture->store_trouble, sizeof trouble);
     enum fw_status status = open_again(station, moved_to, &error);
+    if (status == FW_OK && was_never_open)
+        status = take_over_late(station, &error);
     if (status == FW_OK)
         status = store_seed(station->store, station->settings, station->picture, clock_world_utc_s(&station->clock),
-                            station->picture->store_trouble, &error);
+                            trouble, &error);
     if (moved_to[0] != '\0')
         journal_say(&station->journal, JOURNAL_ERROR, "store: the damaged file is kept as %s", moved_to);
     if (status != FW_OK) {
@@ -109,7 +141,10 @@ static void delivery_settled(void *context, const struct message *message)
 {
     struct station *station = context;
     struct fw_error error = {.status = FW_OK};
-    if (!station->picture->is_store_failing && store_save_delivery(station->store, message, &error) != FW_OK)
+    if (station->picture->is_store_failing)
+        return; /* the store learns of it when it is seeded */
+    enum fw_status status = store_save_delivery(station->store, message, &error);
+    if (status != FW_OK && status != FW_UNAVAILABLE)
         note_store_trouble(station, &error);
 }
 
@@ -146,6 +181,8 @@ static enum fw_status open_feeds(struct station *station, struct fw_error *error
     if (status == FW_OK)
         status = outbox_open(station->settings, station->event, &station->journal, delivery_settled, station,
                              &station->outbox, error);
+    if (status == FW_OK)
+        outbox_use_clock(station->outbox, &station->clock);
     return status;
 }
 

@@ -212,11 +212,11 @@ static enum fw_status print_reference(bool is_schema, struct fw_error *error)
 
 enum fw_status command_check(int argument_count, char *arguments[], struct fw_error *error)
 {
-    struct option_values config = {0}, schema = {0}, keys = {0};
+    struct option_values config = {0}, schema = {0}, manual = {0};
     const struct option_spec options[] = {
         {"config", "FILE", "the configuration (default " COMMAND_DEFAULT_CONFIG ")", &config},
         {"schema", NULL, "print the JSON Schema of the configuration instead", &schema},
-        {"keys", NULL, "print every key of the configuration instead", &keys},
+        {"manual", NULL, "print every key of the configuration instead", &manual},
         {NULL, NULL, NULL, NULL}};
     const struct command_line line = {
         "check", "",
@@ -231,7 +231,7 @@ enum fw_status command_check(int argument_count, char *arguments[], struct fw_er
     enum fw_status status = options_read(&line, argument_count, arguments, &rest, error);
     if (status != FW_OK)
         return status;
-    if (schema.count > 0 || keys.count > 0)
+    if (schema.count > 0 || manual.count > 0)
         return print_reference(schema.count > 0, error);
     status = command_read_settings(option_text(&config, COMMAND_DEFAULT_CONFIG), SETTINGS_FOR_RUN, &settings, error);
     if (status != FW_OK)

@@ -230,7 +230,16 @@ static enum fw_status take_message(struct store_row *row, const struct settings 
     size_t point = point_id != NULL ? settings_point_index(settings, point_id) : SETTINGS_NONE;
     size_t channel = channel_index(settings, store_take_text(row, NULL));
     message->made_utc_s = store_take_integer(row, 0);
+    message->wakes = store_take_integer(row, 0) != 0;
+    size_t level = level_index(row);
+    message->act_by_utc_s = store_take_integer(row, PASSAGE_NEVER);
+    message->deck_earliest_utc_s = store_take_integer(row, PASSAGE_NEVER);
+    message->deck_likely_utc_s = store_take_integer(row, PASSAGE_NEVER);
+    message->deck_latest_utc_s = store_take_integer(row, PASSAGE_NEVER);
     store_take_into(row, message->short_text, sizeof message->short_text);
+    if (level == SETTINGS_NONE)
+        return fw_error_set(error, FW_DAMAGED, "%s: message %lld has an unknown level", row->store->file,
+                            (long long)message->entry);
     const char *bulletin = store_take_text(row, NULL);
     *is_known_out = channel != SETTINGS_NONE && (point_id == NULL || point != SETTINGS_NONE);
     if (*is_known_out && bulletin != NULL && (message->bulletin = strdup(bulletin)) == NULL)
@@ -240,6 +249,7 @@ static enum fw_status take_message(struct store_row *row, const struct settings 
     message->next_try_utc_s = store_take_integer(row, 0);
     message->settled_utc_s = store_take_integer(row, 0);
     store_take_into(row, message->note, sizeof message->note);
+    message->level = (enum advice_level)level;
     message->kind = kind == MESSAGE_NOTICE ? MESSAGE_NOTICE : MESSAGE_DECISION;
     message->point = point_id != NULL ? (int32_t)point : -1;
     message->channel = (int32_t)channel;

@@ -147,6 +147,12 @@ enum fw_status store_add_message(struct store *store, const struct settings *set
     store_put_text(&row, store_point_id(settings, message->point));
     store_put_text(&row, store_channel_id(settings, message->channel));
     store_put_integer(&row, message->made_utc_s);
+    store_put_integer(&row, message->wakes);
+    store_put_text(&row, advice_level_name(message->level));
+    store_put_integer_unless(&row, message->act_by_utc_s, PASSAGE_NEVER);
+    store_put_integer_unless(&row, message->deck_earliest_utc_s, PASSAGE_NEVER);
+    store_put_integer_unless(&row, message->deck_likely_utc_s, PASSAGE_NEVER);
+    store_put_integer_unless(&row, message->deck_latest_utc_s, PASSAGE_NEVER);
     store_put_text(&row, message->short_text);
     store_put_text(&row, message->bulletin);
     store_put_text(&row, store_delivery_names[message->state]);

@@ -27,7 +27,7 @@ static const char *const statement_text[STORE_STATEMENT_COUNT] = {
     [STORE_ADD_FORECAST] = "INSERT INTO forecast VALUES (?, ?, ?, ?, ?)",
     [STORE_ADD_CURVE] = "INSERT INTO forecast_curve VALUES (?, ?, ?, ?, ?, ?)",
     [STORE_ADD_ADVICE] = "INSERT INTO advice VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
-    [STORE_ADD_MESSAGE] = "INSERT INTO outbox VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
+    [STORE_ADD_MESSAGE] = "INSERT INTO outbox VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
     [STORE_SAVE_DELIVERY] =
         "UPDATE outbox SET state = ?, tries = ?, next_try = ?, settled = ?, note = ? WHERE entry = ? AND id = ?",
     [STORE_ADD_SETTINGS] =
@@ -61,8 +61,8 @@ static const char *const statement_text[STORE_STATEMENT_COUNT] = {
     [STORE_NEWEST_ADVICE] = "SELECT level, is_blind, near_sides_only, reasons, act_by, since, onset, step_down_from, "
                             "told_act_by FROM advice WHERE point = ? ORDER BY entry DESC LIMIT 1",
     [STORE_NEWEST_FORECAST] = "SELECT issued FROM forecast ORDER BY entry DESC LIMIT 1",
-    [STORE_MESSAGES] = "SELECT entry, id, number, kind, point, channel, made, short_text, bulletin, state, tries, "
-                       "next_try, settled, note FROM outbox WHERE settled IS NULL OR settled >= ? OR made >= ? "
+    [STORE_MESSAGES] = "SELECT entry, id, number, kind, point, channel, made, wakes, level, act_by, deck_earliest, "
+                       "deck_likely, deck_latest, short_text, bulletin, state, tries, next_try, settled, note FROM outbox WHERE settled IS NULL OR settled >= ? OR made >= ? "
                        "ORDER BY entry",
     [STORE_FIND_MESSAGE] = "SELECT entry FROM outbox WHERE id = ? AND channel = ?",
     [STORE_FACT_WORDS] = "SELECT " WORD_COLUMNS " FROM word WHERE kind IN ('accept', 'seen', 'road') ORDER BY entry",

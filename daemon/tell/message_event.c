@@ -22,6 +22,27 @@ static bool add_point(cJSON *event, const struct settings *settings, int32_t poi
            cJSON_AddStringToObject(place, "name", settings->points[point].name) != NULL;
 }
 
+static bool add_moment(cJSON *object, const struct settings *settings, const char *name, int64_t utc_s)
+{
+    char text[WHEN_TEXT_SIZE];
+    if (utc_s == PASSAGE_NEVER)
+        return cJSON_AddNullToObject(object, name) != NULL;
+    return cJSON_AddStringToObject(object, name, when_rfc3339_local(&settings->zone, utc_s, text)) != NULL;
+}
+
+/* The decision in numbers, for a hook that chooses how to deliver by it. */
+static bool add_decision(cJSON *event, const struct settings *settings, const struct message *message)
+{
+    if (cJSON_AddBoolToObject(event, "wakes", message->wakes) == NULL ||
+        cJSON_AddStringToObject(event, "level", advice_level_name(message->level)) == NULL ||
+        !add_moment(event, settings, "act_by", message->act_by_utc_s))
+        return false;
+    cJSON *deck_wet = cJSON_AddObjectToObject(event, "deck_wet");
+    return deck_wet != NULL && add_moment(deck_wet, settings, "earliest", message->deck_earliest_utc_s) &&
+           add_moment(deck_wet, settings, "likely", message->deck_likely_utc_s) &&
+           add_moment(deck_wet, settings, "latest", message->deck_latest_utc_s);
+}
+
 enum fw_status message_event_write(const struct settings *settings, const struct message *message, int64_t now_utc_s,
                                    struct text *json_out)
 {
@@ -36,7 +57,7 @@ enum fw_status message_event_write(const struct settings *settings, const struct
                     cJSON_AddStringToObject(event, "kind", message_kind_name(message->kind)) != NULL &&
                     cJSON_AddStringToObject(event, "district", settings->district_name) != NULL &&
                     add_point(event, settings, message->point) &&
-                    cJSON_AddStringToObject(event, "made", made) != NULL &&
+                    cJSON_AddStringToObject(event, "made", made) != NULL && add_decision(event, settings, message) &&
                     cJSON_AddStringToObject(event, "text", message->short_text) != NULL &&
                     cJSON_AddStringToObject(event, "bulletin", bulletin) != NULL &&
                     cJSON_AddStringToObject(event, "caution", SENTENCE_CAUTION) != NULL &&

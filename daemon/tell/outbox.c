@@ -230,7 +230,7 @@ static void send_to_journal(struct outbox *outbox, struct message *message, int6
     settle_sent(outbox, message, now_utc_s, "written to the journal");
 }
 
-enum { VARIABLE_COUNT = 6, VARIABLE_SIZE = 32 + FACT_DIGEST_SIZE + FACT_ID_SIZE };
+enum { VARIABLE_COUNT = 8, VARIABLE_SIZE = 32 + FACT_DIGEST_SIZE + FACT_ID_SIZE };
 
 struct environment {
     char text[VARIABLE_COUNT][VARIABLE_SIZE];
@@ -248,6 +248,8 @@ static void fill_environment(const struct settings *settings, const struct messa
     snprintf(environment->text[4], VARIABLE_SIZE, "FOREWATER_POINT=%s",
              has_point ? settings->points[message->point].id : "");
     snprintf(environment->text[5], VARIABLE_SIZE, "FOREWATER_TRY=%d", (int)message->tries);
+    snprintf(environment->text[6], VARIABLE_SIZE, "FOREWATER_LEVEL=%s", advice_level_name(message->level));
+    snprintf(environment->text[7], VARIABLE_SIZE, "FOREWATER_WAKES=%d", message->wakes ? 1 : 0);
     for (size_t i = 0; i < VARIABLE_COUNT; i++)
         environment->list[i] = environment->text[i];
     environment->list[VARIABLE_COUNT] = NULL;

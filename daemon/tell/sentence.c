@@ -18,6 +18,7 @@ enum part {
     PART_SENDER,
     PART_PLACE,
     PART_WHAT,
+    PART_ALSO,
     PART_DECK,
     PART_ACT_BY,
     PART_RESTS,
@@ -98,6 +99,17 @@ static void put_what(struct parts *parts)
     enum sentence_id id = choose_what(view);
     put_both(parts, PART_WHAT, id, id + 1, fields);
     parts->asks_more = id == SHORT_LATE || id == SHORT_BLIND || id == SHORT_BLIND_RISING || id == SHORT_WALK_OVER;
+}
+
+/* --- what else --- */
+
+static void put_also(struct parts *parts)
+{
+    char count[24];
+    if (parts->view->also_count == 0)
+        return;
+    snprintf(count, sizeof count, "%zu", parts->view->also_count);
+    put_both(parts, PART_ALSO, SHORT_ALSO, SHORT_ALSO_BRIEF, (struct sentence_field[]){{"count", count}, {0}});
 }
 
 /* --- when --- */
@@ -303,8 +315,9 @@ static void cut_place(char *place, size_t excess)
 static void join(struct parts *parts, char text_out[FACT_SHORT_SIZE])
 {
     const enum part by_need[] = {
-        PART_DECK, PART_SENDER, PART_HINT,    PART_RESTS, PART_ACT_BY,    parts->asks_more ? PART_WHAT : PART_HAND,
-        PART_HAND, PART_BEYOND, PART_CAUTION, PART_WHAT,  PART_NEXT_LOOK, PART_TRIGGER};
+        PART_DECK,   PART_SENDER, PART_HINT,    PART_RESTS, PART_ACT_BY, parts->asks_more ? PART_WHAT : PART_HAND,
+        PART_HAND,   PART_BEYOND, PART_CAUTION, PART_ALSO,  PART_WHAT,   PART_NEXT_LOOK,
+        PART_TRIGGER};
     const char *chosen[PART_COUNT];
     for (size_t part = 0; part < PART_COUNT; part++)
         chosen[part] = parts->brief[part];
@@ -339,6 +352,7 @@ void sentence_short(const struct settings *settings, const struct picture *pictu
     struct parts parts = {.view = &view};
     put_names_and_number(&parts);
     put_what(&parts);
+    put_also(&parts);
     if (is_on_ladder(view.after.level)) {
         put_deck(&parts);
         put_act_by(&parts);

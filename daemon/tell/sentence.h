@@ -9,9 +9,10 @@
 #include "daemon/buffer.h"
 #include "daemon/cycle.h"
 
-#define SENTENCE_CAUTION                                                                                                 \
-    "Decision aid for trained staff. Local codes, the road authority, police and emergency services come first. "        \
-    "Levels and limits must be set and signed by a licensed engineer. No message from this system means a road is fit "  \
+#define SENTENCE_CAUTION                                                                                             \
+    "Decision aid for trained staff. Local codes, the road authority, police and emergency services come first. "    \
+    "Levels and limits must be set and signed by a licensed engineer. No message from this system means a road is "  \
+    "fit "                                                                                                           \
     "to use. Crews do not enter moving water."
 #define SENTENCE_CAUTION_SHORT "Aid only. Road authority decides."
 

@@ -241,6 +241,11 @@ static void add_what_to_do(struct bulletin *bulletin)
                                    {0}});
     text_clear(&act_by);
     end_paragraph(bulletin, &paragraph);
+    if (view->also_count > 0) {
+        char count[24];
+        snprintf(count, sizeof count, "%zu", view->also_count);
+        say(bulletin, DO_ALSO, (struct sentence_field[]){{"count", count}, {0}});
+    }
     if (bulletin->detail > DETAIL_LEAST)
         add_reasons(bulletin);
     for (size_t i = 0; i < view->known->access_over_count && (i < 1 || bulletin->detail >= DETAIL_RUN_ON) && i < 2;

@@ -86,6 +86,8 @@ static const struct sentence_catalogue english = {
             [SHORT_BEYOND_GAUGING] = "Beyond highest gauging. ",
             [SHORT_HAND] = "Hand reading {newest}. ",
             [SHORT_NEXT_LOOK] = "Next look {next}. ",
+            [SHORT_ALSO] = "{count} more crossings changed. ",
+            [SHORT_ALSO_BRIEF] = "+{count} more. ",
             [SHORT_HINT] = "Say: accept {number}. ",
             [SHORT_NUMBER] = "#{number4}",
 
@@ -121,6 +123,7 @@ static const struct sentence_catalogue english = {
             [DO_ACT_NOW] = "ACT NOW. ",
             [DO_NO_ACT_BY] = "No act-by yet. ",
             [DO_WHY] = "Why: {reasons}.",
+            [DO_ALSO] = "The advice of {count} more crossings changed at the same time: see the table.",
             [DO_TRIGGER] = " ({gauge} {value} {unit}, signed {by}, since {since})",
             [DO_DETOUR] = "Its diversion runs over {place}: {advice}, road {road}.",
             [DO_ACCESS] = "The crew's way runs over {place}: {advice}, road {road}.",

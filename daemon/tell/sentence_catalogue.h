@@ -89,6 +89,8 @@ enum sentence_id {
     SHORT_BEYOND_GAUGING,
     SHORT_HAND,
     SHORT_NEXT_LOOK,
+    SHORT_ALSO,
+    SHORT_ALSO_BRIEF,
     SHORT_HINT,
     SHORT_NUMBER,
 
@@ -124,6 +126,7 @@ enum sentence_id {
     DO_ACT_NOW,
     DO_NO_ACT_BY,
     DO_WHY,
+    DO_ALSO,
     DO_TRIGGER,
     DO_DETOUR,
     DO_ACCESS,

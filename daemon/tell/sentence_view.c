@@ -47,6 +47,7 @@ bool sentence_view_open(const struct settings *settings, const struct picture *p
                                        .before = decision != NULL ? decision->before : state->advice,
                                        .after = decision != NULL ? decision->after : state->advice,
                                        .number = decision != NULL ? decision->message_number : state->told_number,
+                                       .also_count = decision != NULL ? decision->also_count : 0,
                                        .run_count = runs > 0 ? runs : ASSUMED_FORECAST_COUNT,
                                        .is_above = calloc(settings->gauge_count + 1, sizeof(bool))};
     if (view_out->is_above != NULL)

@@ -21,7 +21,8 @@ struct sentence_view {
     struct advice before, after;
     int64_t number; /* 0: none */
     size_t run_count;
-    bool *is_above; /* per gauge: lies above the point; NULL when memory ran out: then no gauge is named */
+    size_t also_count; /* other crossings whose change rides with this one */
+    bool *is_above;    /* per gauge: lies above the point; NULL when memory ran out: then no gauge is named */
 };
 
 /* decision NULL: the most urgent point as it stands. The caller clears it. False: there is no point. */

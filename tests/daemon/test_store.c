@@ -332,6 +332,12 @@ static struct message message_to(int32_t channel, int64_t number)
                               .point = SCENE_FORD,
                               .channel = channel,
                               .made_utc_s = SCENE_NOW_S,
+                              .wakes = true,
+                              .level = ADVICE_SEND,
+                              .act_by_utc_s = SCENE_NOW_S + 1234,
+                              .deck_earliest_utc_s = SCENE_NOW_S + 5678,
+                              .deck_likely_utc_s = SCENE_NOW_S + 6789,
+                              .deck_latest_utc_s = PASSAGE_NEVER,
                               .short_text = "VENNMARK ROADS: Tallowick Ford. ACT BY 22:18.",
                               .state = DELIVERY_WAITING,
                               .next_try_utc_s = SCENE_NOW_S};
@@ -420,6 +426,12 @@ static void messages_come_back_until_they_are_settled(void **state)
     assert_int_equal(back->point, SCENE_FORD);
     assert_int_equal(back->channel, SCENE_PAGE);
     assert_int_equal(back->made_utc_s, SCENE_NOW_S);
+    assert_true(back->wakes);
+    assert_int_equal(back->level, ADVICE_SEND);
+    assert_int_equal(back->act_by_utc_s, SCENE_NOW_S + 1234);
+    assert_int_equal(back->deck_earliest_utc_s, SCENE_NOW_S + 5678);
+    assert_int_equal(back->deck_likely_utc_s, SCENE_NOW_S + 6789);
+    assert_int_equal(back->deck_latest_utc_s, PASSAGE_NEVER);
     assert_string_equal(back->short_text, page->short_text);
     assert_string_equal(back->bulletin, page->bulletin);
     assert_int_equal(back->state, DELIVERY_WAITING); /* whoever sent it is gone */
