@@ -6,7 +6,10 @@
 #include "engine/horizon.h"
 
 #define HORIZON_TOLERANCE_M 0.02
-enum { PEAK_LOOK_BACK_S = 3 * 3600 };
+enum {
+    PEAK_LOOK_BACK_S = 3 * 3600,
+    ACT_BY_NEAR_S = 3600 /* an earlier act-by wakes nobody while it is further off than this */
+};
 
 static struct passage_curves curves_of(const struct cycle *cycle, size_t point)
 {
@@ -210,7 +213,7 @@ static size_t lowest_wet_mark(const struct settings_point *known)
  * down, comes back or concerns a shut road is an update; and one outage wakes once, however often hand readings interrupt it.
  */
 static bool change_wakes(const struct settings_point *known, const struct point_picture *point,
-                         const struct advice *before, const struct advice *after)
+                         const struct advice *before, const struct advice *after, int64_t now_utc_s)
 {
     bool is_open = point->road.state == ROAD_OPEN || point->road.state == ROAD_HANDED_BACK;
     bool is_on_ladder = after->level <= ADVICE_LATE;
@@ -223,7 +226,9 @@ static bool change_wakes(const struct settings_point *known, const struct point_
         return true;
     if (turned_blind && is_on_ladder && !point->is_outage_told)
         return point->is_rising || after->level >= ADVICE_MUSTER;
-    return is_open && is_on_ladder && after->level >= ADVICE_MUSTER && before->told_act_by_utc_s != PASSAGE_NEVER &&
+    bool is_near = after->level >= ADVICE_SEND || after->act_by_utc_s < now_utc_s + ACT_BY_NEAR_S;
+    return is_open && is_on_ladder && after->level >= ADVICE_MUSTER && is_near &&
+           before->told_act_by_utc_s != PASSAGE_NEVER &&
            after->act_by_utc_s < before->told_act_by_utc_s - (int64_t)known->policy.act_by_shift_s;
 }
 
@@ -259,7 +264,7 @@ static enum fw_status assess_advice(struct cycle *cycle, size_t index, int64_t n
         point->told_number = 0; /* a new thread has a new number */
     if (!has_changed)
         return FW_OK;
-    bool wakes = change_wakes(known, point, &before, &point->advice);
+    bool wakes = change_wakes(known, point, &before, &point->advice, now_utc_s);
     point->is_outage_told |= point->advice.is_blind;
     enum fw_status status =
         buffer_grow(&delta->decisions, &delta->decision_capacity, delta->decision_count, sizeof *delta->decisions);

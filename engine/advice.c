@@ -209,8 +209,9 @@ static bool act_by_has_shifted(const struct advice_policy *policy, const struct 
     if (told == PASSAGE_NEVER)
         return true;
     const double later_s = (double)(act_by_utc_s - told);
-    return -later_s > policy->act_by_shift_s ||
-           (later_s > policy->act_by_shift_s && !crew_is_on_its_way(facts->road));
+    /* More time in hand is news only when it is much against what was left: hours ahead, a quarter of an hour is not. */
+    const double later_limit_s = fmax(policy->act_by_shift_s, 0.25 * (double)(told - facts->now_utc_s));
+    return -later_s > policy->act_by_shift_s || (later_s > later_limit_s && !crew_is_on_its_way(facts->road));
 }
 
 struct advice advice_step(const struct advice_policy *policy, const struct advice_facts *facts,

@@ -109,7 +109,8 @@ struct advice advice_start(void);
  * kept.
  *
  * A shift of act-by counts while the level is MUSTER or SEND, the road is not shut and the act-by last told is not
- * past: any shift larger than act_by_shift_s while no crew has been called, only an earlier one after that. None
+ * past: any earlier act-by by more than act_by_shift_s; a later one only while no crew has been called, and then by
+ * more than act_by_shift_s and a quarter of the time that was left (hours ahead, a quarter of an hour is no news). None
  * before and one now is the largest shift.
  *
  * A crew sent now arrives a crew time from now; one that was called arrives a crew time after its call (or now, if

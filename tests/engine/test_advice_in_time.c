@@ -295,8 +295,10 @@ static const struct shift_row {
     int64_t act_by_s;
     bool is_news;
 } SHIFTS[] = {
-    {"later by the shift", ROAD_OPEN, 2 * HOUR, 2 * HOUR + 15 * MINUTE, false},
-    {"later by more", ROAD_OPEN, 2 * HOUR, 2 * HOUR + 15 * MINUTE + 1, true},
+    {"later by the shift", ROAD_OPEN, HOUR, HOUR + 15 * MINUTE, false},
+    {"later by more", ROAD_OPEN, HOUR, HOUR + 15 * MINUTE + 1, true},
+    {"later by more, but not by a quarter of what is left", ROAD_OPEN, 2 * HOUR, 2 * HOUR + 30 * MINUTE, false},
+    {"later by more than a quarter of what is left", ROAD_OPEN, 2 * HOUR, 2 * HOUR + 30 * MINUTE + 1, true},
     {"earlier by the shift", ROAD_OPEN, 2 * HOUR, 2 * HOUR - 15 * MINUTE, false},
     {"earlier by more", ROAD_OPEN, 2 * HOUR, 2 * HOUR - 15 * MINUTE - 1, true},
     {"later, crew called", ROAD_CREW_CALLED, 2 * HOUR, 3 * HOUR, false},
