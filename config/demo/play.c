@@ -149,7 +149,7 @@ static bool set_stage(struct play *play)
     is_set = is_set && play_config_write(config, &places, DRIVEN_DAEMON_CONFIG) &&
              crossings_read(config, &play->crossings);
     free(config);
-    play->told.shows_bulletins = !play->is_short;
+    told_begin(&play->told, !play->is_short);
     return is_set;
 }
 
@@ -221,6 +221,8 @@ static void say(struct play *play, const struct script_word *word)
     if (exit_code != 0) {
         fprintf(stderr, "play: the word was not taken (exit code %d)\n", exit_code);
         play->refused++;
+    } else if (word->part_count > 2 && strcmp(word->parts[0], "road") == 0 && strcmp(word->parts[2], "SHUT") == 0) {
+        told_shut(&play->told, &play->crossings, word->parts[1], word->at_utc_s);
     }
 }
 

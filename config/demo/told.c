@@ -38,25 +38,44 @@ static void show(const struct told *told, const cJSON *message, int64_t world_ut
     }
 }
 
-static void keep_first_send(struct told *told, const struct crossings *crossings, const cJSON *message)
+void told_begin(struct told *told, bool shows_bulletins)
+{
+    *told = (struct told){.shows_bulletins = shows_bulletins};
+    for (size_t i = 0; i < CROSSINGS_MAX; i++)
+        told->crossings[i] = (struct told_crossing){NIGHT_TIME_NEVER, NIGHT_TIME_NEVER, NIGHT_TIME_NEVER,
+                                                    NIGHT_TIME_NEVER, NIGHT_TIME_NEVER, NIGHT_TIME_NEVER};
+}
+
+static struct told_crossing *find(struct told *told, const struct crossings *crossings, const char *point_id)
+{
+    for (size_t i = 0; i < crossings->count; i++)
+        if (strcmp(crossings->list[i].id, point_id) == 0)
+            return &told->crossings[i];
+    return NULL;
+}
+
+void told_shut(struct told *told, const struct crossings *crossings, const char *point_id, int64_t at_utc_s)
+{
+    struct told_crossing *crossing = find(told, crossings, point_id);
+    if (crossing != NULL && crossing->shut_utc_s == NIGHT_TIME_NEVER)
+        crossing->shut_utc_s = at_utc_s;
+}
+
+static void keep(struct told *told, const struct crossings *crossings, const cJSON *message)
 {
     const char *level = text_in(message, "level");
-    const char *id = text_in(cJSON_GetObjectItemCaseSensitive(message, "point"), "id");
-    if (strcmp(level, "SEND") != 0 && strcmp(level, "LATE") != 0)
+    bool sends = strcmp(level, "SEND") == 0 || strcmp(level, "LATE") == 0;
+    const cJSON *deck_wet = cJSON_GetObjectItemCaseSensitive(message, "deck_wet");
+    struct told_crossing *crossing =
+        find(told, crossings, text_in(cJSON_GetObjectItemCaseSensitive(message, "point"), "id"));
+    if (crossing == NULL || crossing->shut_utc_s != NIGHT_TIME_NEVER || !(sends || strcmp(level, "MUSTER") == 0))
         return;
-    for (size_t i = 0; i < crossings->count; i++) {
-        struct told_send *send = &told->sends[i];
-        if (strcmp(crossings->list[i].id, id) != 0 || send->is_told)
-            continue;
-        const cJSON *deck_wet = cJSON_GetObjectItemCaseSensitive(message, "deck_wet");
-        *send = (struct told_send){.is_told = true,
-                                   .made_utc_s = time_in(message, "made"),
-                                   .act_by_utc_s = time_in(message, "act_by"),
-                                   .deck_earliest_utc_s = time_in(deck_wet, "earliest"),
-                                   .deck_likely_utc_s = time_in(deck_wet, "likely"),
-                                   .deck_latest_utc_s = time_in(deck_wet, "latest")};
-        snprintf(send->level, sizeof send->level, "%s", level);
-    }
+    crossing->act_by_utc_s = time_in(message, "act_by");
+    crossing->deck_earliest_utc_s = time_in(deck_wet, "earliest");
+    crossing->deck_likely_utc_s = time_in(deck_wet, "likely");
+    crossing->deck_latest_utc_s = time_in(deck_wet, "latest");
+    if (sends && crossing->first_send_utc_s == NIGHT_TIME_NEVER)
+        crossing->first_send_utc_s = time_in(message, "made");
 }
 
 static void take_line(struct told *told, const struct crossings *crossings, const char *line, int64_t world_utc_s)
@@ -68,7 +87,7 @@ static void take_line(struct told *told, const struct crossings *crossings, cons
     } else {
         told->message_count++;
         show(told, message, world_utc_s);
-        keep_first_send(told, crossings, message);
+        keep(told, crossings, message);
     }
     cJSON_Delete(message);
 }
@@ -96,37 +115,45 @@ bool told_take_new(struct told *told, const struct crossings *crossings, int64_t
     return true;
 }
 
+static const char *minutes(int64_t from_utc_s, int64_t to_utc_s, char text[24])
+{
+    if (from_utc_s == NIGHT_TIME_NEVER || to_utc_s == NIGHT_TIME_NEVER)
+        snprintf(text, 24, "-");
+    else
+        snprintf(text, 24, "%+lld min", (long long)(to_utc_s - from_utc_s) / 60);
+    return text;
+}
+
 bool told_print_table(const struct told *told, const struct crossings *crossings, const char *night_folder)
 {
-    printf("\n%-18s %-10s %-6s  %-23s  %-5s  %s\n", "crossing", "first SEND", "act by", "deck wet as forecast",
-           "true", "margin");
-    printf("%-18s %-10s %-6s  %-23s  %-5s  %s\n", "", "", "", "early / likely / late", "", "at the deck");
+    printf("\n%-18s %-10s %-6s  %-23s  %-5s  %-8s  %-5s  %s\n", "crossing", "first SEND", "act by",
+           "deck wet, as last said", "true", "margin", "shut", "before water");
     for (size_t i = 0; i < crossings->count; i++) {
         const struct crossing *crossing = &crossings->list[i];
-        const struct told_send *send = &told->sends[i];
-        int64_t true_utc_s;
-        char made[NIGHT_TIME_SIZE], act_by[NIGHT_TIME_SIZE], earliest[NIGHT_TIME_SIZE], likely[NIGHT_TIME_SIZE],
-            latest[NIGHT_TIME_SIZE], wet[NIGHT_TIME_SIZE];
-        if (!night_script_true_first(night_folder, crossing->id, crossing->deck_m, &true_utc_s))
+        const struct told_crossing *said = &told->crossings[i];
+        char clocks[7][NIGHT_TIME_SIZE];
+        char margin[24];
+        char dry[24];
+        int64_t wet_utc_s;
+        if (!night_script_true_first(night_folder, crossing->id, crossing->deck_m, &wet_utc_s))
             return false;
-        if (!send->is_told) {
-            printf("%-18s %-10s %-6s  %-23s  %-5s\n", crossing->name, "none", "-", "-",
-                   night_time_clock(true_utc_s, wet));
-            continue;
-        }
-        printf("%-18s %-10s %-6s  %5s / %5s / %5s    %-5s  ", crossing->name,
-               night_time_clock(send->made_utc_s, made), night_time_clock(send->act_by_utc_s, act_by),
-               night_time_clock(send->deck_earliest_utc_s, earliest),
-               night_time_clock(send->deck_likely_utc_s, likely), night_time_clock(send->deck_latest_utc_s, latest),
-               night_time_clock(true_utc_s, wet));
-        if (true_utc_s == NIGHT_TIME_NEVER || send->made_utc_s == NIGHT_TIME_NEVER)
-            puts("-");
-        else
-            printf("%+.0f min\n",
-                   (double)(true_utc_s - send->made_utc_s - crossings_need_s(crossings, crossing, send->made_utc_s)) /
-                       60.0);
+        int64_t closed_by_utc_s =
+            said->first_send_utc_s == NIGHT_TIME_NEVER
+                ? NIGHT_TIME_NEVER
+                : said->first_send_utc_s + crossings_need_s(crossings, crossing, said->first_send_utc_s);
+        printf("%-18s %-10s %-6s  %5s / %5s / %-7s  %-5s  %-8s  %-5s  %s\n", crossing->name,
+               night_time_clock(said->first_send_utc_s, clocks[0]), night_time_clock(said->act_by_utc_s, clocks[1]),
+               night_time_clock(said->deck_earliest_utc_s, clocks[2]),
+               night_time_clock(said->deck_likely_utc_s, clocks[3]),
+               night_time_clock(said->deck_latest_utc_s, clocks[4]), night_time_clock(wet_utc_s, clocks[5]),
+               minutes(closed_by_utc_s, wet_utc_s, margin), night_time_clock(said->shut_utc_s, clocks[6]),
+               minutes(said->shut_utc_s, wet_utc_s, dry));
     }
-    puts("margin: deck wet in truth, less the first SEND, less the crew's time and margin as configured (night or "
+    puts("as last said: in the crossing's own messages before people shut it (what rode in another's is in its "
+         "bulletin); earliest / likely / latest, '-' is "
+         "never "
+         "within the horizon\n"
+         "margin: deck wet in truth, less the first SEND, less the crew's time and margin as configured (night or "
          "day)");
     return true;
 }
