@@ -5,6 +5,7 @@
 #include <errno.h>
 #include <locale.h>
 #include <math.h>
+#include <stdbool.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -77,6 +78,8 @@ static enum fw_status parse_lines(FILE *stream, struct csv_parser *parser, struc
             status = fw_error_set(error, FW_BAD_INPUT, "%s:%zu: %s", reader->table->file, reader->line,
                                   csv_strerror(csv_error(parser)));
     }
+    if (status == FW_OK && ferror(stream))
+        status = fw_error_set(error, FW_UNAVAILABLE, "%s: cannot be read: %s", reader->table->file, strerror(errno));
     free(text);
     if (status == FW_OK && csv_fini(parser, on_cell, on_row, reader) != 0)
         status = fw_error_set(error, FW_BAD_INPUT, "%s:%zu: an open quotation at the end of the file",
@@ -92,10 +95,10 @@ enum fw_status table_read(const char *file, struct table *table_out, struct fw_e
     FILE *stream = fopen(file, "re");
     enum fw_status status = FW_OK;
     if (stream == NULL) {
-        status = fw_error_set(error, FW_UNAVAILABLE, "%s: %s", file, strerror(errno));
+        status = fw_error_set(error, FW_UNAVAILABLE, "%s: cannot be read: %s", file, strerror(errno));
         goto cleanup;
     }
-    if (table.file == NULL || csv_init(&parser, CSV_STRICT_FINI) != 0) {
+    if (table.file == NULL || csv_init(&parser, CSV_STRICT | CSV_STRICT_FINI) != 0) {
         status = fw_error_set(error, FW_NO_MEMORY, "%s: no memory", file);
         goto cleanup;
     }
@@ -104,7 +107,7 @@ enum fw_status table_read(const char *file, struct table *table_out, struct fw_e
     if (status == FW_OK && reader.is_short)
         status = fw_error_set(error, FW_NO_MEMORY, "%s: no memory", file);
     if (status == FW_OK && reader.row_count == 0)
-        status = fw_error_set(error, FW_BAD_INPUT, "%s: empty; expected a header line", file);
+        status = fw_error_set(error, FW_BAD_INPUT, "%s:1: the file is empty: expected a header line", file);
     table.row_count = reader.row_count > 0 ? reader.row_count - 1 : 0;
 cleanup:
     if (stream != NULL)
@@ -154,9 +157,17 @@ enum fw_status table_number(const struct table *table, size_t row, size_t column
                             struct fw_error *error)
 {
     const char *text = table_cell(table, row, column);
+    size_t cell_count = table_cell_count(table, row);
+    if (cell_count > table->first_cell[1]) /* 12,5 would be read as 12 */
+        return fw_error_set(
+            error, FW_BAD_INPUT,
+            "%s:%zu: %s: '%s' stands in a row of %zu cells, but the header names %zu columns: expected "
+            "a decimal point, not a comma",
+            table->file, table->line[row + 1], column_name(table, column), text, cell_count, table->first_cell[1]);
     locale_t plain = newlocale(LC_NUMERIC_MASK, "C", (locale_t)0);
     char *end = NULL;
-    double value = plain != (locale_t)0 ? strtod_l(text, &end, plain) : NAN;
+    bool is_decimal = strspn(text, "+-0123456789.eE") == strlen(text); /* not hexadecimal, nor a word */
+    double value = plain != (locale_t)0 && is_decimal ? strtod_l(text, &end, plain) : NAN;
     if (plain != (locale_t)0)
         freelocale(plain);
     if (end == NULL || end == text || *end != '\0' || !isfinite(value))
