@@ -12,7 +12,10 @@
 #include "daemon/command/table.h"
 #include "daemon/facts.h"
 
-enum { STEPS_MOST = 4000000 };
+enum {
+    STEPS_MOST = 4000000,
+    LARGEST_M3S = 100000 /* the whole flow of all gauges must stay under the 1e6 that a network takes */
+};
 
 struct hydrograph { /* discharge at a gauge, at uneven times */
     size_t count;
@@ -51,6 +54,13 @@ static void take_zone(struct route_plan *plan, const char *text)
 static enum fw_status read_time(const struct route_plan *plan, const struct table *table, size_t row, size_t column,
                                 double *time_s_out, struct fw_error *error)
 {
+    const char *text = table_cell(table, row, column);
+    if (is_plain_number(text) != plan->is_in_seconds && text[0] != '\0')
+        return fw_error_set(error, FW_BAD_INPUT,
+                            "%s:%zu: time: '%s' is not written as the first time of the input is: expected %s",
+                            table->file, table->line[row + 1], text,
+                            plan->is_in_seconds ? "seconds, as a plain number"
+                                                : "RFC 3339, as 2031-02-14T21:15:00Z or 2031-02-14T22:15:00+01:00");
     if (plan->is_in_seconds)
         return table_number(table, row, column, time_s_out, error);
     int64_t utc_s = 0;
@@ -65,13 +75,16 @@ static enum fw_status read_value(const struct settings_gauge *gauge, const struc
 {
     double value = 0.0;
     bool is_discharge = discharge_column != TABLE_NO_COLUMN;
-    enum fw_status status = table_number(table, row, is_discharge ? discharge_column : stage_column, &value, error);
+    size_t column = is_discharge ? discharge_column : stage_column;
+    enum fw_status status = table_number(table, row, column, &value, error);
     if (status != FW_OK)
         return status;
-    if (is_discharge && value < 0.0)
-        return fw_error_set(error, FW_BAD_INPUT, "%s:%zu: discharge_m3s: %g is below zero", table->file,
-                            table->line[row + 1], value);
-    *discharge_out_m3s = is_discharge ? value : rating_discharge_m3s(&gauge->rating, value, NULL);
+    double discharge_m3s = is_discharge ? value : rating_discharge_m3s(&gauge->rating, value, NULL);
+    if (!(discharge_m3s >= 0.0 && discharge_m3s <= LARGEST_M3S))
+        return fw_error_set(error, FW_BAD_INPUT, "%s:%zu: %s: '%s' is a flow of %g m3/s: expected 0 to %d",
+                            table->file, table->line[row + 1], is_discharge ? "discharge_m3s" : "stage_m",
+                            table_cell(table, row, column), discharge_m3s, LARGEST_M3S);
+    *discharge_out_m3s = discharge_m3s;
     return FW_OK;
 }
 
@@ -83,14 +96,19 @@ static enum fw_status read_rows(struct route_plan *plan, const struct settings_g
     size_t discharge_column = table_column(table, "discharge_m3s");
     size_t stage_column = table_column(table, "stage_m");
     if (time_column == TABLE_NO_COLUMN || (discharge_column == TABLE_NO_COLUMN && stage_column == TABLE_NO_COLUMN))
-        return fw_error_set(error, FW_BAD_INPUT,
-                            "%s:%zu: the header must name the columns time and discharge_m3s or stage_m", table->file,
-                            table->line[0]);
+        return fw_error_set(
+            error, FW_BAD_INPUT,
+            "%s:%zu: the header has no column '%s': expected time, and discharge_m3s or stage_m, with "
+            "commas between",
+            table->file, table->line[0], time_column == TABLE_NO_COLUMN ? "time" : "discharge_m3s' or 'stage_m");
     if (discharge_column == TABLE_NO_COLUMN && !gauge->has_rating)
-        return fw_error_set(error, FW_BAD_INPUT, "%s: stage_m needs a rating, and gauge '%s' has none", table->file,
-                            gauge->id);
+        return fw_error_set(error, FW_BAD_INPUT,
+                            "%s:%zu: stage_m: gauge '%s' has no rating: expected discharge_m3s, or a rating in the "
+                            "configuration",
+                            table->file, table->line[0], gauge->id);
     if (table->row_count == 0)
-        return fw_error_set(error, FW_BAD_INPUT, "%s: no rows below the header", table->file);
+        return fw_error_set(error, FW_BAD_INPUT, "%s:%zu: no rows below the header: expected one or more",
+                            table->file, table->line[0]);
     if (is_first) {
         const char *first = table_cell(table, 0, time_column);
         plan->is_in_seconds = is_plain_number(first);
@@ -107,8 +125,11 @@ static enum fw_status read_rows(struct route_plan *plan, const struct settings_g
             status =
                 read_value(gauge, table, row, discharge_column, stage_column, &inflow->discharge_m3s[row], error);
         if (status == FW_OK && row > 0 && inflow->time_s[row] <= inflow->time_s[row - 1])
-            status = fw_error_set(error, FW_BAD_INPUT, "%s:%zu: time: '%s' is not after the row before it",
-                                  table->file, table->line[row + 1], table_cell(table, row, time_column));
+            status = fw_error_set(
+                error, FW_BAD_INPUT,
+                "%s:%zu: time: '%s' is not after the time of the row before it, '%s': expected times that rise",
+                table->file, table->line[row + 1], table_cell(table, row, time_column),
+                table_cell(table, row - 1, time_column));
         inflow->count = row + 1;
     }
     return status;
@@ -126,7 +147,7 @@ static enum fw_status read_inflows(struct route_plan *plan, const struct option_
             return status;
         size_t gauge = settings_gauge_index(plan->settings, id);
         if (gauge == SETTINGS_NONE)
-            return fw_error_set(error, FW_USAGE, "--inflow: '%s' is not a gauge of the configuration", id);
+            return fw_error_set(error, FW_USAGE, "--inflow: '%s' is not a gauge of %s", id, plan->settings->file);
         if (plan->inflow[gauge].count > 0)
             return fw_error_set(error, FW_USAGE, "--inflow: gauge '%s' is given twice", id);
         status = table_read(file, &table, error);
@@ -136,8 +157,8 @@ static enum fw_status read_inflows(struct route_plan *plan, const struct option_
     }
     for (size_t gauge = 0; gauge < plan->settings->gauge_count && status == FW_OK; gauge++)
         if (plan->inflow[gauge].count == 0)
-            status =
-                fw_error_set(error, FW_USAGE, "gauge '%s' has no --inflow file", plan->settings->gauges[gauge].id);
+            status = fw_error_set(error, FW_USAGE, "--inflow: gauge '%s' has no file: expected --inflow %s=FILE.csv",
+                                  plan->settings->gauges[gauge].id, plan->settings->gauges[gauge].id);
     return status;
 }
 
@@ -203,13 +224,20 @@ static enum fw_status plan_times(struct route_plan *plan, const char *until, lon
             return fw_error_prefix(error, FW_USAGE, "--until");
         plan->until_s = (double)utc_s;
     }
-    if (plan->until_s < plan->start_s)
-        return fw_error_set(error, FW_USAGE, "--until is before the first inflow");
+    if (until != NULL && plan->until_s < plan->start_s)
+        return fw_error_set(error, FW_USAGE, "--until: '%s' is before the first inflow", until);
     plan->step_s = step_s > 0 ? (double)step_s : (double)plan->settings->time_step_s;
     plan->every_s = every_s > 0 ? (double)every_s : (isfinite(shortest_s) ? shortest_s : plan->step_s);
     if ((plan->until_s - plan->start_s) / plan->step_s > STEPS_MOST)
-        return fw_error_set(error, FW_USAGE, "more than %d steps of %g s; give a longer --step", STEPS_MOST,
+        return fw_error_set(error, FW_USAGE, "--step: more than %d steps of %g s: expected a longer one", STEPS_MOST,
                             plan->step_s);
+    if ((plan->until_s - plan->start_s) / plan->every_s > STEPS_MOST)
+        return fw_error_set(error, FW_USAGE, "--every: more than %d rows %g s apart: expected a longer interval",
+                            STEPS_MOST, plan->every_s);
+    if (plan->step_s > shortest_s)
+        fprintf(stderr,
+                "forewater: note: steps of %g s pass over inflow given every %g s; what falls between is lost\n",
+                plan->step_s, shortest_s);
     return FW_OK;
 }
 
