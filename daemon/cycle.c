@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: MIT */
 #include "daemon/cycle.h"
 
+#include <assert.h>
 #include <math.h>
 #include <stdlib.h>
 #include <string.h>
@@ -141,6 +142,7 @@ void cycle_spread_at(const struct cycle *cycle, size_t point, size_t step, doubl
     double values[PASSAGE_MEMBERS_MAX];
     const double *row = cycle->stage_m + (point * (cycle->step_count + 1) + step) * cycle->member_count;
     size_t count = cycle->forecast_column_count;
+    assert(count > 0);
     for (size_t column = 0; column < count; column++) { /* insertion sort: there are nine */
         double value = row[cycle->forecast_columns[column]];
         size_t place = column;

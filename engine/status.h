@@ -9,10 +9,10 @@
 
 enum fw_status {
     FW_OK = 0,
-    FW_NOTHING_NEW, /* not an error: there was nothing to take */
-    FW_BAD_INPUT,   /* a value, file, reply or argument is not what it must be */
+    FW_NOTHING_NEW,  /* not an error: there was nothing to take */
+    FW_BAD_INPUT,    /* a value, file, reply or argument is not what it must be */
     FW_OUT_OF_RANGE, /* beyond what a table or a shape covers */
-    FW_UNSTABLE,    /* a step outside the limits of a scheme */
+    FW_UNSTABLE,     /* a step outside the limits of a scheme */
     FW_NO_MEMORY,
     FW_IO,          /* the operating system said no */
     FW_LOCKED,      /* another instance holds it */

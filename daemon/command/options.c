@@ -29,7 +29,7 @@ enum fw_status options_read(const struct command_line *line, int argument_count,
 {
     struct option known[OPTIONS_MAX + 2] = {{0}};
     size_t count = 0;
-    for (; line->options[count].name != NULL && count < OPTIONS_MAX; count++)
+    for (; count < OPTIONS_MAX && line->options[count].name != NULL; count++)
         known[count] = (struct option){line->options[count].name,
                                        line->options[count].argument ? required_argument : no_argument, NULL,
                                        FIRST_OPTION_CODE + (int)count};

@@ -32,43 +32,43 @@ enum settings_feed_kind { SETTINGS_FOLDER, SETTINGS_HTTP };
 struct settings_feed {
     enum settings_feed_kind kind;
     /* folder */
-    const char *path;          /* the drop folder, absolute after reading */
-    const char *append_file;   /* a file in it that a logger appends to; NULL: files are dropped whole */
+    const char *path;                       /* the drop folder, absolute after reading */
+    const char *append_file;                /* a file in it that a logger appends to; NULL: files are dropped whole */
     const char *time_column, *value_column; /* names in the header line; for http JSON Pointers within one reading */
     /* http */
     const char *url;
     const char *readings_pointer; /* JSON Pointer to the array (or object of objects) of readings */
     int64_t every_s;              /* how often to ask */
     /* both */
-    const char *unit;             /* "m", "cm", "mm" or "m3/s", "l/s": what the value is written in */
-    bool has_zone;                /* zone of times written without an offset */
+    const char *unit; /* "m", "cm", "mm" or "m3/s", "l/s": what the value is written in */
+    bool has_zone;    /* zone of times written without an offset */
     struct when_zone zone;
 };
 
 struct settings_gauge {
     const char *id, *name;
     enum settings_measure measures;
-    double zero_m;              /* gauge zero above datum; NAN: not stated */
+    double zero_m; /* gauge zero above datum; NAN: not stated */
     bool has_rating;
-    struct rating rating;       /* needed when it measures stage */
+    struct rating rating; /* needed when it measures stage */
     size_t feed_count;
     struct settings_feed *feeds; /* in order of trust, the first most */
     int64_t expect_every_s, delivery_s, blind_after_s, blind_after_rising_s;
-    struct quality_rules quality;  /* in the measured quantity, SI */
-    double rising_rate_per_s;      /* above this it counts as rising */
+    struct quality_rules quality; /* in the measured quantity, SI */
+    double rising_rate_per_s;     /* above this it counts as rising */
     struct assumed_rules assumed;
-    size_t node;                   /* index of its node in the river */
+    size_t node; /* index of its node in the river */
 };
 
 struct settings_mark {
     const char *name;
-    double depth_m;             /* above the point's invert */
-    bool is_trafficked;         /* on the way that vehicles use (default true; a soffit is not) */
+    double depth_m;     /* above the point's invert */
+    bool is_trafficked; /* on the way that vehicles use (default true; a soffit is not) */
 };
 
 struct settings_trigger { /* gives SEND while it holds */
     size_t gauge;
-    double value;               /* stage or discharge, as the gauge measures */
+    double value; /* stage or discharge, as the gauge measures */
     bool needs_rising;
     const char *signed_by;
 };
@@ -77,44 +77,44 @@ struct settings_point {
     const char *id, *name;
     size_t reach;
     double at_m;
-    double invert_m;            /* above datum */
+    double invert_m; /* above datum */
     size_t mark_count;
     struct settings_mark *marks; /* rising depths */
     size_t closing_mark;         /* index; lowest trafficked unless signed otherwise */
     size_t deck_mark;            /* index: the first mark named as the deck ("deck": true), else the closing mark */
     bool has_crew;               /* false: the point is watched, nobody closes it */
     struct advice_policy policy;
-    double reopen_below_m;       /* below the deck mark by this much */
+    double reopen_below_m;        /* below the deck mark by this much */
     int64_t reopen_and_reclose_s; /* how long reopening and closing again takes */
-    const char *detour_over;     /* point id or NULL */
+    const char *detour_over;      /* point id or NULL */
     size_t access_over_count;
     const char **access_over;
     size_t trigger_count;
     struct settings_trigger *triggers;
-    size_t stage_row_count;      /* own stage rating; 0: the section's normal stage */
+    size_t stage_row_count; /* own stage rating; 0: the section's normal stage */
     double *stage_row_discharge_m3s, *stage_row_stage_m;
-    size_t blocked_row_count;    /* part-blocked curve, beside it */
+    size_t blocked_row_count; /* part-blocked curve, beside it */
     double *blocked_row_discharge_m3s, *blocked_row_stage_m;
-    size_t cannot_see_count;     /* standing sentences: what this forecast cannot see here */
+    size_t cannot_see_count; /* standing sentences: what this forecast cannot see here */
     const char **cannot_see;
 };
 
 struct settings_channel {
     const char *id;
-    bool is_journal;             /* else a command */
+    bool is_journal; /* else a command */
     size_t argument_count;
-    const char **run;            /* argv, NULL-terminated */
+    const char **run; /* argv, NULL-terminated */
 };
 
 struct settings_role { /* one step of the roster */
     const char *role;
     size_t to_count;
-    size_t *to;                  /* channel indices */
+    size_t *to; /* channel indices */
     int64_t accept_within_s;
 };
 
 struct settings {
-    const char *file;            /* absolute path it came from */
+    const char *file;                  /* absolute path it came from */
     char digest[SETTINGS_DIGEST_SIZE]; /* of the text, byte for byte */
     const char *text;
     size_t text_length;
@@ -124,13 +124,13 @@ struct settings {
     const char *datum;
     int night_from_minute, night_to_minute; /* local minutes of day */
 
-    const char *store_file;      /* absolute; NULL: none stated (enough for `route`) */
-    const char *inbox_path;      /* absolute; default: "inbox" beside the store */
+    const char *store_file; /* absolute; NULL: none stated (enough for `route`) */
+    const char *inbox_path; /* absolute; default: "inbox" beside the store */
 
     int64_t forecast_every_s;
     int64_t horizon_s;
-    int64_t warm_up_s;           /* how far before now the routing starts */
-    size_t member_count;         /* stated for the ensemble to come; not used by the stated set of runs */
+    int64_t warm_up_s;   /* how far before now the routing starts */
+    size_t member_count; /* stated for the ensemble to come; not used by the stated set of runs */
     int64_t time_step_s;
     size_t roughness_factor_count;
     double roughness_factors[8]; /* 0.8 1.0 1.2 */
@@ -147,7 +147,7 @@ struct settings {
     size_t role_count;
     struct settings_role *roster;
 
-    struct network_river river;  /* ready for network_create; its arrays belong to the settings */
+    struct network_river river;     /* ready for network_create; its arrays belong to the settings */
     const char **reach_outlet_note; /* per reach: NULL, or why its "outlet" cannot be used by this version */
     const char **node_names;
 };
@@ -158,7 +158,7 @@ struct settings_faults {
     struct settings_fault {
         size_t line;
         char text[512]; /* "forewater.json:41: points[0].marks[1].depth_m: 1.30 is below ..." */
-    } *faults;
+    } * faults;
     size_t capacity;
 };
 void settings_faults_clear(struct settings_faults *faults);

@@ -62,7 +62,8 @@ static const char *const statement_text[STORE_STATEMENT_COUNT] = {
                             "told_act_by FROM advice WHERE point = ? ORDER BY entry DESC LIMIT 1",
     [STORE_NEWEST_FORECAST] = "SELECT issued FROM forecast ORDER BY entry DESC LIMIT 1",
     [STORE_MESSAGES] = "SELECT entry, id, number, kind, point, channel, made, wakes, level, act_by, deck_earliest, "
-                       "deck_likely, deck_latest, short_text, bulletin, state, tries, next_try, settled, note FROM outbox WHERE settled IS NULL OR settled >= ? OR made >= ? "
+                       "deck_likely, deck_latest, short_text, bulletin, state, tries, next_try, settled, note FROM "
+                       "outbox WHERE settled IS NULL OR settled >= ? OR made >= ? "
                        "ORDER BY entry",
     [STORE_FIND_MESSAGE] = "SELECT entry FROM outbox WHERE id = ? AND channel = ?",
     [STORE_FACT_WORDS] = "SELECT " WORD_COLUMNS " FROM word WHERE kind IN ('accept', 'seen', 'road') ORDER BY entry",
