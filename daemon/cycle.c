@@ -139,10 +139,10 @@ enum fw_status cycle_reserve_samples(struct cycle *cycle, size_t count)
 
 void cycle_spread_at(const struct cycle *cycle, size_t point, size_t step, double spread_out_m[3])
 {
-    double values[PASSAGE_MEMBERS_MAX];
+    double values[CYCLE_FORECASTS_MAX] = {0};
     const double *row = cycle->stage_m + (point * (cycle->step_count + 1) + step) * cycle->member_count;
     size_t count = cycle->forecast_column_count;
-    assert(count > 0);
+    assert(count > 0 && count <= CYCLE_FORECASTS_MAX);
     for (size_t column = 0; column < count; column++) { /* insertion sort: there are nine */
         double value = row[cycle->forecast_columns[column]];
         size_t place = column;

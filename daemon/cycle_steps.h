@@ -8,7 +8,9 @@
 
 enum {
     CYCLE_FUTURES = ASSUMED_FUTURE_COUNT, /* members of a roughness group: three forecasts, two envelope edges */
-    CYCLE_ALIGN_S = 3600 /* routing starts at whole hours, so that the same input gives the same bytes */
+    CYCLE_FORECASTS_MAX =
+        8 * ASSUMED_FORECAST_COUNT, /* as many roughness factors as the settings take, times the futures */
+    CYCLE_ALIGN_S = 3600            /* routing starts at whole hours, so that the same input gives the same bytes */
 };
 
 struct cycle {
