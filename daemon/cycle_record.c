@@ -6,7 +6,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-#include "daemon/store/ledger.h"
+#include "daemon/ledger.h"
 #include "daemon/tell/sentence.h"
 
 enum { CURVE_STEP_S = 300, FORECAST_KEPT_EVERY_S = 900 };

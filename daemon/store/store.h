@@ -6,7 +6,7 @@
 #ifndef FOREWATER_DAEMON_STORE_H
 #define FOREWATER_DAEMON_STORE_H
 
-#include "daemon/cycle.h"
+#include "daemon/delta.h"
 #include "daemon/error.h"
 
 struct store;

@@ -4,7 +4,7 @@
 #include <stdio.h>
 #include <string.h>
 
-#include "daemon/store/ledger.h"
+#include "daemon/ledger.h"
 
 /*
  * An entry that was sealed behind another than the store's newest tells that something in between was never stored.

@@ -3,7 +3,7 @@
 
 #include <string.h>
 
-#include "daemon/store/ledger.h"
+#include "daemon/ledger.h"
 
 /* The columns of STORE_LEDGER_WALK against the link before. */
 static enum fw_status check_ledger_row(struct store_row *row, char previous_link[FACT_DIGEST_SIZE],

@@ -12,7 +12,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-#include "daemon/store/ledger.h"
+#include "daemon/ledger.h"
 
 struct renumbering {
     int64_t *entry; /* in the picture */

@@ -7,7 +7,7 @@
 #define FOREWATER_DAEMON_TELL_SENTENCE_H
 
 #include "daemon/buffer.h"
-#include "daemon/cycle.h"
+#include "daemon/delta.h"
 
 #define SENTENCE_CAUTION                                                                                             \
     "Decision aid for trained staff. Local codes, the road authority, police and emergency services come first. "    \

@@ -6,7 +6,7 @@
 #ifndef FOREWATER_DAEMON_TELL_SENTENCE_VIEW_H
 #define FOREWATER_DAEMON_TELL_SENTENCE_VIEW_H
 
-#include "daemon/cycle.h"
+#include "daemon/delta.h"
 #include "daemon/tell/sentence_catalogue.h"
 
 enum { SENTENCE_MOMENT_SIZE = 40, SENTENCE_WORDS_SIZE = 160, SENTENCE_DISTRICT_MOST = 24 };

@@ -14,7 +14,7 @@
 
 #include <cmocka.h>
 
-#include "daemon/store/ledger.h"
+#include "daemon/ledger.h"
 #include "daemon/store/store_internal.h"
 
 enum { SCENE_SCAR, SCENE_MILL, SCENE_GAUGES };

@@ -3,7 +3,7 @@
 
 #include <math.h>
 
-#include "daemon/store/ledger.h"
+#include "daemon/ledger.h"
 
 /* A steady night, then a rise: stage by minute, smooth enough that nothing is suspect. */
 static double rising_stage_m(int minute)

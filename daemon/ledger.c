@@ -1,5 +1,5 @@
 /* SPDX-License-Identifier: MIT */
-#include "daemon/store/ledger.h"
+#include "daemon/ledger.h"
 
 #include <openssl/evp.h>
 #include <stdio.h>

@@ -1,9 +1,9 @@
 /* SPDX-License-Identifier: MIT */
 /* The chain: each link digests the one before, so that the record cannot be quietly rebuilt. */
-#ifndef FOREWATER_DAEMON_STORE_LEDGER_H
-#define FOREWATER_DAEMON_STORE_LEDGER_H
+#ifndef FOREWATER_DAEMON_LEDGER_H
+#define FOREWATER_DAEMON_LEDGER_H
 
-#include "daemon/cycle.h"
+#include "daemon/delta.h"
 
 /* SHA-256 in lower-case hex. FW_IO: the library refused. */
 FW_MUST_CHECK enum fw_status digest_sha256(const void *bytes, size_t length, char hex_out[FACT_DIGEST_SIZE]);

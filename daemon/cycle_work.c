@@ -1,0 +1,154 @@
+/* SPDX-License-Identifier: MIT */
+#include "daemon/cycle_steps.h"
+
+#include <assert.h>
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+/* The largest flow the tables are built for: every gauge at the top of its believed range, side water added. */
+static double largest_discharge_m3s(const struct settings *settings, bool is_at_highest_gauging)
+{
+    double total = 0.0;
+    for (size_t index = 0; index < settings->gauge_count; index++) {
+        const struct settings_gauge *gauge = &settings->gauges[index];
+        double value = gauge->quality.highest;
+        if (gauge->measures == SETTINGS_STAGE && is_at_highest_gauging && isfinite(gauge->rating.highest_gauged_m))
+            value = gauge->rating.highest_gauged_m;
+        if (!isfinite(value))
+            value = gauge->measures == SETTINGS_STAGE ? 10.0 : 1000.0;
+        total += cycle_quantity_discharge(gauge, value);
+    }
+    double with_side_water = total;
+    for (size_t side = 0; side < settings->river.side_inflow_count; side++) {
+        const struct network_side_inflow *inflow = &settings->river.side_inflows[side];
+        with_side_water += inflow->share_of_gauge == NETWORK_NONE ? inflow->constant_m3s : inflow->share * total;
+    }
+    return with_side_water;
+}
+
+static enum fw_status create_network(struct cycle *cycle, struct fw_error *error)
+{
+    const struct settings *settings = cycle->settings;
+    struct network_options options = {
+        .time_step_s = (double)settings->time_step_s,
+        .group_count = settings->roughness_factor_count,
+        .roughness_factors = settings->roughness_factors,
+        .members_per_group = CYCLE_FUTURES,
+        .largest_discharge_m3s = largest_discharge_m3s(settings, false),
+        .typical_peak_m3s = largest_discharge_m3s(settings, true),
+    };
+    struct network_fault fault = {{0}};
+    enum fw_status status = network_create(&settings->river, &options, &cycle->network, &fault);
+    if (status != FW_OK)
+        return fw_error_set(error, status, "%s: %s", settings->file, fault.text[0] ? fault.text : "no memory");
+    return FW_OK;
+}
+
+static enum fw_status allocate_work_space(struct cycle *cycle)
+{
+    const struct settings *settings = cycle->settings;
+    size_t groups = settings->roughness_factor_count;
+    cycle->member_count = groups * CYCLE_FUTURES;
+    cycle->forecast_column_count = groups * ASSUMED_FORECAST_COUNT;
+    cycle->step_capacity =
+        (size_t)((settings->warm_up_s + settings->horizon_s + CYCLE_ALIGN_S) / settings->time_step_s) + 2;
+    size_t row = (cycle->step_capacity + 1) * cycle->member_count;
+    cycle->forecast_columns = calloc(cycle->forecast_column_count, sizeof *cycle->forecast_columns);
+    cycle->has_inflow = calloc(settings->gauge_count + 1, sizeof *cycle->has_inflow);
+    cycle->is_above = calloc(settings->gauge_count + 1, sizeof *cycle->is_above);
+    cycle->inflow_m3s = calloc(settings->gauge_count * row + 1, sizeof(double));
+    cycle->point_m3s = calloc(settings->point_count * row + 1, sizeof(double));
+    cycle->stage_m = calloc(settings->point_count * row + 1, sizeof(double));
+    cycle->future_m3s = calloc(cycle->step_capacity + 1, sizeof(double));
+    cycle->even_value = calloc(cycle->step_capacity + 1, sizeof(double));
+    cycle->even_origin = calloc(cycle->step_capacity + 1, sizeof *cycle->even_origin);
+    if (!cycle->forecast_columns || !cycle->has_inflow || !cycle->is_above || !cycle->inflow_m3s ||
+        !cycle->point_m3s || !cycle->stage_m || !cycle->future_m3s || !cycle->even_value || !cycle->even_origin)
+        return FW_NO_MEMORY;
+    size_t next = 0;
+    for (size_t group = 0; group < groups; group++)
+        for (size_t future = 0; future < ASSUMED_FORECAST_COUNT; future++)
+            cycle->forecast_columns[next++] = group * CYCLE_FUTURES + future;
+    return FW_OK;
+}
+
+enum fw_status cycle_create(const struct settings *settings, struct cycle **cycle_out, struct fw_error *error)
+{
+    struct cycle *cycle = calloc(1, sizeof *cycle);
+    if (cycle == NULL)
+        return fw_error_set(error, FW_NO_MEMORY, "no memory for the forecast");
+    cycle->settings = settings;
+    enum fw_status status = create_network(cycle, error);
+    if (status == FW_OK && allocate_work_space(cycle) != FW_OK)
+        status = fw_error_set(error, FW_NO_MEMORY, "no memory for the forecast");
+    if (status != FW_OK) {
+        cycle_destroy(cycle);
+        return status;
+    }
+    *cycle_out = cycle;
+    return FW_OK;
+}
+
+void cycle_destroy(struct cycle *cycle)
+{
+    if (cycle == NULL)
+        return;
+    network_destroy(cycle->network);
+    free(cycle->forecast_columns);
+    free(cycle->has_inflow);
+    free(cycle->is_above);
+    free(cycle->inflow_m3s);
+    free(cycle->point_m3s);
+    free(cycle->stage_m);
+    free(cycle->sample_utc_s);
+    free(cycle->sample_value);
+    free(cycle->samples);
+    free(cycle->verdicts);
+    free(cycle->sample_index);
+    free(cycle->future_m3s);
+    free(cycle->even_value);
+    free(cycle->even_origin);
+    free(cycle);
+}
+
+enum fw_status cycle_reserve_samples(struct cycle *cycle, size_t count)
+{
+    if (count <= cycle->sample_capacity)
+        return FW_OK;
+    size_t capacity = count * 2;
+    free(cycle->sample_utc_s);
+    free(cycle->sample_value);
+    free(cycle->samples);
+    free(cycle->verdicts);
+    free(cycle->sample_index);
+    cycle->sample_utc_s = calloc(capacity, sizeof *cycle->sample_utc_s);
+    cycle->sample_value = calloc(capacity, sizeof *cycle->sample_value);
+    cycle->samples = calloc(capacity, sizeof *cycle->samples);
+    cycle->verdicts = calloc(capacity, sizeof *cycle->verdicts);
+    cycle->sample_index = calloc(capacity, sizeof *cycle->sample_index);
+    cycle->sample_capacity = capacity;
+    if (!cycle->sample_utc_s || !cycle->sample_value || !cycle->samples || !cycle->verdicts || !cycle->sample_index) {
+        cycle->sample_capacity = 0;
+        return FW_NO_MEMORY;
+    }
+    return FW_OK;
+}
+
+void cycle_spread_at(const struct cycle *cycle, size_t point, size_t step, double spread_out_m[3])
+{
+    double values[CYCLE_FORECASTS_MAX] = {0};
+    const double *row = cycle->stage_m + (point * (cycle->step_count + 1) + step) * cycle->member_count;
+    size_t count = cycle->forecast_column_count;
+    assert(count > 0 && count <= CYCLE_FORECASTS_MAX);
+    for (size_t column = 0; column < count; column++) { /* insertion sort: there are nine */
+        double value = row[cycle->forecast_columns[column]];
+        size_t place = column;
+        for (; place > 0 && values[place - 1] > value; place--)
+            values[place] = values[place - 1];
+        values[place] = value;
+    }
+    spread_out_m[0] = values[0];
+    spread_out_m[1] = values[count / 2];
+    spread_out_m[2] = values[count - 1];
+}
