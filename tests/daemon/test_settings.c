@@ -36,7 +36,7 @@ static void the_example_becomes_the_district_it_describes(void **state)
     assert_int_equal(settings->night_from_minute, 1200);
     assert_int_equal(settings->night_to_minute, 360);
     assert_string_equal(settings->store_file, "/var/lib/forewater/history.db");
-    assert_string_equal(settings->inbox_path, "/var/lib/forewater/inbox");
+    assert_string_equal(settings->inbox_path, "/var/spool/forewater/inbox");
     assert_int_equal(settings->forecast_every_s, 300);
     assert_int_equal(settings->horizon_s, 43200);
     assert_int_equal(settings->warm_up_s, 86400);
@@ -70,7 +70,7 @@ static void the_gauge_of_the_example_has_its_limits_in_si(void **state)
     assert_true(gauge->rating.highest_gauged_m == 2.38);
     assert_int_equal(gauge->feed_count, 2);
     assert_int_equal(gauge->feeds[0].kind, SETTINGS_FOLDER);
-    assert_string_equal(gauge->feeds[0].path, "/var/lib/forewater/drop/orlin-scar");
+    assert_string_equal(gauge->feeds[0].path, "/var/spool/forewater/incoming/orlin-scar");
     assert_null(gauge->feeds[0].append_file);
     assert_string_equal(gauge->feeds[0].value_column, "stage_m");
     assert_string_equal(gauge->feeds[0].unit, "m");

@@ -259,7 +259,7 @@ static void a_gauge_must_be_whole(void **state)
          "folder"},
         {"a folder that is asked", "\"unit\": \"m\"", "\"every_min\": 5", NULL,
          "gauges[0].feeds[0].every_min: 5 does "},
-        {"a folder nowhere", "\"path\": \"/var/lib/forewater/drop/orlin-scar\", ", "", "{ \"kind\": \"folder\"",
+        {"a folder nowhere", "\"path\": \"/var/spool/forewater/incoming/orlin-scar\", ", "", "{ \"kind\": \"folder\"",
          "gauges[0].feeds[0].path: missing: expected a path, because the feed is of kind folder"},
         {"an address nowhere", "\"url\": \"http://127.0.0.1:8480/orlin-scar.json\", ", "", "{ \"kind\": \"http\"",
          "gauges[0].feeds[1].url: missing"},
