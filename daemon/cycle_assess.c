@@ -118,6 +118,7 @@ static int64_t below_since(const struct cycle *cycle, size_t point, int64_t now_
 static void assess_path(struct cycle *cycle, const struct picture *picture, size_t index, struct point_picture *point)
 {
     settings_gauges_above(cycle->settings, index, cycle->is_above);
+    point->is_unknown = false;
     point->is_blind = false;
     point->is_rising = false;
     point->silent_s = 0;
@@ -127,6 +128,7 @@ static void assess_path(struct cycle *cycle, const struct picture *picture, size
         if (!cycle->is_above[gauge])
             continue;
         const struct gauge_picture *above = &picture->gauges[gauge];
+        point->is_unknown |= above->newest_utc_s == 0;
         point->is_blind |= above->is_blind;
         point->is_rising |= above->is_rising;
         has_hand |= above->is_hand;
@@ -169,6 +171,25 @@ static void assess_triggers(const struct cycle *cycle, const struct picture *pic
     }
     if (!point->trigger_holds && !point->assumed_trigger_holds)
         point->trigger_since_utc_s = 0;
+}
+
+/* No reading has ever counted at some gauge above: the dry bed that was routed in its place says nothing. */
+static void void_water(const struct settings_point *known, struct point_picture *point)
+{
+    static const struct passage unknown = {.earliest_utc_s = PASSAGE_NEVER,
+                                           .likely_utc_s = PASSAGE_NEVER,
+                                           .latest_utc_s = PASSAGE_NEVER,
+                                           .below_again_earliest_utc_s = PASSAGE_NEVER,
+                                           .below_again_latest_utc_s = PASSAGE_NEVER};
+    for (size_t mark = 0; mark < known->mark_count; mark++)
+        point->marks[mark].passage = unknown;
+    point->level_now.low_m = point->level_now.likely_m = point->level_now.high_m = NAN;
+    point->peak = (struct passage_peak){NAN, NAN, NAN, PASSAGE_NEVER};
+    point->chance_of_return = 1.0;
+    point->measured_until_utc_s = 0;
+    point->unmeasured_share = 0.0;
+    point->is_peak_beyond_gauging = false;
+    point->below_since_utc_s = 0;
 }
 
 static enum fw_status assess_water(struct cycle *cycle, const struct picture *picture, size_t index,
@@ -285,7 +306,10 @@ enum fw_status cycle_assess(struct cycle *cycle, int64_t now_utc_s, struct delta
             continue;
         assess_path(cycle, next, index, point);
         assess_triggers(cycle, next, known, now_utc_s, point);
-        status = assess_water(cycle, next, index, now_utc_s, point);
+        if (point->is_unknown)
+            void_water(known, point);
+        else
+            status = assess_water(cycle, next, index, now_utc_s, point);
         if (status == FW_OK && known->has_crew)
             status = assess_advice(cycle, index, now_utc_s, point, delta);
     }

@@ -43,7 +43,7 @@ static enum fw_status thin_forecast(const struct cycle *cycle, int64_t now_utc_s
             int64_t utc_s = forecast->start_utc_s + (int64_t)index * CURVE_STEP_S;
             size_t step = (size_t)((utc_s - cycle->start_utc_s) / cycle->settings->time_step_s);
             int32_t mm[3] = {-1, -1, -1};
-            if (step <= cycle->step_count)
+            if (step <= cycle->step_count && !next->points[point].is_unknown)
                 spread_mm(cycle, point, step, mm);
             forecast->low_mm[point * count + index] = mm[0];
             forecast->likely_mm[point * count + index] = mm[1];

@@ -44,6 +44,7 @@ static enum fw_status point_picture_init(struct point_picture *point, size_t mar
 {
     *point = (struct point_picture){
         .advice = advice_start(),
+        .is_unknown = true,
         .measured_until_utc_s = 0,
         .water.depth_cm = NAN,
         .peak = {NAN, NAN, NAN, PASSAGE_NEVER},

@@ -64,6 +64,7 @@ struct point_picture {
     struct {
         double low_m, likely_m, high_m;
     } level_now;
+    bool is_unknown; /* a gauge above it has given no reading that counts: there is no forecast, the rest is void */
     int64_t measured_until_utc_s; /* PASSAGE_NEVER: beyond the horizon */
     double unmeasured_share;      /* of the flow now, that no gauge on the path measures */
     bool is_blind;                /* a gauge above it is blind */

@@ -158,6 +158,7 @@ static void add_point(struct text *json, const struct settings_point *known, con
     add_bool(json, "has_crew", known->has_crew);
     add_advice(json, &point->advice);
     add_whole(json, "number", point->told_number);
+    add_bool(json, "unknown", point->is_unknown);
     add_time(json, "measured_until", point->measured_until_utc_s);
     add_number(json, "unmeasured_share", 4, point->unmeasured_share);
     add_bool(json, "rising", point->is_rising);

@@ -70,7 +70,9 @@ static void print_point(const struct when_zone *zone, const cJSON *point)
     const cJSON *marks = cJSON_GetObjectItemCaseSensitive(point, "marks");
     const cJSON *deck = cJSON_GetArrayItem(marks, (int)number_of(point, "deck_mark"));
     snprintf(advice, sizeof advice, "%s%s", text_of(point, "advice"), is_true(point, "blind") ? " [//] BLIND" : "");
-    if (time_of(deck, "earliest") == PASSAGE_NEVER)
+    if (is_true(point, "unknown"))
+        snprintf(wet, sizeof wet, "NO FORECAST");
+    else if (time_of(deck, "earliest") == PASSAGE_NEVER)
         snprintf(wet, sizeof wet, "not within the horizon");
     else
         snprintf(wet, sizeof wet, "%s / %s / %s", clock_of(zone, deck, "earliest", times[0]),

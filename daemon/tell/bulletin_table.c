@@ -71,7 +71,8 @@ static void fill_deck(const struct sentence_view *view, size_t point, char cell[
     }
     const struct passage *deck = &marks[known->deck_mark].passage;
     if (deck->earliest_utc_s == PASSAGE_NEVER) {
-        snprintf(cell, CELL_SIZE, "%s", view->words->text[TABLE_NOT_REACHED]);
+        bool is_unknown = view->picture->points[point].is_unknown;
+        snprintf(cell, CELL_SIZE, "%s", view->words->text[is_unknown ? TABLE_UNKNOWN : TABLE_NOT_REACHED]);
         return;
     }
     char first[SENTENCE_MOMENT_SIZE];
@@ -86,7 +87,7 @@ static void fill_runs(const struct sentence_view *view, size_t point, char cell[
 {
     const struct settings_point *known = &view->settings->points[point];
     const struct mark_picture *marks = view->picture->points[point].marks;
-    if (known->deck_mark >= known->mark_count || marks == NULL) {
+    if (known->deck_mark >= known->mark_count || marks == NULL || view->picture->points[point].is_unknown) {
         snprintf(cell, CELL_SIZE, "-");
         return;
     }

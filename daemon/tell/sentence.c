@@ -129,7 +129,9 @@ static void put_deck(struct parts *parts)
                                             {"runs", runs},
                                             {0}};
     enum sentence_id id = SHORT_DECK_BETWEEN;
-    if (deck->earliest_utc_s == PASSAGE_NEVER)
+    if (view->state->is_unknown)
+        id = SHORT_DECK_UNKNOWN;
+    else if (deck->earliest_utc_s == PASSAGE_NEVER)
         id = SHORT_DECK_NOT_REACHED;
     else if (deck->latest_utc_s == PASSAGE_NEVER)
         id = SHORT_DECK_FROM;

@@ -469,6 +469,12 @@ static void add_stage_rating(struct bulletin *bulletin)
 static void add_rests(struct bulletin *bulletin)
 {
     add_gauges(bulletin);
+    if (bulletin->view->state->is_unknown) {
+        char place[SENTENCE_WORDS_SIZE];
+        sentence_name(bulletin->view->known->name, place_most(bulletin), place, sizeof place);
+        say(bulletin, RESTS_UNKNOWN, (struct sentence_field[]){{"place", place}, {0}});
+        return;
+    }
     add_levels(bulletin);
     add_closing_mark(bulletin);
     add_measured(bulletin);

@@ -49,6 +49,7 @@ static const struct sentence_catalogue english = {
             [SHORT_DECK_BETWEEN] = "Deck wet {earliest}-{latest}. ",
             [SHORT_DECK_FROM] = "Deck wet from {earliest}, or not at all. ",
             [SHORT_DECK_SINCE] = "Deck wet since {earliest}. ",
+            [SHORT_DECK_UNKNOWN] = "NO FORECAST. ",
             [SHORT_DECK_NOT_REACHED] = "Deck not reached in {runs} runs. ",
             [SHORT_ACT_BY] = "ACT BY {act_by}. ",
             [SHORT_ACT_BY_WAS] = "ACT BY {act_by}, was {was}. ",
@@ -136,6 +137,7 @@ static const struct sentence_catalogue english = {
             [TABLE_RUNS] = "RUNS",
             [TABLE_LEVEL] = "LEVEL NOW",
             [TABLE_PASSED] = "passed",
+            [TABLE_UNKNOWN] = "no forecast",
             [TABLE_NOT_REACHED] = "not reached",
             [TABLE_RUNS_CELL] = "{reached} of {runs}",
             [TABLE_LEVEL_CELL] = "{level}, {difference} {side}",
@@ -151,6 +153,9 @@ static const struct sentence_catalogue english = {
             [RESTS_FROZEN] = ", newer readings stand still",
             [RESTS_HELD] = ", held unconfirmed: {held} {unit} at {held_at}",
             [RESTS_BLIND] = ", {blind} (limit {limit} min)",
+            [RESTS_UNKNOWN] =
+                "There is NO FORECAST for {place}: a gauge above it has given no reading that counts. Ask for a "
+                "hand reading, or for a look at the crossing from its dry side.",
             [RESTS_NOW] = "{place} now {level} m above invert ({low} to {high}), {to_deck}. ",
             [RESTS_PEAK] = "Peak likely {peak} m at {at} ({low} to {high}), {to_deck}.",
             [RESTS_MARK] = "{mark} {depth} m: earliest {earliest}, likely {likely}, latest {latest}; {runs}.",

@@ -50,6 +50,7 @@ enum sentence_id {
     SHORT_DECK_FROM,
     SHORT_DECK_SINCE,
     SHORT_DECK_NOT_REACHED,
+    SHORT_DECK_UNKNOWN,
     /* act by */
     SHORT_ACT_BY,
     SHORT_ACT_BY_WAS, /* SHORT_ACT_BY is its brief form */
@@ -139,6 +140,7 @@ enum sentence_id {
     TABLE_LEVEL,
     TABLE_PASSED,
     TABLE_NOT_REACHED,
+    TABLE_UNKNOWN,
     TABLE_RUNS_CELL,
     TABLE_LEVEL_CELL,
     TABLE_NO_CREW,
@@ -153,6 +155,7 @@ enum sentence_id {
     RESTS_FROZEN,
     RESTS_HELD,
     RESTS_BLIND,
+    RESTS_UNKNOWN,
     RESTS_NOW,
     RESTS_PEAK,
     RESTS_MARK,

@@ -149,9 +149,17 @@ static void a_district_without_any_reading_is_blind_and_not_quiet(void **state)
     for (size_t point = 0; point < 3; point++) {
         assert_true(scene.picture->points[point].advice.is_blind);
         assert_int_equal(scene.picture->points[point].advice.level, ADVICE_MUSTER);
+        assert_true(scene.picture->points[point].is_unknown);
+        assert_true(isnan(scene.picture->points[point].level_now.likely_m));
+        assert_int_equal(scene.picture->points[point].measured_until_utc_s, 0);
+        assert_true(scene.picture->forecast.likely_mm[point * scene.picture->forecast.step_count] == -1);
     }
     assert_int_equal(delta.decision_count, 3);
     assert_int_equal(scene.picture->outbox_count, scene.settings->roster[0].to_count); /* one message, not three */
+    assert_non_null(strstr(scene.picture->outbox[0].short_text, "NO FORECAST"));
+    assert_non_null(strstr(scene.picture->outbox[0].bulletin, "There is NO FORECAST for Tallowick Ford"));
+    assert_non_null(strstr(scene.picture->outbox[0].bulletin, " no forecast ")); /* in the table */
+    assert_null(strstr(scene.picture->outbox[0].bulletin, "not reached"));
     delta_clear(&delta);
     scene_close(&scene);
 }

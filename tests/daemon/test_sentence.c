@@ -478,6 +478,10 @@ static void what_it_rests_on_is_said_in_the_right_word(void **state)
     expect_words(short_of(night, text), "Rests on ASSUMED water, gauge silent since 21:15.");
     ford->newest_utc_s = 0;
     expect_words(short_of(night, text), "Rests on ASSUMED water, no reading yet.");
+    ford->is_unknown = true;
+    expect_words(short_of(night, text), "NO FORECAST.");
+    assert_null(strstr(text, "eck")); /* nothing is said of the deck */
+    ford->is_unknown = false;
     ford->water = (struct water_fact){.is_known = true, .is_wet = true, .at_utc_s = at(21, 52), .by = "crew lead"};
     night->decision.after.reasons = ADVICE_BY_WATER_SEEN;
     night->decision.after.level = ADVICE_LATE;
@@ -863,6 +867,12 @@ static void with_no_reading(struct night *night)
     night->gauge_pictures[0].newest_utc_s = 0;
 }
 
+static void with_no_forecast(struct night *night)
+{
+    with_no_reading(night);
+    night->point_pictures[0].is_unknown = true;
+}
+
 static void with_long_silence(struct night *night)
 {
     night->gauge_pictures[0].silent_s = 3 * 86400;
@@ -996,6 +1006,7 @@ static void what_is_special_tonight_is_said(void **state)
          "falling 0.50 m/h, seen 21:15, 45 min old, [//] BLIND (limit 25 min), newer readings stand still.",
          with_frozen},
         {"nothing read yet", "Orlin Scar: no reading yet", with_no_reading},
+        {"no forecast", "There is NO FORECAST for Tallowick Ford", with_no_forecast},
         {"silent for days", "seen Tue 22:00, 3 days old", with_long_silence},
         {"live gauge", "no reading from Orlin Scar by 22:20;", with_live_gauge},
         {"wet", "water seen: wet 4 cm, crew lead 21:50; not accepted yet.", with_wet},
