@@ -34,6 +34,7 @@ struct station {
     int64_t next_look_ms;   /* machine time at which a settling file may be ready; -1: none */
     int64_t next_rescan_ms; /* machine time of the next look at every folder, watched or not */
     size_t cycle_count;
+    int64_t last_cycle_ms; /* machine time of the newest forecast that could be made */
     bool
         is_paused; /* a driven world between two steps: only people's words are taken, at the moment the world stands at */
 };
