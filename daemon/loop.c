@@ -21,8 +21,9 @@ struct loop {
     const struct loop_options *options;
     bool is_ending;
     uint64_t watchdog_us; /* 0: nobody watches */
-    int listener;         /* -1: the world's own time */
-    int driver;           /* -1: nobody drives */
+    size_t told_cycle_count;
+    int listener; /* -1: the world's own time */
+    int driver;   /* -1: nobody drives */
     char line[DRIVE_LINE_SIZE];
     size_t line_length;
     bool is_answer_owed;
@@ -204,11 +205,28 @@ static void answer_when_idle(struct loop *loop)
     answer(loop, "at %s\n", when_rfc3339_utc(clock_world_utc_s(&loop->station->clock), text));
 }
 
-/* Progress is the proof of life: this line is only reached when a whole turn was done. */
+/*
+ * Progress is the proof of life. A turn that was done is not enough: when no forecast could be made for three intervals the manager is
+ * told nothing, and restarts us. Transfers and hooks have limits of their own.
+ */
 static void tell_manager(struct loop *loop)
 {
-    if (loop->watchdog_us > 0)
+    const struct station *station = loop->station;
+    int64_t patience_ms = 3000 * station->settings->forecast_every_s + MOST_WAIT_MS;
+    bool is_alive = station->clock.is_driven || clock_machine_ms() - station->last_cycle_ms < patience_ms;
+    if (loop->watchdog_us > 0 && is_alive)
         sd_notify(0, "WATCHDOG=1");
+    if (loop->told_cycle_count == station->cycle_count)
+        return;
+    loop->told_cycle_count = station->cycle_count;
+    journal_flush(&loop->station->journal);
+    size_t open_count = 0;
+    char text[WHEN_TEXT_SIZE];
+    for (size_t point = 0; point < station->picture->point_count; point++)
+        open_count += station->picture->points[point].advice.level != ADVICE_QUIET;
+    sd_notifyf(0, "STATUS=forecast of %s; %zu of %zu crossings not QUIET%s",
+               when_clock(&station->settings->zone, station->picture->as_of_utc_s, text), open_count,
+               station->picture->point_count, station->picture->is_store_failing ? "; THE STORE IS FAILING" : "");
 }
 
 static int64_t wait_ms(const struct loop *loop)

@@ -213,8 +213,11 @@ static int64_t next_multiple(int64_t after_utc_s, int64_t every_s)
 enum fw_status station_open(struct station *station, struct settings *settings, struct clock clock,
                             struct fw_error *error)
 {
-    *station = (struct station){
-        .journal = journal_open(stderr, JOURNAL_INFO), .clock = clock, .settings = settings, .next_look_ms = -1};
+    *station = (struct station){.journal = journal_open(stderr, JOURNAL_INFO),
+                                .clock = clock,
+                                .settings = settings,
+                                .next_look_ms = -1,
+                                .last_cycle_ms = clock_machine_ms()};
     if (sd_event_default(&station->event) < 0)
         return fw_error_set(error, FW_IO, "the event loop could not be made");
     enum fw_status status = open_store(station, error);
@@ -350,6 +353,7 @@ static void run_cycle(struct station *station, int64_t now_utc_s)
     news_clear(&station->news);
     delta_clear(&delta);
     station->cycle_count++;
+    station->last_cycle_ms = clock_machine_ms();
 }
 
 static bool is_cycle_due(const struct station *station, int64_t now_utc_s)
