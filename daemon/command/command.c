@@ -2,6 +2,23 @@
 #include "daemon/command/command.h"
 
 #include <stdio.h>
+#include <string.h>
+
+#include "daemon/tell/sentence.h"
+
+void command_print_caution(void)
+{
+    enum { LINE = 110 };
+    const char *text = SENTENCE_CAUTION;
+    while (strlen(text) > LINE) {
+        size_t length = LINE;
+        while (text[length] != ' ')
+            length--;
+        printf("%.*s\n", (int)length, text);
+        text += length + 1;
+    }
+    printf("%s\n", text);
+}
 
 enum fw_status command_read_settings(const char *file, enum settings_need need, struct settings **settings_out,
                                      struct fw_error *error)

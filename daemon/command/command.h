@@ -18,6 +18,9 @@ command_function command_replay;
 command_function command_status;
 command_function command_say;
 
+/* The caution that stands under everything a person acts on, in lines of a terminal. */
+void command_print_caution(void);
+
 #define COMMAND_DEFAULT_CONFIG "/etc/forewater/forewater.json"
 
 /* Reads the settings; every fault goes to stderr, one a line. */

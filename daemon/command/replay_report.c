@@ -4,6 +4,7 @@
 #include <stdio.h>
 #include <stdlib.h>
 
+#include "daemon/command/command.h"
 #include "daemon/tell/sentence.h"
 
 enum fw_status replay_report_open(struct replay_report *report, const struct settings *settings, bool is_json)
@@ -15,9 +16,12 @@ enum fw_status replay_report_open(struct replay_report *report, const struct set
     for (size_t point = 0; point < settings->point_count; point++)
         report->rows[point] = (struct replay_row){
             PASSAGE_NEVER, 0, PASSAGE_NEVER, PASSAGE_NEVER, PASSAGE_NEVER, PASSAGE_NEVER, PASSAGE_NEVER};
-    if (!is_json)
-        printf("REPLAY of past readings, %s, settings %.8s. Nothing is being sent.\n%s\n\n", settings->district_name,
-               settings->digest, SENTENCE_CAUTION);
+    if (!is_json) {
+        printf("REPLAY of past readings, %s, settings %.8s. Nothing is being sent.\n", settings->district_name,
+               settings->digest);
+        command_print_caution();
+        printf("\n");
+    }
     return FW_OK;
 }
 

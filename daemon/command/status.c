@@ -10,7 +10,6 @@
 #include "daemon/clock.h"
 #include "daemon/command/options.h"
 #include "daemon/store/store.h"
-#include "daemon/tell/sentence.h"
 
 static const char *text_of(const cJSON *object, const char *key)
 {
@@ -123,7 +122,8 @@ static enum fw_status print_picture(const struct settings *settings, const cJSON
         print_point(&settings->zone, rows[index]);
     free(rows);
     printf("\nAfter the time under MEASURED the inflow is assumed: %s.\n", text_of(picture, "assumed"));
-    printf("%s\nsettings %.8s  record %.8s\n", SENTENCE_CAUTION, text_of(picture, "settings"), link);
+    command_print_caution();
+    printf("settings %.8s  record %.8s\n", text_of(picture, "settings"), link);
     return FW_OK;
 }
 
