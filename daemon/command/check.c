@@ -9,7 +9,7 @@
 #include "daemon/command/options.h"
 #include "daemon/tell/sentence.h"
 
-enum { FLOW_COUNT = 6 };
+enum { FLOW_COUNT = 6, SEARCH_COUNT = 256 };
 
 struct check {
     const struct settings *settings;
@@ -20,30 +20,64 @@ struct check {
 
 /* --- reaches ------------------------------------------------------------------------------------------------------ */
 
+/* A hair below it, where the wave is still the channel's; NAN: not known. */
+static double bank_full_m3s(const struct network_reach *reach)
+{
+    static const double hair = 1e-3;
+    return reach->section->has_plain ? section_normal_discharge_m3s(reach->section, reach->slope_m_per_m,
+                                                                    reach->section->plain_above_m * (1.0 - hair))
+                                     : NAN;
+}
+
+/* The flows of the table, and bank full among them where it is known; how many. */
+static size_t reach_flows(const struct check *check, double bank_full, double flows_out[FLOW_COUNT + 1])
+{
+    size_t count = 0;
+    bool has_bank_full = bank_full > check->flows_m3s[0] && bank_full < check->flows_m3s[FLOW_COUNT - 1];
+    for (size_t flow = 0; flow < FLOW_COUNT; flow++) {
+        if (has_bank_full && bank_full <= check->flows_m3s[flow]) {
+            flows_out[count++] = bank_full;
+            has_bank_full = false;
+        }
+        if (count == 0 || check->flows_m3s[flow] > flows_out[count - 1])
+            flows_out[count++] = check->flows_m3s[flow];
+    }
+    return count;
+}
+
+static void print_flows(size_t count, const struct network_reach_flow flows[], double bank_full)
+{
+    for (size_t flow = 0; flow < count; flow++)
+        printf("    %8.1f m3/s  depth %5.2f m  wave %4.2f m/s  travel %5.0f min  Courant %4.2f%s\n",
+               flows[flow].discharge_m3s, flows[flow].depth_m, flows[flow].celerity_m_s,
+               flows[flow].travel_time_s / 60.0, flows[flow].courant_number,
+               flows[flow].discharge_m3s == bank_full ? "  bank full" : "");
+    for (size_t flow = 1; flow < count; flow++)
+        if (flows[flow].travel_time_s > 1.05 * flows[flow - 1].travel_time_s) {
+            printf(
+                "    note: above %.0f m3/s the wave is SLOWER (water spreads): the peak of a bigger flood can arrive "
+                "later; its front does not\n",
+                flows[flow - 1].discharge_m3s);
+            break;
+        }
+}
+
 static enum fw_status print_reach(const struct check *check, size_t index, struct fw_error *error)
 {
     static const char *const method_names[] = {[NETWORK_MUSKINGUM_CUNGE] = "muskingum-cunge",
                                                [NETWORK_KINEMATIC] = "kinematic",
                                                [NETWORK_KINEMATIC_LINEAR] = "kinematic-linear"};
     const struct network_reach *reach = &check->settings->river.reaches[index];
+    double bank_full = bank_full_m3s(reach), flows_m3s[FLOW_COUNT + 1];
+    size_t count = reach_flows(check, bank_full, flows_m3s);
     struct network_reach_steps steps = {0};
-    struct network_reach_flow flows[FLOW_COUNT];
-    enum fw_status status =
-        network_reach_summary(check->network, index, 1.0, FLOW_COUNT, check->flows_m3s, &steps, flows);
+    struct network_reach_flow flows[FLOW_COUNT + 1];
+    enum fw_status status = network_reach_summary(check->network, index, 1.0, count, flows_m3s, &steps, flows);
     if (status != FW_OK)
         return fw_error_set(error, status, "reach '%s': its flows cannot be computed", reach->id);
     printf("reach %s: %.0f m, slope %g, method %s, %zu cells of %.0f m, steps of %g s\n", reach->id, reach->length_m,
            reach->slope_m_per_m, method_names[reach->method], steps.cell_count, steps.cell_m, steps.time_step_s);
-    for (size_t flow = 0; flow < FLOW_COUNT; flow++)
-        printf("    %8.1f m3/s  depth %5.2f m  wave %4.2f m/s  travel %5.0f min  Courant %4.2f\n",
-               flows[flow].discharge_m3s, flows[flow].depth_m, flows[flow].celerity_m_s,
-               flows[flow].travel_time_s / 60.0, flows[flow].courant_number);
-    for (size_t flow = 1; flow < FLOW_COUNT; flow++)
-        if (flows[flow].travel_time_s > 1.05 * flows[flow - 1].travel_time_s) {
-            printf("    note: above %.0f m3/s the wave is SLOWER (water spreads): a bigger flood can arrive later\n",
-                   flows[flow - 1].discharge_m3s);
-            break;
-        }
+    print_flows(count, flows, bank_full);
     return FW_OK;
 }
 
@@ -70,33 +104,118 @@ static double path_travel_time_s(const struct check *check, size_t gauge, size_t
     return NAN;
 }
 
-/* The shortest over the flows of the table, at one roughness factor. */
-static double travel_time_s(const struct check *check, size_t gauge, size_t point, double roughness_factor)
+struct wave {
+    double flow_m3s, travel_s;
+};
+
+/*
+ * Of all flows of the table's range the one that travels fastest: a later part of a flood overtakes the earlier ones,
+ * and in a fast rise what wets the road comes with it. Sought finely, as it stands just below bank full.
+ */
+static struct wave fastest_wave(const struct check *check, size_t gauge, size_t point, double roughness_factor)
 {
-    double shortest_s = INFINITY;
-    for (size_t flow = 0; flow < FLOW_COUNT; flow++)
-        shortest_s =
-            fmin(shortest_s, path_travel_time_s(check, gauge, point, roughness_factor, check->flows_m3s[flow]));
-    return shortest_s;
+    double octaves = log2(check->flows_m3s[FLOW_COUNT - 1] / check->flows_m3s[0]);
+    struct wave fastest = {NAN, INFINITY};
+    for (size_t index = 0; index <= SEARCH_COUNT; index++) {
+        double flow_m3s = check->flows_m3s[0] * exp2(octaves * (double)index / SEARCH_COUNT);
+        double travel_s = path_travel_time_s(check, gauge, point, roughness_factor, flow_m3s);
+        if (travel_s < fastest.travel_s)
+            fastest = (struct wave){flow_m3s, travel_s};
+    }
+    return fastest;
 }
 
-static bool print_need(const struct settings_point *point, const char *when, double crew_s, double lead_s)
+/* The flow that brings the point's level to its closing mark, not above the table's range. */
+static double closing_flow_m3s(const struct check *check, size_t point)
+{
+    const struct settings_point *known = &check->settings->points[point];
+    double depth_m = known->marks[known->closing_mark].depth_m;
+    double low_m3s = 0.0, high_m3s = check->flows_m3s[FLOW_COUNT - 1];
+    for (int halving = 0; halving < 60; halving++) {
+        double middle_m3s = 0.5 * (low_m3s + high_m3s);
+        if (network_point_stage_m(check->network, point, 0, middle_m3s) < depth_m)
+            low_m3s = middle_m3s;
+        else
+            high_m3s = middle_m3s;
+    }
+    return high_m3s;
+}
+
+struct lead {
+    double best_s;  /* of a slow rise: the closing mark's own wave */
+    double least_s; /* of a fast one: the fastest wave over the smoothest bed */
+};
+
+static void print_margin(double margin_s)
+{
+    if (margin_s >= 0.0)
+        printf("enough by %.0f min", margin_s / 60.0);
+    else
+        printf("SHORT by %.0f min", -margin_s / 60.0);
+}
+
+static bool print_need(const struct settings_point *point, const char *when, double crew_s, struct lead lead)
 {
     double need_s = crew_s + point->policy.margin_s;
-    bool is_enough = lead_s >= need_s;
-    printf("    %-5s need %3.0f min (crew %.0f + margin %.0f)  best lead on measured water %3.0f min  %s\n", when,
-           need_s / 60.0, crew_s / 60.0, point->policy.margin_s / 60.0, lead_s / 60.0,
-           is_enough ? "enough at best" : "NOT ENOUGH");
-    return is_enough;
+    printf("    %-5s need %3.0f min (crew %.0f + margin %.0f): in a slow rise ", when, need_s / 60.0, crew_s / 60.0,
+           point->policy.margin_s / 60.0);
+    print_margin(lead.best_s - need_s);
+    printf(", in the fastest ");
+    print_margin(lead.least_s - need_s);
+    printf("\n");
+    return lead.best_s >= need_s;
 }
 
 static void print_triggers(const struct settings *settings, const struct settings_point *point)
 {
-    for (size_t index = 0; index < point->trigger_count; index++)
+    for (size_t index = 0; index < point->trigger_count; index++) {
+        const struct settings_gauge *gauge = &settings->gauges[point->triggers[index].gauge];
         printf(
-            "    trigger: %s at %.2f%s gives SEND, signed by %s; a rise carried forward counts while it is silent\n",
-            settings->gauges[point->triggers[index].gauge].name, point->triggers[index].value,
+            "    trigger: %s at %.2f %s%s gives SEND, signed by %s; a rise carried forward counts while the gauge is "
+            "silent\n",
+            gauge->name, point->triggers[index].value, gauge->measures == SETTINGS_STAGE ? "m" : "m3/s",
             point->triggers[index].needs_rising ? " and rising" : "", point->triggers[index].signed_by);
+    }
+}
+
+/* What one gauge upstream is worth for a point; false: nothing makes up for a lead that is too short. */
+static bool print_gauge(const struct check *check, size_t index, size_t gauge)
+{
+    const struct settings_point *point = &check->settings->points[index];
+    const struct settings_gauge *known = &check->settings->gauges[gauge];
+    double lag_s = (double)(known->expect_every_s + known->delivery_s);
+    double closing_m3s = closing_flow_m3s(check, index);
+    double own_s = path_travel_time_s(check, gauge, index, 1.0, closing_m3s);
+    struct wave fastest = fastest_wave(check, gauge, index, check->fastest_roughness);
+    struct lead lead = {own_s - lag_s, fastest.travel_s - lag_s};
+    printf("    from %s: the closing mark's own flow, %.0f m3/s, travels %.0f min; the fastest wave, %.0f m3/s with "
+           "roughness x%.1f, %.0f min\n",
+           known->name, closing_m3s, own_s / 60.0, fastest.flow_m3s, check->fastest_roughness,
+           fastest.travel_s / 60.0);
+    printf(
+        "    lead on measured water, less %.0f min (a reading every %.0f, delivery %.0f): %.0f min in a slow rise, "
+        "%.0f in the fastest\n",
+        lag_s / 60.0, (double)known->expect_every_s / 60.0, (double)known->delivery_s / 60.0, lead.best_s / 60.0,
+        lead.least_s / 60.0);
+    if (!point->has_crew)
+        return true;
+    bool is_day = print_need(point, "day", point->policy.crew_day_s, lead);
+    bool is_night = print_need(point, "night", point->policy.crew_night_s, lead);
+    double longest_need_s = fmax(point->policy.crew_day_s, point->policy.crew_night_s) + point->policy.margin_s;
+    if (is_day && is_night && lead.least_s < longest_need_s && point->trigger_count == 0)
+        printf(
+            "    note: in the fastest rise %s alone is too late here; MUSTER on assumed water, or a signed trigger, "
+            "has to gain the time\n",
+            known->name);
+    if (is_day && is_night)
+        return true;
+    printf("    ** %s alone cannot protect this crossing %s: %s\n", known->name,
+           is_day     ? "at night"
+           : is_night ? "by day"
+                      : "at night, nor by day",
+           point->trigger_count > 0 ? "the signed trigger below has to gain the time"
+                                    : "an engineer must sign a trigger, or a gauge further up is needed");
+    return point->trigger_count > 0;
 }
 
 static bool print_point(const struct check *check, size_t index, bool is_above[])
@@ -108,29 +227,9 @@ static bool print_point(const struct check *check, size_t index, bool is_above[]
            point->marks[point->closing_mark].name, point->marks[point->closing_mark].depth_m,
            point->invert_m + point->marks[point->closing_mark].depth_m, settings->datum);
     settings_gauges_above(settings, index, is_above);
-    for (size_t gauge = 0; gauge < settings->gauge_count; gauge++) {
-        if (!is_above[gauge])
-            continue;
-        const struct settings_gauge *known = &settings->gauges[gauge];
-        double lag_s = (double)(known->expect_every_s + known->delivery_s);
-        double middle_s = travel_time_s(check, gauge, index, 1.0);
-        double fastest_s = travel_time_s(check, gauge, index, check->fastest_roughness);
-        double slowest_s = travel_time_s(check, gauge, index, check->slowest_roughness);
-        printf("    from %s: shortest travel %.0f min (%.0f to %.0f with roughness x%.1f to x%.1f), less %.0f min of "
-               "reading interval and delivery\n",
-               known->name, middle_s / 60.0, fastest_s / 60.0, slowest_s / 60.0, check->fastest_roughness,
-               check->slowest_roughness, lag_s / 60.0);
-        if (!point->has_crew)
-            continue;
-        bool is_day = print_need(point, "day", point->policy.crew_day_s, fastest_s - lag_s);
-        bool is_night = print_need(point, "night", point->policy.crew_night_s, fastest_s - lag_s);
-        if (!is_night || !is_day)
-            printf("    ** the gauge %s alone cannot protect this crossing %s%s\n", known->name,
-                   is_day ? "at night" : "by day or night",
-                   point->trigger_count > 0 ? "; the signed trigger below has to gain the time"
-                                            : "; an engineer must sign a trigger, or a gauge further up is needed");
-        is_protected &= (is_night && is_day) || point->trigger_count > 0;
-    }
+    for (size_t gauge = 0; gauge < settings->gauge_count; gauge++)
+        if (is_above[gauge])
+            is_protected &= print_gauge(check, index, gauge);
     if (!point->has_crew)
         printf("    watched only: no crew is stated, no one is sent\n");
     print_triggers(settings, point);
@@ -229,6 +328,8 @@ enum fw_status command_check(int argument_count, char *arguments[], struct fw_er
     bool is_protected = true;
     int rest = 0;
     enum fw_status status = options_read(&line, argument_count, arguments, &rest, error);
+    if (status == FW_OK && rest < argument_count)
+        status = fw_error_set(error, FW_USAGE, "check: '%s' is not expected here", arguments[rest]);
     if (status != FW_OK)
         return status;
     if (schema.count > 0 || manual.count > 0)
@@ -241,7 +342,8 @@ enum fw_status command_check(int argument_count, char *arguments[], struct fw_er
     if (status == FW_OK)
         status = print_all(&check, &is_protected, error);
     if (status == FW_OK && !is_protected)
-        printf("** at least one crossing is protected by no gauge and no trigger\n");
+        printf("** at least one crossing is protected in time neither by a gauge alone nor by a trigger; see ** "
+               "above\n");
     network_destroy(check.network);
     settings_destroy(settings);
     return status;
