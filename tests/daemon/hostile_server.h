@@ -230,7 +230,7 @@ static inline void *hostile_accept(void *context)
         if (connection == NULL)
             continue;
         *connection = (struct hostile_connection){.server = server, .fd = accept(server->listener, NULL, NULL)};
-        struct timeval patience = {.tv_sec = 1};
+        struct timeval patience = {.tv_sec = 30};
         setsockopt(connection->fd, SOL_SOCKET, SO_RCVTIMEO, &patience, sizeof patience);
         pthread_t thread;
         atomic_fetch_add(&server->connections, 1);
