@@ -140,6 +140,8 @@ static inline void hostile_behave(struct hostile_connection *connection, const c
         hostile_redirect(connection, "file:///etc/passwd");
     else if (strcmp(path, "/redirect-nowhere") == 0)
         hostile_say(connection, "HTTP/1.1 302 Found\r\nContent-Length: 0\r\nConnection: close\r\n\r\n");
+    else if (strcmp(path, "/redirect-4") == 0)
+        hostile_redirect(connection, "/redirect-3");
     else if (strncmp(path, "/redirect-3", 11) == 0)
         hostile_redirect(connection, "/redirect-2?key=hidden");
     else if (strncmp(path, "/redirect-2", 11) == 0)

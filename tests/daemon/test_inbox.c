@@ -402,6 +402,17 @@ static void a_file_that_cannot_be_read_moves_to_bad_with_its_reason(void **state
     inbox_close(inbox);
 }
 
+static void a_file_named_for_more_than_its_id_is_refused(void **state)
+{
+    struct bench *bench = *state;
+    struct inbox *inbox = open_inbox(bench);
+    bench_write(bench, "inbox/word-2.word", "{\"id\":\"word\",\"kind\":\"accept\",\"by\":\"x\"}");
+    scan(bench, inbox);
+    assert_int_equal(bench->news.word_count, 0);
+    bench_expect_note(&bench->news, "inbox: word-2.word: id 'word' is not the name of its file; expected word.word");
+    inbox_close(inbox);
+}
+
 static void what_is_no_word_file_is_not_opened(void **state)
 {
     struct bench *bench = *state;
@@ -556,6 +567,7 @@ int main(void)
         WITH_BENCH(a_word_is_taken_once_and_not_stored_again_only_after_a_restart),
         WITH_BENCH(the_inbox_wakes_its_reader),
         WITH_BENCH(a_file_that_cannot_be_read_moves_to_bad_with_its_reason),
+        WITH_BENCH(a_file_named_for_more_than_its_id_is_refused),
         WITH_BENCH(what_is_no_word_file_is_not_opened),
         WITH_BENCH(handing_in_refuses_what_the_daemon_would_refuse),
         WITH_BENCH(an_inbox_that_cannot_be_made_or_written_is_named),
