@@ -8,6 +8,7 @@
 
 #include "daemon/command/options.h"
 #include "daemon/tell/sentence.h"
+#include "engine/method.h"
 
 enum { FLOW_COUNT = 6, SEARCH_COUNT = 256 };
 
@@ -62,6 +63,21 @@ static void print_flows(size_t count, const struct network_reach_flow flows[], d
         }
 }
 
+/* How quick a flood may rise before the method is no longer fit, taken at the flow of its peak (engine/method.h). */
+static void print_fit(const struct check *check, size_t index, const struct network_reach *reach)
+{
+    struct network_reach_steps steps;
+    struct network_reach_flow peak;
+    double peak_m3s = check->flows_m3s[FLOW_COUNT - 2];
+    if (network_reach_summary(check->network, index, 1.0, 1, &peak_m3s, &steps, &peak) != FW_OK)
+        return;
+    double least_rise_s = method_storage_least_rise_s(reach->length_m, peak.celerity_m_s, peak.diffusivity_m2_s);
+    printf(
+        "    fit for floods that rise to %.0f m3/s in %.0f min or more; in quicker ones this method's peak comes out "
+        "LATE and low\n",
+        peak_m3s, ceil(least_rise_s / 60.0));
+}
+
 static enum fw_status print_reach(const struct check *check, size_t index, struct fw_error *error)
 {
     static const char *const method_names[] = {[NETWORK_MUSKINGUM_CUNGE] = "muskingum-cunge",
@@ -78,6 +94,7 @@ static enum fw_status print_reach(const struct check *check, size_t index, struc
     printf("reach %s: %.0f m, slope %g, method %s, %zu cells of %.0f m, steps of %g s\n", reach->id, reach->length_m,
            reach->slope_m_per_m, method_names[reach->method], steps.cell_count, steps.cell_m, steps.time_step_s);
     print_flows(count, flows, bank_full);
+    print_fit(check, index, reach);
     return FW_OK;
 }
 
@@ -292,7 +309,8 @@ static enum fw_status print_all(struct check *check, bool *is_protected_out, str
     printf("\nThe future inflow is a stated set of runs (held, last rise carried forward, recession; roughness");
     for (size_t index = 0; index < settings->roughness_factor_count; index++)
         printf(" x%.2g", settings->roughness_factors[index]);
-    printf("), uncalibrated. 'forecast.members' is kept for later.\n%s\n", SENTENCE_CAUTION);
+    printf("), uncalibrated. 'forecast.members' is kept for later.\n");
+    command_print_caution();
     free(is_above);
     return status;
 }

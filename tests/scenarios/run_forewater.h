@@ -95,6 +95,20 @@ static inline void assert_says(const char *text, const char *expected)
         fail_msg("'%s' is not in:\n%.6000s", expected, text);
 }
 
+/* Wherever the lines are broken. */
+static inline void assert_says_in_lines(const char *text, const char *expected)
+{
+    char *unbroken = strdup(text);
+    assert_non_null(unbroken);
+    for (char *byte = unbroken; *byte != '\0'; byte++)
+        if (*byte == '\n')
+            *byte = ' ';
+    bool is_said = strstr(unbroken, expected) != NULL;
+    free(unbroken);
+    if (!is_said)
+        fail_msg("'%s' is not in:\n%.6000s", expected, text);
+}
+
 #define assert_near(actual, expected, tolerance) assert_near_at(actual, expected, tolerance, __FILE__, __LINE__)
 static inline void assert_near_at(double actual, double expected, double tolerance, const char *file, int line)
 {

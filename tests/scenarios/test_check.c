@@ -230,7 +230,7 @@ static void the_ford_cannot_be_protected_at_night_by_its_gauge_alone(void **stat
         free(block);
     }
     assert_null(strstr(run.output, "** at least one crossing"));
-    assert_says(run.output, caution);
+    assert_says_in_lines(run.output, caution);
     run_clear(&run);
 }
 
