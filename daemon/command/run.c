@@ -44,6 +44,8 @@ static enum fw_status read_settings(const char *file, const char *store_file, st
                                     struct fw_error *error)
 {
     enum fw_status status = command_read_settings(file, SETTINGS_FOR_RUN, settings_out, error);
+    if (status == FW_UNAVAILABLE)
+        status = FW_BAD_SETTINGS; /* missing or wrong: either way there is nothing to run on */
     if (status == FW_OK || store_file == NULL)
         return status;
     struct fw_error second = {.status = FW_OK};
@@ -72,6 +74,8 @@ enum fw_status command_run(int argument_count, char *arguments[], struct fw_erro
                                       options};
     int rest = 0;
     enum fw_status status = options_read(&line, argument_count, arguments, &rest, error);
+    if (status == FW_OK && rest < argument_count)
+        status = fw_error_set(error, FW_USAGE, "run: '%s' is not expected here", arguments[rest]);
     if (status != FW_OK)
         return status;
     struct clock clock = clock_real();

@@ -166,6 +166,8 @@ enum fw_status command_status(int argument_count, char *arguments[], struct fw_e
     struct settings *settings = NULL;
     int rest = 0;
     enum fw_status status = options_read(&line, argument_count, arguments, &rest, error);
+    if (status == FW_OK && rest < argument_count)
+        status = fw_error_set(error, FW_USAGE, "status: '%s' is not expected here", arguments[rest]);
     if (status == FW_OK)
         status =
             command_read_settings(option_text(&config, COMMAND_DEFAULT_CONFIG), SETTINGS_FOR_RUN, &settings, error);
