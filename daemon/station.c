@@ -8,7 +8,8 @@
 #include "daemon/tell/sentence.h"
 
 enum {
-    RESCAN_MS = 30000, /* folders without a watch, and those whose watch missed something */
+    RESCAN_MS = 30000,    /* folders without a watch, and those whose watch missed something */
+    FIRST_LOOK_MS = 5000, /* the most that the first cycle waits for files that settle and replies under way */
     LOADED_BEYOND_WARM_UP_S = 6 * 3600
 };
 
@@ -229,6 +230,7 @@ enum fw_status station_open(struct station *station, struct settings *settings, 
         return status;
     outbox_use_picture(station->outbox, station->picture);
     station->next_cycle_utc_s = clock_world_utc_s(&station->clock); /* one at once */
+    station->first_cycle_by_ms = clock_machine_ms() + FIRST_LOOK_MS;
     char from[WHEN_TEXT_SIZE];
     if (station->picture->away_from_utc_s != 0)
         journal_say(&station->journal, JOURNAL_NOTICE, "was away since %s; carrying on from the store",
@@ -373,10 +375,22 @@ static void drop_known_readings(struct station *station)
     station->news.reading_count = kept;
 }
 
+/*
+ * What came while nobody was here is read first: a cycle before that would find every gauge silent, and wake people
+ * for a silence that ends a moment later.
+ */
+static bool waits_for_first_look(const struct station *station)
+{
+    bool is_coming = station->next_look_ms >= 0 || http_feeds_under_way(station->http) > 0;
+    return station->cycle_count == 0 && is_coming && clock_machine_ms() < station->first_cycle_by_ms;
+}
+
 static bool is_cycle_wanted(const struct station *station, bool is_due)
 {
     if (station->clock.is_driven && http_feeds_under_way(station->http) > 0)
         return false; /* a driven world waits for the replies of this minute: one cycle, not two */
+    if (waits_for_first_look(station))
+        return false;
     return is_due || !news_is_empty(&station->news) || station->news.receipt_count > 0;
 }
 
@@ -422,7 +436,8 @@ int64_t station_wait_ms(const struct station *station, int64_t most_ms)
         int64_t try_utc_s = outbox_next_try_utc_s(station->outbox, station->picture);
         due_utc_s = poll_utc_s < due_utc_s ? poll_utc_s : due_utc_s;
         due_utc_s = try_utc_s < due_utc_s ? try_utc_s : due_utc_s;
-        int64_t until_ms = (due_utc_s - clock_world_utc_s(&station->clock)) * 1000;
+        int64_t until_ms = waits_for_first_look(station) ? station->first_cycle_by_ms - machine_ms
+                                                         : (due_utc_s - clock_world_utc_s(&station->clock)) * 1000;
         wait_ms = until_ms < wait_ms ? until_ms : wait_ms;
     }
     return wait_ms < 0 ? 0 : wait_ms;

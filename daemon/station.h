@@ -31,8 +31,9 @@ struct station {
     struct outbox *outbox;
     struct news news; /* come in, not yet taken */
     int64_t next_cycle_utc_s;
-    int64_t next_look_ms;   /* machine time at which a settling file may be ready; -1: none */
-    int64_t next_rescan_ms; /* machine time of the next look at every folder, watched or not */
+    int64_t next_look_ms;      /* machine time at which a settling file may be ready; -1: none */
+    int64_t next_rescan_ms;    /* machine time of the next look at every folder, watched or not */
+    int64_t first_cycle_by_ms; /* machine time: until then the first cycle waits for what is still coming in */
     size_t cycle_count;
     int64_t last_cycle_ms; /* machine time of the newest forecast that could be made */
     bool
