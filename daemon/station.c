@@ -41,25 +41,77 @@ static enum fw_status open_again(struct station *station, char moved_to[STORE_PA
 
 static enum fw_status load_picture(struct station *station, struct fw_error *error);
 
-/* A station that started without a store knows nothing of what stands in it: that comes first. Its own unsent messages go with it. */
+/* Whose word is newer counts; of two pieces of advice the one of an open thread, and of two such the more urgent. */
+static void merge_point(struct point_picture *loaded, const struct point_picture *memory)
+{
+    if (memory->road.at_utc_s > loaded->road.at_utc_s) {
+        loaded->road = memory->road;
+        loaded->crew_called_utc_s = memory->crew_called_utc_s;
+    }
+    if (memory->water.at_utc_s > loaded->water.at_utc_s)
+        loaded->water = memory->water;
+    if (memory->accepted_utc_s > loaded->accepted_utc_s) {
+        loaded->accepted_utc_s = memory->accepted_utc_s;
+        memcpy(loaded->accepted_by, memory->accepted_by, sizeof loaded->accepted_by);
+    }
+    bool is_memory_open = memory->advice.onset_utc_s != 0;
+    if (loaded->advice.onset_utc_s == 0 || (is_memory_open && memory->advice.level > loaded->advice.level)) {
+        loaded->advice = memory->advice;
+        loaded->told_number = memory->told_number;
+        loaded->is_outage_told = memory->is_outage_told;
+    }
+}
+
+static enum fw_status merge_readings(struct picture *loaded, const struct gauge_picture *memory)
+{
+    enum fw_status status = FW_OK;
+    for (size_t index = 0; index < memory->reading_count && status == FW_OK; index++) {
+        struct reading reading = memory->readings[index].reading;
+        bool was_new = false;
+        reading.entry = loaded->next_entry++;
+        status = picture_add_reading(loaded, &reading, &was_new);
+    }
+    return status;
+}
+
+/* Everything this station has learnt since it started goes on top of what the store knew before. Takes the messages. */
+static enum fw_status merge_memory(struct picture *loaded, struct picture *memory)
+{
+    enum fw_status status = FW_OK;
+    for (size_t gauge = 0; gauge < memory->gauge_count && status == FW_OK; gauge++)
+        status = merge_readings(loaded, &memory->gauges[gauge]);
+    for (size_t index = 0; index < memory->outbox_count && status == FW_OK; index++)
+        status = buffer_grow(&loaded->outbox, &loaded->outbox_capacity, loaded->outbox_count + index,
+                             sizeof *loaded->outbox);
+    if (status != FW_OK)
+        return status;
+    for (size_t point = 0; point < memory->point_count; point++)
+        merge_point(&loaded->points[point], &memory->points[point]);
+    for (size_t index = 0; index < memory->outbox_count; index++) {
+        struct message *message = &loaded->outbox[loaded->outbox_count++];
+        *message = memory->outbox[index];
+        message->entry = loaded->next_entry++;
+        memory->outbox[index].bulletin = NULL; /* the loaded picture's now */
+    }
+    if (memory->next_message_number > loaded->next_message_number)
+        loaded->next_message_number = memory->next_message_number;
+    return FW_OK;
+}
+
+/* A station that started without a store knows nothing of what stands in it; a store without a past has nothing to say. */
 static enum fw_status take_over_late(struct station *station, struct fw_error *error)
 {
     struct picture *memory = station->picture;
     station->picture = NULL;
     enum fw_status status = load_picture(station, error);
-    if (status != FW_OK) {
+    struct picture *loaded = station->picture;
+    bool has_past = status == FW_OK && loaded->newest_link[0] != '\0';
+    if (has_past && merge_memory(loaded, memory) != FW_OK)
+        status = fw_error_set(error, FW_NO_MEMORY, "no memory for the picture");
+    if (status != FW_OK || !has_past) {
+        picture_destroy(loaded);
         station->picture = memory;
         return status;
-    }
-    struct picture *loaded = station->picture;
-    for (size_t index = 0; index < memory->outbox_count; index++) {
-        struct message *message = &memory->outbox[index];
-        if (buffer_grow(&loaded->outbox, &loaded->outbox_capacity, loaded->outbox_count, sizeof *loaded->outbox) !=
-            FW_OK)
-            break;
-        loaded->outbox[loaded->outbox_count] = *message;
-        loaded->outbox[loaded->outbox_count++].entry = loaded->next_entry++;
-        message->bulletin = NULL; /* the loaded picture's now */
     }
     picture_destroy(memory);
     outbox_use_picture(station->outbox, loaded);
