@@ -18,7 +18,7 @@
 #define SMB2_SUPER_MAGIC 0xFE534D42
 #endif
 
-enum { HEADER_SIZE = 100, VERSION_AT = 60, APPLICATION_AT = 68 }; /* the SQLite file format, section 1.3 */
+enum { HEADER_SIZE = STORE_HEADER_SIZE, VERSION_AT = 60, APPLICATION_AT = 68 }; /* the file format, section 1.3 */
 
 static enum fw_status system_fault(const char *path, const char *what, struct fw_error *error)
 {
@@ -46,6 +46,12 @@ static enum store_file_kind kind_of_header(const unsigned char header[HEADER_SIZ
         return STORE_FILE_STRANGE;
     *version_out = big_endian_32(header + VERSION_AT);
     return *version_out != STORE_VERSION ? STORE_FILE_OTHER : STORE_FILE_OURS;
+}
+
+bool store_file_is_our_header(const unsigned char header[STORE_HEADER_SIZE])
+{
+    int version = 0;
+    return kind_of_header(header, &version) == STORE_FILE_OURS;
 }
 
 enum fw_status store_file_inspect(const char *file, enum store_file_kind *kind_out, int *version_out,

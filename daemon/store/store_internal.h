@@ -172,6 +172,8 @@ enum store_file_kind {
     STORE_FILE_STRANGE /* another program's, or its first page is damaged */
 };
 /* Reads the first bytes by hand: SQLite never opens a file that is not ours. version_out: of OURS and OTHER. */
+enum { STORE_HEADER_SIZE = 100 };
+bool store_file_is_our_header(const unsigned char header[STORE_HEADER_SIZE]);
 FW_MUST_CHECK enum fw_status store_file_inspect(const char *file, enum store_file_kind *kind_out, int *version_out,
                                                 struct fw_error *error);
 enum fw_status store_file_refuse_strange(const char *file, struct fw_error *error); /* FW_FOREIGN, said */

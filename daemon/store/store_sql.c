@@ -1,10 +1,12 @@
 /* SPDX-License-Identifier: MIT */
 #include "daemon/store/store_internal.h"
 
+#include <fcntl.h>
 #include <math.h>
 #include <stdio.h>
 #include <string.h>
 #include <sys/stat.h>
+#include <unistd.h>
 
 #define READING_COLUMNS "r.entry, r.gauge, r.source, r.observed, r.value, r.unit, r.received, r.\"by\""
 #define WORD_COLUMNS "entry, id, kind, subject, value, unit, is_wet, road, text, \"by\", at, received"
@@ -252,6 +254,33 @@ static bool still_there(const struct store *store, const char *suffix, ino_t ino
     return stat(path, &there) == 0 && there.st_dev == store->device && there.st_ino == inode;
 }
 
+/*
+ * Overwritten in place a file is still the same file, and SQLite would go on from its cache without a look at it. Read
+ * through SQLite's own descriptor: to open and close another would drop the locks that this process has on the file.
+ */
+static bool has_our_header(const struct store *store)
+{
+    unsigned char header[STORE_HEADER_SIZE];
+    sqlite3_file *file = NULL;
+    return sqlite3_file_control(store->db, "main", SQLITE_FCNTL_FILE_POINTER, (void *)&file) == SQLITE_OK &&
+           file != NULL && file->pMethods != NULL &&
+           file->pMethods->xRead(file, header, sizeof header, 0) == SQLITE_OK && store_file_is_our_header(header);
+}
+
+/* Empty, or it begins as the file format says (section 4.1). SQLite has no locks on it. */
+static bool has_log_header(const struct store *store)
+{
+    char path[STORE_PATH_SIZE];
+    unsigned char magic[4];
+    snprintf(path, sizeof path, "%s-wal", store->file);
+    int log = open(path, O_RDONLY | O_CLOEXEC | O_NONBLOCK);
+    ssize_t length = log >= 0 ? pread(log, magic, sizeof magic, 0) : -1;
+    if (log >= 0)
+        close(log);
+    return length == 0 || (length == (ssize_t)sizeof magic && magic[0] == 0x37 && magic[1] == 0x7f &&
+                           magic[2] == 0x06 && (magic[3] & 0xfe) == 0x82);
+}
+
 enum fw_status store_check_writable(struct store *store, struct fw_error *error)
 {
     if (store->access != STORE_WRITE)
@@ -259,9 +288,13 @@ enum fw_status store_check_writable(struct store *store, struct fw_error *error)
     if (store->db == NULL || store->must_reopen)
         return fw_error_set(error, FW_IO, "%s: not written: it failed before and has not been opened anew",
                             store->file);
-    if (still_there(store, "", store->inode) && still_there(store, "-wal", store->log_inode))
+    bool is_there = still_there(store, "", store->inode) && still_there(store, "-wal", store->log_inode);
+    if (is_there && has_our_header(store) && has_log_header(store))
         return FW_OK;
     store->must_reopen = true;
+    if (is_there)
+        return fw_error_set(error, FW_DAMAGED,
+                            "%s: the store file or its log was overwritten under the running daemon", store->file);
     return fw_error_set(
         error, FW_IO, "%s: the store file or its log was removed or replaced under the running daemon", store->file);
 }
