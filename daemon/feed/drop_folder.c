@@ -286,6 +286,10 @@ static void heed_event(struct drop_folder *folder, const struct inotify_event *e
         entry = entry_add(folder, event->name);
     if (entry == NULL || entry->state == ENTRY_TAKEN)
         return; /* the listing will find it; a taken one is looked at when it is settled */
+    struct stat about;
+    bool is_there = folder->fd >= 0 && fstatat(folder->fd, event->name, &about, AT_SYMLINK_NOFOLLOW) == 0;
+    if (entry->state == ENTRY_LEFT && is_there && is_left_as_it_was(entry, &about))
+        return; /* rewritten by ourselves */
     entry->state = ENTRY_SETTLING;
     entry->was_renamed_in = true;
 }
@@ -639,6 +643,21 @@ static enum fw_status move_away(struct drop_folder *folder, struct entry *entry,
     }
     entry_remove(folder, entry);
     return status;
+}
+
+enum fw_status drop_folder_rewrite(struct drop_folder *folder, const char *name, const char *bytes, size_t length,
+                                   struct fw_error *error)
+{
+    struct stat about;
+    struct entry *entry = entry_find(folder, name);
+    if (entry == NULL || folder->fd < 0)
+        return fw_error_set(error, FW_IO, "%s/%s: is not there any more", folder->path, name);
+    if (fstatat(folder->fd, name, &about, AT_SYMLINK_NOFOLLOW) != 0 || !is_same_file(entry, &about))
+        return FW_OK; /* another one has come under its name, and will be handed out */
+    enum fw_status status = safe_file_write(folder->fd, name, bytes, length, error);
+    if (status == FW_OK && fstatat(folder->fd, name, &about, AT_SYMLINK_NOFOLLOW) == 0)
+        entry_identify(entry, &about);
+    return status == FW_OK ? FW_OK : fw_error_prefix(error, status, "%s", folder->path);
 }
 
 enum fw_status drop_folder_settle(struct drop_folder *folder, const struct news_receipt *receipt, bool was_stored,

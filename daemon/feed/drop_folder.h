@@ -63,6 +63,10 @@ bool drop_folder_is_full(const struct drop_folder *folder);
 /* A file that was handed out but could not be kept (no memory): the next scan hands it out again. */
 void drop_folder_put_back(struct drop_folder *folder, const char *name);
 
+/* Other bytes for a file that was handed out, written whole or not at all; it is not handed out again for that. */
+FW_MUST_CHECK enum fw_status drop_folder_rewrite(struct drop_folder *folder, const char *name, const char *bytes,
+                                                 size_t length, struct fw_error *error);
+
 /* The receipt by which a file handed out goes to done/ (or away), or with is_bad to bad/; with its reason or NULL. */
 FW_MUST_CHECK enum fw_status drop_folder_add_receipt(const struct drop_folder *folder, const char *name, bool is_bad,
                                                      const char *reason, void *owner, struct news *news);

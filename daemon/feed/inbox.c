@@ -100,12 +100,45 @@ enum fw_status inbox_scan(struct inbox *inbox, int64_t received_utc_s, struct ne
     return status == FW_NOTHING_NEW ? FW_OK : status;
 }
 
+static const struct word *word_of_receipt(const struct news *news, const struct news_receipt *receipt)
+{
+    const char *slash = strrchr(receipt->from, '/');
+    const char *name = slash != NULL ? slash + 1 : receipt->from;
+    for (size_t i = 0; i < news->word_count; i++) {
+        size_t length = strlen(news->words[i].id);
+        if (strncmp(name, news->words[i].id, length) == 0 && strcmp(name + length, ".word") == 0)
+            return &news->words[i];
+    }
+    return NULL;
+}
+
+/*
+ * A word that could not be stored is taken again by the next life. It was said now: with its time in the file, it is not
+ * taken for a newer one than those that come between.
+ */
+static enum fw_status stamp(struct inbox *inbox, const struct word *word, struct fw_error *error)
+{
+    struct text json = {0};
+    char name[FACT_ID_SIZE + 8];
+    snprintf(name, sizeof name, "%s.word", word->id);
+    enum fw_status status = word_write_json(word, true, &json);
+    if (status != FW_OK)
+        status = fw_error_set(error, status, "inbox: %s: out of memory", name);
+    if (status == FW_OK)
+        status = drop_folder_rewrite(inbox->drop, name, json.bytes, json.length, error);
+    text_clear(&json);
+    return status;
+}
+
 enum fw_status inbox_settle(struct inbox *inbox, const struct news *news, bool was_stored, struct fw_error *error)
 {
     enum fw_status status = FW_OK;
     for (size_t i = 0; i < news->receipt_count; i++) {
         if (news->receipts[i].owner != inbox)
             continue;
+        const struct word *word = was_stored ? NULL : word_of_receipt(news, &news->receipts[i]);
+        enum fw_status stamped = word != NULL ? stamp(inbox, word, error) : FW_OK;
+        status = stamped != FW_OK ? stamped : status;
         enum fw_status settled = drop_folder_settle(inbox->drop, &news->receipts[i], was_stored, error);
         status = settled != FW_OK ? settled : status;
     }
