@@ -66,6 +66,8 @@ static void forget_old_readings(struct gauge_picture *gauge, int64_t before_utc_
         old++;
     if (old == gauge->reading_count && old > 0)
         old--; /* the newest is always kept: it says since when there has been silence */
+    if (old == 0)
+        return; /* there may be no array yet */
     gauge->reading_count -= old;
     memmove(gauge->readings, gauge->readings + old, gauge->reading_count * sizeof *gauge->readings);
 }
