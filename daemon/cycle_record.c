@@ -52,15 +52,26 @@ static enum fw_status thin_forecast(const struct cycle *cycle, int64_t now_utc_s
     return FW_OK;
 }
 
-/* The same message on another try, in another life or on a replay has the same id. */
-static enum fw_status identify_message(const struct settings *settings, const struct decision *decision,
-                                       struct message *message)
+/* How many earlier messages were made for the same crossing and channel in the same second, as two words may ask for. */
+static size_t count_twins(const struct picture *picture, const struct message *message)
+{
+    size_t count = 0;
+    for (const struct message *other = picture->outbox; other < message; other++)
+        count += other->point == message->point && other->channel == message->channel &&
+                 other->made_utc_s == message->made_utc_s;
+    return count;
+}
+
+/* The same message on another try, in another life or on a replay has the same id, and no other message has it. */
+static enum fw_status identify_message(const struct settings *settings, const struct picture *picture,
+                                       const struct decision *decision, struct message *message)
 {
     char text[512];
-    int length = snprintf(text, sizeof text, "%s|%s|%s|%lld|%lld|%lld|%s", settings->district_name,
-                          settings->points[decision->point].id, advice_level_name(decision->after.level),
-                          (long long)decision->after.onset_utc_s, (long long)message->made_utc_s,
-                          (long long)message->number, settings->channels[message->channel].id);
+    int length =
+        snprintf(text, sizeof text, "%s|%s|%s|%lld|%lld|%lld|%s|%zu", settings->district_name,
+                 settings->points[decision->point].id, advice_level_name(decision->after.level),
+                 (long long)decision->after.onset_utc_s, (long long)message->made_utc_s, (long long)message->number,
+                 settings->channels[message->channel].id, count_twins(picture, message));
     return digest_sha256(text, (size_t)length, message->id);
 }
 
@@ -95,7 +106,7 @@ static enum fw_status add_message(struct cycle *cycle, struct delta *delta, cons
         return FW_NO_MEMORY;
     next->outbox_count++;
     next->next_entry++;
-    return identify_message(cycle->settings, decision, message);
+    return identify_message(cycle->settings, next, decision, message);
 }
 
 /* Who is told first: the first role of the roster, or every channel where there is no roster. */
