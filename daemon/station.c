@@ -427,6 +427,22 @@ static void drop_known_readings(struct station *station)
     station->news.reading_count = kept;
 }
 
+/* A word file that was not removed, or that another program hands in twice. Its receipt stays, so that it goes away. */
+static void drop_known_words(struct station *station)
+{
+    size_t kept = 0;
+    struct fw_error ignored = {.status = FW_OK}; /* a store that cannot say is no reason to lose a word */
+    for (size_t index = 0; index < station->news.word_count; index++) {
+        const struct word *word = &station->news.words[index];
+        bool is_known = false;
+        bool is_asked = !station->picture->is_store_failing &&
+                        store_has_word(station->store, word->id, &is_known, &ignored) == FW_OK;
+        if (!is_asked || !is_known)
+            station->news.words[kept++] = *word;
+    }
+    station->news.word_count = kept;
+}
+
 /*
  * What came while nobody was here is read first: a cycle before that would find every gauge silent, and wake people
  * for a silence that ends a moment later.
@@ -455,6 +471,7 @@ void station_turn(struct station *station)
         scan_folders(station, now_utc_s);
     }
     drop_known_readings(station);
+    drop_known_words(station);
     bool is_due = !station->is_paused && is_cycle_due(station, now_utc_s);
     if (is_cycle_wanted(station, is_due)) {
         if (is_due)
