@@ -7,6 +7,7 @@
 
 #include <cmocka.h>
 
+#include <cjson/cJSON.h>
 #include <sysexits.h>
 
 #include "tests/scenarios/run_forewater.h"
@@ -402,6 +403,37 @@ static void the_schema_and_the_table_of_keys_are_those_of_the_tree(void **state)
     }
 }
 
+static double number_of(const cJSON *object, const char *name)
+{
+    const cJSON *item = cJSON_GetObjectItemCaseSensitive(object, name);
+    assert_true(cJSON_IsNumber(item));
+    return item->valuedouble;
+}
+
+static void the_same_facts_come_as_json(void **state)
+{
+    (void)state;
+    struct run run = RUN(NULL, "check", "--json", "--config", DEMO);
+    assert_run(&run, EX_OK);
+    cJSON *object = cJSON_Parse(run.output);
+    assert_non_null(object);
+    assert_string_equal(cJSON_GetObjectItemCaseSensitive(object, "schema")->valuestring, "forewater.check.1");
+    assert_string_equal(cJSON_GetObjectItemCaseSensitive(object, "caution")->valuestring, caution);
+    const cJSON *reach = cJSON_GetArrayItem(cJSON_GetObjectItemCaseSensitive(object, "reaches"), 0);
+    const cJSON *flows = cJSON_GetObjectItemCaseSensitive(reach, "flows");
+    assert_int_equal(cJSON_GetArraySize(flows), 7); /* six, and bank full among them */
+    for (const cJSON *flow = flows->child; flow != NULL; flow = flow->next)
+        assert_near(number_of(flow, "celerity_m_s") * number_of(flow, "travel_time_s"), 9400.0, 1e-6);
+    const cJSON *ford = cJSON_GetArrayItem(cJSON_GetObjectItemCaseSensitive(object, "points"), 0);
+    assert_near(number_of(ford, "need_night_s"), 4200.0, 1e-9);
+    const cJSON *lead = cJSON_GetArrayItem(cJSON_GetObjectItemCaseSensitive(ford, "gauges"), 0);
+    assert_near(number_of(lead, "lead_slow_rise_s"),
+                number_of(lead, "closing_mark_travel_s") - number_of(lead, "reading_and_delivery_s"), 1e-6);
+    assert_near(number_of(lead, "lead_slow_rise_s"), 57.0 * 60.0, 60.0); /* as the text says */
+    cJSON_Delete(object);
+    run_clear(&run);
+}
+
 #define TEST(name) cmocka_unit_test_setup_teardown(name, open_scratch, close_scratch)
 
 int main(void)
@@ -417,6 +449,7 @@ int main(void)
         TEST(what_this_version_cannot_do_is_a_fault),
         TEST(a_file_that_is_no_configuration_is_told_with_its_line),
         TEST(a_bad_command_line_is_a_usage_fault_and_a_missing_file_unavailable),
+        TEST(the_same_facts_come_as_json),
         TEST(the_schema_and_the_table_of_keys_are_those_of_the_tree),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);

@@ -1,0 +1,114 @@
+/* SPDX-License-Identifier: MIT */
+#include "daemon/command/check_json.h"
+
+#include <cjson/cJSON.h>
+#include <math.h>
+#include <stdio.h>
+#include <stdlib.h>
+
+#include "daemon/tell/sentence.h"
+
+/* null for what is not known */
+static void add(cJSON *object, const char *name, double value)
+{
+    if (isfinite(value))
+        cJSON_AddNumberToObject(object, name, value);
+    else
+        cJSON_AddNullToObject(object, name);
+}
+
+static cJSON *add_object(cJSON *array)
+{
+    cJSON *object = cJSON_CreateObject();
+    cJSON_AddItemToArray(array, object);
+    return object;
+}
+
+static void add_reach(cJSON *array, const struct check_reach *found)
+{
+    cJSON *object = add_object(array);
+    cJSON_AddStringToObject(object, "id", found->reach->id);
+    cJSON_AddStringToObject(object, "method", found->method);
+    add(object, "length_m", found->reach->length_m);
+    add(object, "slope_m_per_m", found->reach->slope_m_per_m);
+    add(object, "cells", (double)found->steps.cell_count);
+    add(object, "cell_m", found->steps.cell_m);
+    add(object, "time_step_s", found->steps.time_step_s);
+    add(object, "bank_full_m3s", found->bank_full_m3s);
+    add(object, "peak_m3s", found->peak_m3s);
+    add(object, "fit_for_rises_longer_than_s", found->least_rise_s);
+    cJSON *flows = cJSON_AddArrayToObject(object, "flows");
+    for (size_t index = 0; index < found->flow_count; index++) {
+        cJSON *flow = add_object(flows);
+        add(flow, "discharge_m3s", found->flows[index].discharge_m3s);
+        add(flow, "depth_m", found->flows[index].depth_m);
+        add(flow, "celerity_m_s", found->flows[index].celerity_m_s);
+        add(flow, "travel_time_s", found->flows[index].travel_time_s);
+        add(flow, "courant_number", found->flows[index].courant_number);
+    }
+}
+
+static void add_lead(cJSON *array, const char *gauge_id, const struct check_lead *lead)
+{
+    cJSON *object = add_object(array);
+    cJSON_AddStringToObject(object, "gauge", gauge_id);
+    add(object, "closing_mark_m3s", lead->closing_m3s);
+    add(object, "closing_mark_travel_s", lead->closing_travel_s);
+    add(object, "fastest_wave_m3s", lead->fastest_m3s);
+    add(object, "fastest_wave_travel_s", lead->fastest_travel_s);
+    add(object, "reading_and_delivery_s", lead->lag_s);
+    add(object, "lead_slow_rise_s", lead->slow_rise_s);
+    add(object, "lead_fastest_rise_s", lead->fastest_rise_s);
+}
+
+static void add_point(cJSON *array, const struct check_facts *facts, size_t index, bool is_above[])
+{
+    const struct settings *settings = facts->settings;
+    const struct settings_point *point = &settings->points[index];
+    cJSON *object = add_object(array);
+    cJSON_AddStringToObject(object, "id", point->id);
+    cJSON_AddStringToObject(object, "closing_mark", point->marks[point->closing_mark].name);
+    add(object, "closing_mark_m", point->marks[point->closing_mark].depth_m);
+    add(object, "need_day_s", point->has_crew ? point->policy.crew_day_s + point->policy.margin_s : NAN);
+    add(object, "need_night_s", point->has_crew ? point->policy.crew_night_s + point->policy.margin_s : NAN);
+    add(object, "triggers", (double)point->trigger_count);
+    cJSON *leads = cJSON_AddArrayToObject(object, "gauges");
+    settings_gauges_above(settings, index, is_above);
+    for (size_t gauge = 0; gauge < settings->gauge_count; gauge++) {
+        struct check_lead lead;
+        if (!is_above[gauge])
+            continue;
+        check_facts_lead(facts, gauge, index, &lead);
+        add_lead(leads, settings->gauges[gauge].id, &lead);
+    }
+}
+
+enum fw_status check_json_print(const struct check_facts *facts, struct fw_error *error)
+{
+    const struct settings *settings = facts->settings;
+    enum fw_status status = FW_OK;
+    cJSON *object = cJSON_CreateObject();
+    bool *is_above = calloc(settings->gauge_count + 1, sizeof *is_above);
+    cJSON_AddStringToObject(object, "schema", "forewater.check.1");
+    cJSON_AddStringToObject(object, "settings", settings->digest);
+    cJSON_AddStringToObject(object, "caution", SENTENCE_CAUTION);
+    cJSON *reaches = cJSON_AddArrayToObject(object, "reaches");
+    cJSON *points = cJSON_AddArrayToObject(object, "points");
+    for (size_t index = 0; index < settings->river.reach_count && status == FW_OK; index++) {
+        struct check_reach found;
+        status = check_facts_reach(facts, index, &found, error);
+        if (status == FW_OK)
+            add_reach(reaches, &found);
+    }
+    for (size_t index = 0; index < settings->point_count && is_above != NULL; index++)
+        add_point(points, facts, index, is_above);
+    char *text = status == FW_OK && is_above != NULL ? cJSON_Print(object) : NULL;
+    if (text != NULL)
+        printf("%s\n", text);
+    else if (status == FW_OK)
+        status = fw_error_set(error, FW_NO_MEMORY, "no memory");
+    cJSON_free(text);
+    cJSON_Delete(object);
+    free(is_above);
+    return status;
+}
