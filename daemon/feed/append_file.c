@@ -73,14 +73,28 @@ static enum fw_status place_print(const struct place *place, struct text *text)
     return text_status(text);
 }
 
+/* A whole number and the sign that must follow it, at *cursor, which is moved past both. */
+static bool take_number(const char **cursor, char follows, uint64_t *value_out)
+{
+    char *end;
+    errno = 0;
+    if (**cursor < '0' || **cursor > '9')
+        return false;
+    *value_out = strtoull(*cursor, &end, 10);
+    if (errno != 0 || *end != follows)
+        return false;
+    *cursor = end + 1;
+    return true;
+}
+
 static bool place_read(const char *text, struct place *place_out)
 {
     struct place place;
-    char end;
-    if (sscanf(text, "%" SCNd64 " %" SCNu64 " %" SCNu64 " %" SCNu64 "%c", &place.position, &place.number,
-               &place.line_count, &place.tail, &end) != 5 ||
-        end != '\n' || place.position < 0)
+    uint64_t position;
+    if (!take_number(&text, ' ', &position) || position > INT64_MAX || !take_number(&text, ' ', &place.number) ||
+        !take_number(&text, ' ', &place.line_count) || !take_number(&text, '\n', &place.tail))
         return false;
+    place.position = (int64_t)position;
     *place_out = place;
     return true;
 }

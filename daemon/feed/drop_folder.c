@@ -319,7 +319,7 @@ enum fw_status drop_folder_begin(struct drop_folder *folder, int64_t machine_now
     if (status != FW_OK)
         return status;
     heed_events(folder);
-    if (!folder->is_listing) {
+    if (!folder->is_listing && folder->listing != NULL) {
         rewinddir(folder->listing);
         folder->is_listing = true;
         folder->pass++;

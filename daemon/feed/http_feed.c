@@ -459,22 +459,22 @@ enum fw_status http_feeds_open(const struct settings *settings, sd_event *event,
                                http_feeds_arrived *arrived, void *context, struct http_feeds **feeds_out,
                                struct fw_error *error)
 {
-    struct http_feeds *feeds = calloc(1, sizeof *feeds);
-    if (feeds == NULL)
-        return fw_error_set(error, FW_NO_MEMORY, "HTTP feeds: out of memory");
     size_t count = count_http_feeds(settings);
+    struct http_feeds *feeds = calloc(1, sizeof *feeds);
+    struct fetched *all = calloc(count + 1, sizeof *all);
+    if (feeds == NULL || all == NULL) {
+        free(feeds);
+        free(all);
+        return fw_error_set(error, FW_NO_MEMORY, "HTTP feeds: out of memory");
+    }
     *feeds = (struct http_feeds){.settings = settings,
                                  .event = event,
                                  .news = news,
                                  .arrived = arrived,
                                  .context = context,
                                  .limits = http_limits_usual(),
-                                 .all = calloc(count + 1, sizeof *feeds->all)};
-    enum fw_status status = FW_OK;
-    if (feeds->all == NULL)
-        status = fw_error_set(error, FW_NO_MEMORY, "HTTP feeds: out of memory");
-    if (status == FW_OK && count > 0)
-        status = open_curl(feeds, error);
+                                 .all = all};
+    enum fw_status status = count > 0 ? open_curl(feeds, error) : FW_OK;
     if (status != FW_OK) {
         http_feeds_close(feeds);
         return status;

@@ -40,7 +40,8 @@ static int64_t interval_s(const struct http_source *source)
 
 bool http_source_is_due(const struct http_source *source, int64_t now_utc_s)
 {
-    int64_t longest_s = interval_s(source) > 2 * LONGEST_WAIT_S ? interval_s(source) : 2 * LONGEST_WAIT_S;
+    int64_t longest_s = (int64_t)2 * LONGEST_WAIT_S;
+    longest_s = interval_s(source) > longest_s ? interval_s(source) : longest_s;
     return source->due_utc_s <= now_utc_s || source->due_utc_s - now_utc_s > longest_s;
 }
 

@@ -42,14 +42,14 @@ static void describe(const cJSON *item, char text[SHOWN_BYTES + 16])
 
 static bool read_time(const struct reader *reader, const cJSON *item, int64_t *utc_s_out, char *why, size_t why_size)
 {
-    if (cJSON_IsString(item)) {
+    if (item != NULL && cJSON_IsString(item)) {
         struct fw_error error = {0};
         if (when_parse(item->valuestring, reader->zone, utc_s_out, &error) == FW_OK)
             return true;
         snprintf(why, why_size, "%.300s", error.text);
         return false;
     }
-    if (cJSON_IsNumber(item)) {
+    if (item != NULL && cJSON_IsNumber(item)) {
         double seconds = item->valuedouble > MILLISECONDS_ABOVE ? item->valuedouble / 1000.0 : item->valuedouble;
         if (seconds >= 0.0 && seconds <= LAST_MOMENT_S) { /* false for what is not a number, too */
             *utc_s_out = (int64_t)floor(seconds);
@@ -64,11 +64,11 @@ static bool read_time(const struct reader *reader, const cJSON *item, int64_t *u
 
 static bool read_value(const cJSON *item, double *value_out, char *why, size_t why_size)
 {
-    if (cJSON_IsNumber(item) && isfinite(item->valuedouble)) {
+    if (item != NULL && cJSON_IsNumber(item) && isfinite(item->valuedouble)) {
         *value_out = item->valuedouble;
         return true;
     }
-    if (cJSON_IsString(item) && quantity_read_number(item->valuestring, value_out))
+    if (item != NULL && cJSON_IsString(item) && quantity_read_number(item->valuestring, value_out))
         return true;
     char shown[SHOWN_BYTES + 16];
     describe(item, shown);
@@ -143,7 +143,7 @@ static enum fw_status take_elements(struct reader *reader, const cJSON *containe
 static enum fw_status parse_reply(const char *bytes, size_t length, cJSON **root_out, struct fw_error *error)
 {
     size_t at = length >= 3 && memcmp(bytes, "\xEF\xBB\xBF", 3) == 0 ? 3 : 0;
-    while (at < length && memchr(" \t\r\n", bytes[at], 4) != NULL)
+    while (at < length && json_text_is_blank(bytes[at]))
         at++;
     if (at == length)
         return fw_error_set(error, FW_BAD_INPUT, "an empty reply where JSON was expected");

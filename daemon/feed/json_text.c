@@ -31,9 +31,14 @@ static bool take(struct scan *scan, char wanted)
     return is_there;
 }
 
+bool json_text_is_blank(char byte)
+{
+    return byte == ' ' || byte == '\t' || byte == '\r' || byte == '\n';
+}
+
 static void skip_blanks(struct scan *scan)
 {
-    while (scan->at < scan->end && memchr(" \t\r\n", *scan->at, 4) != NULL)
+    while (scan->at < scan->end && json_text_is_blank(*scan->at))
         scan->at++;
 }
 

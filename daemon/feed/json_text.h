@@ -3,6 +3,7 @@
 #ifndef FOREWATER_DAEMON_FEED_JSON_TEXT_H
 #define FOREWATER_DAEMON_FEED_JSON_TEXT_H
 
+#include <stdbool.h>
 #include <stddef.h>
 
 #include <cjson/cJSON.h>
@@ -18,6 +19,8 @@ enum { JSON_TEXT_DEPTH = 32 };
  */
 FW_MUST_CHECK enum fw_status json_text_parse(const char *bytes, size_t length, cJSON **root_out,
                                              struct fw_error *error);
+
+bool json_text_is_blank(char byte); /* between the values of JSON */
 
 /* What a JSON Pointer leads to ("" is `from` itself); NULL: nothing is there, or it is no pointer. */
 const cJSON *json_text_at(const cJSON *from, const char *pointer);

@@ -50,18 +50,12 @@ static void list_points(const struct settings *settings, struct text *list)
         text_add(list, "%s%s", i > 0 ? ", " : "", settings->points[i].id);
 }
 
-static const struct settings_gauge *find_gauge(const struct settings *settings, const char *id)
-{
-    size_t index = settings_gauge_index(settings, id);
-    return index != SETTINGS_NONE ? &settings->gauges[index] : NULL;
-}
-
 static enum fw_status check_gauge_word(const struct settings *settings, const struct word *word,
                                        struct fw_error *error)
 {
     double value_si;
-    const struct settings_gauge *gauge = find_gauge(settings, word->subject);
-    if (gauge == NULL) {
+    size_t index = settings_gauge_index(settings, word->subject);
+    if (index == SETTINGS_NONE) {
         struct text known = {0};
         list_gauges(settings, &known);
         fw_error_set(error, FW_BAD_INPUT, "'%s' is not a gauge; expected one of: %.600s", word->subject,
@@ -71,9 +65,9 @@ static enum fw_status check_gauge_word(const struct settings *settings, const st
     }
     if (!isfinite(word->value))
         return fw_error_set(error, FW_BAD_INPUT, "a reading of '%s' needs a number", word->subject);
-    if (quantity_to_si(word->value, word->unit, gauge->measures, &value_si) != FW_OK)
+    if (quantity_to_si(word->value, word->unit, settings->gauges[index].measures, &value_si) != FW_OK)
         return fw_error_set(error, FW_BAD_INPUT, "'%s' is not a unit of gauge '%s'; expected %s", word->unit,
-                            word->subject, quantity_known_units(gauge->measures));
+                            word->subject, quantity_known_units(settings->gauges[index].measures));
     return FW_OK;
 }
 
@@ -255,11 +249,12 @@ static enum fw_status parse_reading(const struct settings *settings, const struc
     if (!quantity_read_number(given->first[2], &word->value))
         return fw_error_set(error, FW_USAGE, "'%s' is not a number with a decimal point, as 2.31", given->first[2]);
     enum fw_status status = keep_text(word->subject, sizeof word->subject, given->first[1], "the gauge", error);
-    const struct settings_gauge *gauge = status == FW_OK ? find_gauge(settings, word->subject) : NULL;
-    if (gauge != NULL && unit == NULL)
-        unit = quantity_default_unit(gauge->measures);
-    return status == FW_OK && unit != NULL ? keep_text(word->unit, sizeof word->unit, unit, "the unit", error)
-                                           : status;
+    if (status != FW_OK)
+        return status;
+    size_t index = settings_gauge_index(settings, word->subject);
+    if (index != SETTINGS_NONE && unit == NULL)
+        unit = quantity_default_unit(settings->gauges[index].measures);
+    return unit != NULL ? keep_text(word->unit, sizeof word->unit, unit, "the unit", error) : status;
 }
 
 static enum fw_status parse_seen(const struct arguments *given, struct word *word, struct fw_error *error)
@@ -333,7 +328,7 @@ static bool last_clock_time(const struct settings *settings, const char *clock, 
     for (int days_back = 0; days_back <= 1; days_back++) {
         char local[WHEN_TEXT_SIZE], text[WHEN_TEXT_SIZE];
         int64_t utc_s;
-        when_rfc3339_local(&settings->zone, now_utc_s - days_back * 86400, local);
+        when_rfc3339_local(&settings->zone, now_utc_s - (int64_t)days_back * 86400, local);
         snprintf(text, sizeof text, "%.10sT%s", local, clock);
         if (when_parse(text, &settings->zone, &utc_s, NULL) == FW_OK && utc_s <= now_utc_s) {
             *utc_s_out = utc_s;
@@ -369,7 +364,7 @@ enum fw_status word_parse(const struct settings *settings, int argument_count, c
         status = parse_kind(settings, &line, &given, &word, error);
     if (status == FW_OK && line.by == NULL)
         status = fw_error_set(error, FW_USAGE, "--by is missing; expected a role, as --by 'roads foreman'");
-    if (status == FW_OK)
+    else if (status == FW_OK)
         status = keep_text(word.by, sizeof word.by, line.by, "the role", error);
     if (status == FW_OK)
         status = parse_time(settings, line.at, now_utc_s, &word.at_utc_s, error);
