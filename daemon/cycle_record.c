@@ -52,7 +52,7 @@ static enum fw_status thin_forecast(const struct cycle *cycle, int64_t now_utc_s
     return FW_OK;
 }
 
-/* How many earlier messages were made for the same crossing and channel in the same second, as two words may ask for. */
+/* Messages made before it for the same crossing and channel in the same second, as two words may ask for. */
 static size_t count_twins(const struct picture *picture, const struct message *message)
 {
     size_t count = 0;

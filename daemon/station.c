@@ -74,7 +74,7 @@ static enum fw_status merge_readings(struct picture *loaded, const struct gauge_
     return status;
 }
 
-/* Everything this station has learnt since it started goes on top of what the store knew before. Takes the messages. */
+/* All that was learnt since the start goes on top of what the store knew before. Takes the messages. */
 static enum fw_status merge_memory(struct picture *loaded, struct picture *memory)
 {
     enum fw_status status = FW_OK;
@@ -98,7 +98,7 @@ static enum fw_status merge_memory(struct picture *loaded, struct picture *memor
     return FW_OK;
 }
 
-/* A station that started without a store knows nothing of what stands in it; a store without a past has nothing to say. */
+/* Started without a store, the station knows nothing of what stands in it; one without a past has nothing to say. */
 static enum fw_status take_over_late(struct station *station, struct fw_error *error)
 {
     struct picture *memory = station->picture;
@@ -302,7 +302,7 @@ void station_close(struct station *station)
     station->event = sd_event_unref(station->event);
 }
 
-/* --- one turn ---------------------------------------------------------------------------------------------------- */
+/* --- one turn --------------------------------------------------------------------------------------------------- */
 
 static void scan_folders(struct station *station, int64_t now_utc_s)
 {
@@ -427,7 +427,7 @@ static void drop_known_readings(struct station *station)
     station->news.reading_count = kept;
 }
 
-/* A word file that was not removed, or that another program hands in twice. Its receipt stays, so that it goes away. */
+/* From a word file that was not removed, or is handed in twice. Its receipt stays, so that the file goes away. */
 static void drop_known_words(struct station *station)
 {
     size_t kept = 0;
@@ -512,7 +512,7 @@ int64_t station_wait_ms(const struct station *station, int64_t most_ms)
     return wait_ms < 0 ? 0 : wait_ms;
 }
 
-/* --- reload ------------------------------------------------------------------------------------------------------ */
+/* --- reload ----------------------------------------------------------------------------------------------------- */
 
 static const char *removed_open_thread(const struct station *station, const struct settings *wanted)
 {

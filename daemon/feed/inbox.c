@@ -113,8 +113,8 @@ static const struct word *word_of_receipt(const struct news *news, const struct 
 }
 
 /*
- * A word that could not be stored is taken again by the next life. It was said now: with its time in the file, it is not
- * taken for a newer one than those that come between.
+ * A word that could not be stored is taken again by the next life. It was said now: with its time in the file, it is
+ * not taken for a newer one than those that come between.
  */
 static enum fw_status stamp(struct inbox *inbox, const struct word *word, struct fw_error *error)
 {

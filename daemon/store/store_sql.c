@@ -255,8 +255,8 @@ static bool still_there(const struct store *store, const char *suffix, ino_t ino
 }
 
 /*
- * Overwritten in place a file is still the same file, and SQLite would go on from its cache without a look at it. Read
- * through SQLite's own descriptor: to open and close another would drop the locks that this process has on the file.
+ * Overwritten in place a file is still the same file, and SQLite would go on from its cache without a look at it.
+ * Read through SQLite's own descriptor: to open and close another would drop this process's locks on the file.
  */
 static bool has_our_header(const struct store *store)
 {

@@ -453,7 +453,7 @@ static inline int work_open(void **state)
     if (work == NULL)
         return -1;
     work->driver = -1;
-    snprintf(work->folder, sizeof work->folder, "/tmp/fw-scenario-XXXXXX");
+    snprintf(work->folder, sizeof work->folder, "/tmp/forewater-run-XXXXXX");
     snprintf(work->executable, sizeof work->executable, "%s", FW_EXECUTABLE);
     if (mkdtemp(work->folder) == NULL) {
         free(work);

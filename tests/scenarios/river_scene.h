@@ -47,7 +47,7 @@ static const char scene_config[] =
     "  \"roster\": [ { \"role\": \"duty officer\", \"to\": [ \"page-duty\" ] } ],\n"
     "  \"channels\": [ { \"id\": \"page-duty\", \"kind\": \"command\", \"run\": [ \"./hook\" ] } ] }\n";
 
-/* tried.jsonl: every start; told.jsonl: what it passed on. `hook-fails` and `hook-sleeps` are files that a test makes. */
+/* tried.jsonl: every start; told.jsonl: what it passed on. A test makes the files `hook-fails` and `hook-sleeps`. */
 static const char scene_hook[] = "#!/bin/sh\n"
                                  "set -eu\n"
                                  "line=$(cat)\n"

@@ -37,7 +37,7 @@ static void one_cycle_stores_what_lay_in_the_folder_and_ends(void **state)
     assert_string_equal(scene_level(work, "tallowick-ford"), "QUIET");
 }
 
-/* The file needs two seconds until it counts as whole: until then the gauge is not silent, it has not been read yet. */
+/* The file needs two seconds until it counts as whole: until then the gauge is not silent, it is not read yet. */
 static void nobody_is_woken_for_a_silence_that_the_waiting_files_end(void **state)
 {
     struct work *work = *state;

@@ -220,7 +220,7 @@ static void a_word_said_meanwhile_counts_from_its_own_time(void **state)
     assert_int_equal(daemon_end(work, SIGTERM, NULL), 0);
 }
 
-/* Readings that came while nothing could be recorded are in the fresh store, and are not judged news a second time. */
+/* What could not be recorded stays in its folder, and the next life takes it from there. */
 static void a_kill_after_the_loss_loses_nothing_that_was_in_a_file(void **state)
 {
     struct work *work = *state;
