@@ -212,14 +212,16 @@ void hook_tell_to_end(struct hook *hook)
 void hook_wait(struct hook *hook, int64_t deadline_ms)
 {
     struct pollfd watched = {.fd = hook->pidfd, .events = POLLIN};
+    bool is_last_wait = false; /* KILL may have been sent a moment ago by its own limit: that moment is not enough */
     hook->was_told_to_end = true;
     for (;;) {
         int64_t left_ms = deadline_ms - clock_machine_ms();
-        if (left_ms <= 0 && hook->was_killed)
+        if (left_ms <= 0 && is_last_wait)
             break; /* not even KILL ended it: a device holds it, and we do not wait for that */
         if (left_ms <= 0) {
             kill_group(hook);
             deadline_ms = clock_machine_ms() + AFTER_KILL_MS;
+            is_last_wait = true;
             continue;
         }
         if (poll(&watched, 1, left_ms > 1000 ? 1000 : (int)left_ms) > 0)
