@@ -267,6 +267,7 @@ static enum fw_status start_hook(struct place *place, struct message *message, i
     char name[128];
     snprintf(name, sizeof name, "hook '%s' #%04lld", channel->id, (long long)message->number);
     struct environment environment;
+    /* cppcheck-suppress ctuuninitvar ; it is filled there */
     fill_environment(outbox->settings, message, &environment);
     struct hook_order order = {.name = name,
                                .argv = channel->run,
