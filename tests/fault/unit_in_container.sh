@@ -62,6 +62,9 @@ AllowIsolate=yes
 UNIT
 DESTDIR=$box cmake --install "$build" --prefix /usr >"$place/install.log" || { cat "$place/install.log"; exit 1; }
 
+# it keeps a folder per container there: not in this machine's /run
+mkdir -p /run/systemd/nspawn
+mount -t tmpfs tmpfs /run/systemd/nspawn || skip "no tmpfs can be mounted"
 systemd-nspawn -q -D "$box" --private-network --register=no --keep-unit --resolv-conf=off --timezone=off \
     --console=read-only -b systemd.unit=forewater-trial.target >"$place/console.log" 2>&1 &
 nspawn=$!
@@ -175,6 +178,13 @@ check "a stranger may not deliver readings" \
 check "who delivers readings may not say a word" fails as modem 'forewater say note "x" --by modem'
 check "a second instance is refused" exits_with 75 in_box timeout 10 forewater run
 
+# --- backup, as docs/operating.md says ------------------------------------------------------------------------------
+check "a backup can be made while it runs" in_box sqlite3 -readonly /var/lib/forewater/history.db '.backup /root/b.db'
+check "by people on duty too" \
+    as duty "sqlite3 -readonly /var/lib/forewater/history.db '.backup /tmp/b.db' && test -s /tmp/b.db"
+check "it is whole and holds the readings" is $'ok\n12' \
+    in_box sqlite3 /root/b.db 'PRAGMA integrity_check; SELECT count(*) FROM reading'
+
 # --- reload -------------------------------------------------------------------------------------------------------
 digest=$(picture '$.settings')
 act_by=$(picture '$.points[0].act_by')
@@ -216,6 +226,18 @@ check "systemctl stop ends within a second" [ $took -lt 1000 ]
 echo "        stopped in $took ms"
 check "it ended by itself, with success" is success property Result
 check "what it said shows no refused call" says_not 'Operation not permitted|Permission denied|Read-only file' journal
+
+in_box sqlite3 -readonly /var/lib/forewater/history.db 'SELECT count(*) FROM reading' >/dev/null
+in_box systemctl start forewater
+check "a look by root while it is stopped does no harm" is_active
+in_box systemctl stop forewater
+in_box sh -c 'cd /var/lib/forewater && mv history.db aside.db && { [ ! -e history.db-wal ] || mv history.db-wal aside.db-wal; }'
+in_box install -o _forewater -g forewater-duty -m 0640 /root/b.db /var/lib/forewater/history.db
+in_box systemctl start forewater
+check "it goes on from a backup" within 5 says '^[1-9]' store 'SELECT count(*) FROM ledger WHERE utc >= unixepoch() - 5'
+check "with the readings of the backup" is 12 store 'SELECT count(*) FROM reading'
+in_box systemctl stop forewater
+check "and ends well" is success property Result
 
 # --- the sandbox, from inside a hook ------------------------------------------------------------------------------
 # A denied system call now kills; the hook is one that tries what it must not be able to do
