@@ -76,7 +76,7 @@ last_lines '^packages '
 stage 'tests/run, again' bare one tests/run
 rm -rf --one-file-system "$place/one"
 stage 'config/demo/run --short' bare other config/demo/run --short
-last_lines '^=== 7'
+last_lines '^live and replay'
 stage 'config/demo/run --short, again' bare other config/demo/run --short
 
 echo
