@@ -4,6 +4,8 @@
 #include <math.h>
 #include <stdlib.h>
 
+#include "engine/muskingum_cunge_kernel.h"
+
 static const double hair = 1e-12;
 
 /* The reach's potentials at the curve's nodes; none falls as the flow rises. */
@@ -159,6 +161,13 @@ static void fill_outflow_index(struct muskingum_cunge_table *table)
     }
 }
 
+/* No row across two cache lines: there is room for one row more. */
+static struct muskingum_cunge_row *aligned_rows(void *memory)
+{
+    size_t past = (uintptr_t)memory % sizeof(struct muskingum_cunge_row);
+    return (void *)((char *)memory + (past == 0 ? 0 : sizeof(struct muskingum_cunge_row) - past));
+}
+
 static bool is_positive(double value)
 {
     return value > 0.0 && isfinite(value);
@@ -182,13 +191,15 @@ enum fw_status muskingum_cunge_table_init(struct muskingum_cunge_table *table,
     table->largest_discharge_m3s = potentials.passing_m3[last] / reach->time_step_s;
     bit_index_init(&table->by_potential, potentials.potential_m3[0], potentials.potential_m3[last]);
     bit_index_init(&table->by_outflow, potentials.passing_m3[0], potentials.passing_m3[last]);
-    table->rows = calloc(table->by_potential.row_count, sizeof *table->rows);
+    table->vectors = vector_level_widest();
+    table->row_memory = calloc(table->by_potential.row_count + 1, sizeof *table->rows);
     table->row_outflow = calloc(table->by_potential.row_count + 1, sizeof *table->row_outflow);
     table->first_row = calloc(table->by_outflow.row_count, sizeof *table->first_row);
-    if (table->rows == NULL || table->row_outflow == NULL || table->first_row == NULL) {
+    if (table->row_memory == NULL || table->row_outflow == NULL || table->first_row == NULL) {
         status = FW_NO_MEMORY;
         goto cleanup;
     }
+    table->rows = aligned_rows(table->row_memory);
     fill_rows(&potentials, table);
     fill_outflow_index(table);
 cleanup:
@@ -200,7 +211,7 @@ cleanup:
 
 void muskingum_cunge_table_clear(struct muskingum_cunge_table *table)
 {
-    free(table->rows);
+    free(table->row_memory);
     free(table->row_outflow);
     free(table->first_row);
     memset(table, 0, sizeof *table);
@@ -229,20 +240,13 @@ double muskingum_cunge_implicit_m3(const struct muskingum_cunge_table *table, do
 void muskingum_cunge_step(const struct muskingum_cunge_table *table, size_t cell_count, size_t member_count,
                           double state_m3[restrict], double passing_m3[restrict], double implicit_m3[restrict])
 {
-    const struct bit_index index = table->by_potential;
-    const struct muskingum_cunge_row *const rows = table->rows;
-    for (size_t cell = 0; cell < cell_count; cell++, state_m3 += member_count) {
-        for (size_t member = 0; member < member_count; member++) {
-            double potential = state_m3[member] + implicit_m3[member];
-            const struct muskingum_cunge_row *row = rows + bit_index_row(&index, potential);
-            double passing = row->outflow_0 + row->outflow_1 * potential;
-            double implicit = row->implicit_0 + row->implicit_1 * potential;
-            /* in this order: each difference is of numbers near to each other, and volume closes to rounding */
-            state_m3[member] = (potential - passing) + (passing_m3[member] - implicit_m3[member]);
-            passing_m3[member] = passing;
-            implicit_m3[member] = implicit;
-        }
+#if defined(FW_VECTOR_AVX2)
+    if (table->vectors == VECTOR_AVX2) {
+        muskingum_cunge_kernel_avx2(table, cell_count, member_count, state_m3, passing_m3, implicit_m3);
+        return;
     }
+#endif
+    muskingum_cunge_kernel_baseline(table, cell_count, member_count, state_m3, passing_m3, implicit_m3);
 }
 
 double muskingum_cunge_steady_state_m3(const struct muskingum_cunge_table *table, double lateral_m3,

@@ -27,6 +27,7 @@
 #include "engine/bit_index.h"
 #include "engine/flow_curve.h"
 #include "engine/status.h"
+#include "engine/vector.h"
 
 enum muskingum_cunge_diffusion {
     MUSKINGUM_CUNGE_MATCHED, /* the river's own */
@@ -44,6 +45,8 @@ struct muskingum_cunge_table {
     double cell_m;
     struct bit_index by_potential; /* H to row */
     struct muskingum_cunge_row *rows;
+    void *row_memory;
+    enum vector_level vectors;   /* the widest present; another that is present may be set, with the same results */
     struct bit_index by_outflow; /* dt O to the row it begins in */
     uint32_t *first_row;
     double *row_outflow;          /* dt O at which a row begins; one more than rows, the last infinite */
