@@ -1,14 +1,15 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * Members side by side in vectors, a block of them walked down all cells of a step with its passing and implicit
- * volumes close at hand. Compiled once per level of vectors.
+ * Members side by side in vectors, a block of them walked down all cells of a step. Compiled once per level of
+ * vectors.
  *
- * A member's arithmetic is the same in a full block, in a short one and alone, and the same at every level. What
- * makes it fast, where a member's next cell waits some 40 cycles for the one above:
- *   - a block is 32 members, and its look-ups run ahead: the potential and row of a vector are found a quarter
- *     of a block before they are used, so that no instruction waits long for its operands;
- *   - row offsets go to scalars through memory, and rows are loaded whole and transposed as integers: both keep off
- *     the one port that moves doubles across a register.
+ * A member's arithmetic is the same in a full block, in any other and alone, and the same at every level. A member's
+ * next cell waits some 40 cycles for the one above, so a block holds enough members to fill that time, and
+ *   - its look-ups run ahead: the potential and the row of a vector are found a quarter of the block before their
+ *     turn, so that few instructions queue for their operands;
+ *   - row offsets reach scalars through memory, and rows are loaded whole and transposed as integers: on common x86
+ *     processors one port alone moves doubles across a register, two move integers.
+ * S' is taken as (S - dt O') + dt I', without d: however large d is, its rounding stays out of the balance.
  * The potential is held inside the table before its bits are read (engine/bit_index.h): no row outside is read,
  * whatever the input.
  */
@@ -64,7 +65,9 @@ struct coefficients { /* of as many members as a vector has lanes */
 static inline vector_bits row_part(uintptr_t row_zero, uint64_t offset, size_t from)
 {
     vector_bits part;
-    memcpy(&part, (const char *)(row_zero + (uintptr_t)offset) + from, sizeof part);
+    /* row_zero is no address of the table: a sum of numbers, then, that points into it only when complete */
+    const char *row = (const char *)(row_zero + (uintptr_t)offset); /* NOLINT(performance-no-int-to-ptr) */
+    memcpy(&part, row + from, sizeof part);
     return part;
 }
 
