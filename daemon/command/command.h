@@ -18,10 +18,18 @@ command_function command_replay;
 command_function command_status;
 command_function command_say;
 
+/*
+ * For what goes on while the file has faults: run, say, status. When the file cannot be used, the last settings that worked, which the store keeps, loudly.
+ *   store_file  where that store is; NULL: $STATE_DIRECTORY/history.db, and for the installed configuration COMMAND_DEFAULT_STORE
+ */
+FW_MUST_CHECK enum fw_status command_read_settings_in_force(const char *file, const char *store_file,
+                                                            struct settings **settings_out, struct fw_error *error);
+
 /* The caution that stands under everything a person acts on, in lines of a terminal. */
 void command_print_caution(void);
 
 #define COMMAND_DEFAULT_CONFIG "/etc/forewater/forewater.json"
+#define COMMAND_DEFAULT_STORE "/var/lib/forewater/history.db"
 
 /* Reads the settings; every fault goes to stderr, one a line. */
 FW_MUST_CHECK enum fw_status command_read_settings(const char *file, enum settings_need need,

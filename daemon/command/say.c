@@ -52,7 +52,7 @@ static enum fw_status wait_until_taken(const struct settings *settings, const st
 
 enum fw_status command_say(int argument_count, char *arguments[], struct fw_error *error)
 {
-    struct option_values config = {0}, by = {0}, at = {0}, unit = {0}, both_sides = {0}, wait = {0};
+    struct option_values config = {0}, by = {0}, at = {0}, unit = {0}, both_sides = {0}, wait = {0}, store = {0};
     const struct option_spec options[] = {
         {"config", "FILE", "the configuration (default " COMMAND_DEFAULT_CONFIG ")", &config},
         {"by", "ROLE", "who says it: a role, never a name", &by},
@@ -60,6 +60,7 @@ enum fw_status command_say(int argument_count, char *arguments[], struct fw_erro
         {"unit", "UNIT", "of a reading: m, cm, mm, ft, m3/s, l/s (default: as the gauge measures, SI)", &unit},
         {"both-sides", NULL, "SHUT: both sides are", &both_sides},
         {"wait", "SECONDS", "how long to wait until the daemon has taken it (default 10)", &wait},
+        {"store", "FILE", "where the last good settings are, should the configuration be unreadable", &store},
         {NULL, NULL, NULL, NULL}};
     const struct command_line line = {
         "say", "accept [NUMBER] | reading GAUGE VALUE | seen POINT dry|wet [CM] | road POINT STATE | note TEXT",
@@ -77,7 +78,8 @@ enum fw_status command_say(int argument_count, char *arguments[], struct fw_erro
         status = option_whole("wait", &wait, 0, 3600, 10, &wait_s, error);
     if (status != FW_OK)
         return status;
-    status = command_read_settings(option_text(&config, COMMAND_DEFAULT_CONFIG), SETTINGS_FOR_RUN, &settings, error);
+    status = command_read_settings_in_force(option_text(&config, COMMAND_DEFAULT_CONFIG), option_text(&store, NULL),
+                                            &settings, error);
     if (status != FW_OK)
         return status;
     /* word_parse reads the whole line, options too: what getopt moved is one argument vector from argv[1] on */

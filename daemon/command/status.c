@@ -154,10 +154,11 @@ static enum fw_status show(const struct settings *settings, bool as_json, struct
 
 enum fw_status command_status(int argument_count, char *arguments[], struct fw_error *error)
 {
-    struct option_values config = {0}, json = {0};
+    struct option_values config = {0}, json = {0}, store = {0};
     const struct option_spec options[] = {
         {"config", "FILE", "the configuration (default " COMMAND_DEFAULT_CONFIG ")", &config},
         {"json", NULL, "the picture as one JSON object", &json},
+        {"store", "FILE", "where the last good settings are, should the configuration be unreadable", &store},
         {NULL, NULL, NULL, NULL}};
     const struct command_line line = {"status", "",
                                       "Shows the newest recorded picture: gauges, crossings by act-by, what "
@@ -169,8 +170,8 @@ enum fw_status command_status(int argument_count, char *arguments[], struct fw_e
     if (status == FW_OK && rest < argument_count)
         status = fw_error_set(error, FW_USAGE, "status: '%s' is not expected here", arguments[rest]);
     if (status == FW_OK)
-        status =
-            command_read_settings(option_text(&config, COMMAND_DEFAULT_CONFIG), SETTINGS_FOR_RUN, &settings, error);
+        status = command_read_settings_in_force(option_text(&config, COMMAND_DEFAULT_CONFIG),
+                                                option_text(&store, NULL), &settings, error);
     if (status != FW_OK)
         return status;
     status = show(settings, json.count > 0, error);

@@ -107,6 +107,24 @@ static void a_daemon_that_was_killed_leaves_a_picture_that_can_be_read(void **st
 }
 
 /* In the world's own time, with a picture of yesterday in the store. */
+static void while_the_file_has_faults_the_last_good_settings_serve(void **state)
+{
+    struct work *work = *state;
+    start_at_send(work);
+    work_write(work, "forewater.json", "{ \"district\": ");
+    struct ending refused = work_run(work, "status", NULL);
+    assert_int_equal(refused.code, 78); /* nothing says where the store is */
+    struct ending ending = work_run(work, "status", "--store", work_print(work, "%s/history.db", work->folder), NULL);
+    assert_int_equal(ending.code, 0);
+    expect_in(ending.err, "CANNOT BE USED");
+    expect_in(ending.out, "20:39   Tallowick Ford      SEND ");
+    struct ending said = work_run(work, "say", "road", "tallowick-ford", "SHUT", "--both-sides", "--by",
+                                  "roads foreman", "--store", work_print(work, "%s/history.db", work->folder), NULL);
+    assert_int_equal(said.code, 0);
+    expect_in(said.out, "recorded: road tallowick-ford SHUT");
+    assert_int_equal(daemon_end(work, SIGTERM, NULL), 0);
+}
+
 static void an_old_picture_is_marked_as_old(void **state)
 {
     struct work *work = *state;
@@ -140,6 +158,7 @@ int main(void)
         SCENE_TEST(the_picture_is_shown_with_what_a_person_needs),
         SCENE_TEST(as_json_it_is_the_recorded_payload_byte_for_byte),
         SCENE_TEST(a_daemon_that_was_killed_leaves_a_picture_that_can_be_read),
+        SCENE_TEST(while_the_file_has_faults_the_last_good_settings_serve),
         SCENE_TEST(an_old_picture_is_marked_as_old),
         SCENE_TEST(to_look_changes_nothing_and_disturbs_nobody),
     };
