@@ -15,6 +15,14 @@
 
 enum { MOST_ITERATIONS = 8 };
 
+/* No array of a loop over members overlaps another, nor does one member's work reach another's: the compiler may take
+ * several at once. It cannot see that by itself for so many. */
+#if defined(__clang__)
+#define ACROSS_MEMBERS _Pragma("clang loop vectorize(assume_safety)")
+#else
+#define ACROSS_MEMBERS _Pragma("GCC ivdep")
+#endif
+
 static const double theta = DYNAMIC_TIME_WEIGHT;
 static const double small_correction = 0.02; /* of the area: Newton's next would be its square */
 
@@ -45,6 +53,7 @@ static void measure(double momentum_factor, size_t member_count, const double ar
     double *restrict speed = flow->speed, *restrict flux = flow->flux;
     double *restrict friction = flow->friction, *restrict friction_by_area = flow->friction_by_area;
     double *restrict friction_by_flow = flow->friction_by_flow, *restrict froude_squared = flow->froude_squared;
+    ACROSS_MEMBERS
     for (size_t m = 0; m < member_count; m++) {
         double mean_depth = area[m] * depth_by_area[m]; /* A/B */
         double shared = 1.0 / (mean_depth * conveyance[m]);
@@ -85,6 +94,7 @@ static void find_inertia(const struct interval *interval, const struct dynamic_n
 {
     const double *restrict left_froude = left->froude_squared, *restrict right_froude = right->froude_squared;
     double *restrict inertia = work->inertia + interval->at;
+    ACROSS_MEMBERS
     for (size_t m = 0; m < interval->member_count; m++) {
         double square = left_froude[m] > right_froude[m] ? left_froude[m] : right_froude[m];
         double fourth = square * square;
@@ -93,9 +103,11 @@ static void find_inertia(const struct interval *interval, const struct dynamic_n
     }
 }
 
-static inline void eliminate(const struct interval *interval, const struct dynamic_node_flow *left,
-                             const struct dynamic_node_flow *right, const struct dynamic_state *state,
-                             struct dynamic_work *work, const bool is_first)
+__attribute__((always_inline)) static inline void eliminate(const struct interval *interval,
+                                                            const struct dynamic_node_flow *left,
+                                                            const struct dynamic_node_flow *right,
+                                                            const struct dynamic_state *state,
+                                                            struct dynamic_work *work, const bool is_first)
 {
     const size_t count = interval->member_count, at = interval->at;
     const double *restrict area_l = state->area_m2 + at, *restrict area_r = area_l + count;
@@ -118,6 +130,7 @@ static inline void eliminate(const struct interval *interval, const struct dynam
     const double dx = interval->length_m, dt = interval->time_step_s, fall = interval->fall_m;
     const double half_dx = 0.5 * dx, dt_new = theta * dt, per_dt = half_dx / dt, half_friction = 0.5 * theta * dx;
     const double beta = interval->momentum_factor, gravity = dynamic_gravity_m_s2;
+    ACROSS_MEMBERS
     for (size_t m = 0; m < count; m++) {
         double half_area = 0.5 * (area_l[m] + area_r[m]);
         double rise = depth_r[m] - depth_l[m];
@@ -180,6 +193,7 @@ static void eliminate_again(const struct interval *interval, const struct dynami
 static void keep_old_terms(size_t at, size_t member_count, const struct dynamic_node_flow *left,
                            const struct dynamic_node_flow *right, struct dynamic_work *work)
 {
+    ACROSS_MEMBERS
     for (size_t m = 0; m < member_count; m++) {
         work->old_half_area[at + m] = 0.5 * (work->old_area[at + m] + work->old_area[at + member_count + m]);
         work->old_rise[at + m] = right->depth[m] - left->depth[m];
@@ -355,11 +369,12 @@ static void correct_node(size_t at, double time_step_s, struct dynamic_state *st
     double *restrict passed = state->passed_m3 + at, *restrict is_large = work->is_large;
     const double *restrict old_discharge = work->old_discharge + at, *restrict is_open = work->is_open;
     const double *restrict area_by = work->area_correction, *restrict discharge_by = work->discharge_correction;
+    ACROSS_MEMBERS
     for (size_t m = 0; m < count; m++) {
         double least = -0.5 * area[m];
         double by = area_by[m] > least ? area_by[m] : least;
-        bool is_small = fabs(area_by[m]) < small_correction * area[m] && fabs(discharge_by[m]) < (double)INFINITY;
-        is_large[m] = is_small ? is_large[m] : 1.0;
+        double large = fabs(area_by[m]) < small_correction * area[m] ? is_large[m] : 1.0; /* not-a-number is */
+        is_large[m] = fabs(discharge_by[m]) < (double)INFINITY ? large : 1.0;
         area[m] = is_open[m] > 0.0 ? area[m] + by : area[m];
         discharge[m] = is_open[m] > 0.0 ? discharge[m] + discharge_by[m] : discharge[m];
         passed[m] = time_step_s * (theta * discharge[m] + (1.0 - theta) * old_discharge[m]);
@@ -373,6 +388,7 @@ static void follow_up(const struct interval *interval, struct dynamic_work *work
     const double *restrict e = work->sweep_e + interval->at, *restrict f = work->sweep_f + interval->at;
     double *restrict area_by = work->area_correction, *restrict discharge_by = work->discharge_correction;
     const double half_dx = 0.5 * interval->length_m, dt_new = theta * interval->time_step_s;
+    ACROSS_MEMBERS
     for (size_t m = 0; m < interval->member_count; m++) {
         double by = lead[m] - (half_dx * area_by[m] + dt_new * discharge_by[m]) * gain[m];
         discharge_by[m] = e[m] * by + f[m];
