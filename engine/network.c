@@ -7,66 +7,8 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "engine/network_internal.h"
 #include "engine/river.h"
-#include "engine/routed_reach.h"
-
-struct placed_point {
-    size_t stop;
-    double share_of_next;
-};
-
-struct delayed_share { /* of a gauge: (1 - part) of the flow `whole` steps ago and part of the one before */
-    size_t whole;
-    double part;
-};
-
-/* Where things lie in a group's block of doubles. Every array has the group's members innermost. */
-struct block_layout {
-    size_t head_m3; /* [reach] passing volumes now */
-    size_t foot_m3; /* [reach] */
-    size_t gauge; /* [gauge][slot] flows, the newest in slot ring_at, older ones in the slots before it, cyclically */
-    size_t side;  /* [side inflow] flows now */
-    size_t point; /* [point] flows now */
-    size_t count;
-};
-
-struct network {
-    struct network_river river;
-    double time_step_s;
-    size_t group_count;
-    size_t members_per_group;
-    double *roughness_factors; /* per group */
-
-    struct routed_reach *reaches;
-    size_t *order;
-    size_t *gauge_of_head; /* per reach, NETWORK_NONE where reaches flow in */
-    size_t *first_above;   /* per reach, the first that ends at its head, or NETWORK_NONE */
-    size_t *next_above;    /* per reach, the next that ends where it does */
-    size_t *first_point;   /* per reach, the first on it */
-    size_t *next_point;    /* per point, the next on the same reach */
-    size_t *state_offset;  /* per reach, within a group's block */
-    struct placed_point *points;
-    struct delayed_share *delays;
-    size_t ring_count;
-    size_t ring_at;
-
-    struct block_layout layout;
-    double *blocks; /* [group][layout.count] */
-
-    double *side_m3; /* scratch of one group, [side inflow][member] */
-    double *stop_m3;
-    double *implicit_m3;
-    double *passing_m3;
-    double *lateral_m3;
-
-    size_t steps_above_tables;
-    size_t steps_below_zero;
-};
-
-static double *block_of(const struct network *network, size_t group)
-{
-    return network->blocks + group * network->layout.count;
-}
 
 static double *gauge_slot(const struct network *network, double *block, size_t gauge, size_t slot)
 {
@@ -91,13 +33,16 @@ static enum fw_status allocate_parts(struct network *network)
     network->first_point = room_for(river->reach_count, sizeof *network->first_point);
     network->next_point = room_for(river->point_count, sizeof *network->next_point);
     network->state_offset = room_for(river->reach_count, sizeof *network->state_offset);
+    network->tree_of_reach = room_for(river->reach_count, sizeof *network->tree_of_reach);
+    network->trees = room_for(river->reach_count, sizeof *network->trees);
     network->points = room_for(river->point_count, sizeof *network->points);
     network->delays = room_for(river->side_inflow_count, sizeof *network->delays);
     network->roughness_factors = room_for(network->group_count, sizeof *network->roughness_factors);
     bool is_short = network->reaches == NULL || network->order == NULL || network->gauge_of_head == NULL ||
                     network->first_above == NULL || network->next_above == NULL || network->first_point == NULL ||
-                    network->next_point == NULL || network->state_offset == NULL || network->points == NULL ||
-                    network->delays == NULL || network->roughness_factors == NULL;
+                    network->next_point == NULL || network->state_offset == NULL || network->tree_of_reach == NULL ||
+                    network->trees == NULL || network->points == NULL || network->delays == NULL ||
+                    network->roughness_factors == NULL;
     return is_short ? FW_NO_MEMORY : FW_OK;
 }
 
@@ -152,6 +97,32 @@ static enum fw_status make_reaches(struct network *network, const struct network
     return FW_OK;
 }
 
+/* Neighbours by the same full equations make one tree, known by its outlet, which comes last of them in the order. */
+static enum fw_status make_trees(struct network *network, const struct network_options *options)
+{
+    const struct network_river *river = &network->river;
+    size_t *members = room_for(river->reach_count, sizeof *members);
+    enum fw_status status = members == NULL ? FW_NO_MEMORY : FW_OK;
+    for (size_t i = river->reach_count; i-- > 0 && status == FW_OK;) {
+        size_t reach = network->order[i];
+        size_t below = network_reach_from(river, river->reaches[reach].to_node);
+        enum network_method method = river->reaches[reach].method;
+        bool joins = below != NETWORK_NONE && river->reaches[below].method == method;
+        network->tree_of_reach[reach] = !network_method_is_full(method) ? NETWORK_NONE
+                                        : joins                         ? network->tree_of_reach[below]
+                                                                        : network->tree_count++;
+    }
+    for (size_t tree = 0; tree < network->tree_count && status == FW_OK; tree++) {
+        size_t count = 0;
+        for (size_t i = 0; i < river->reach_count; i++)
+            if (network->tree_of_reach[network->order[i]] == tree)
+                members[count++] = network->order[i];
+        status = routed_tree_init(&network->trees[tree], river, network->reaches, count, members, options);
+    }
+    free(members);
+    return status;
+}
+
 static void place_points(struct network *network)
 {
     const struct network_river *river = &network->river;
@@ -194,7 +165,11 @@ static enum fw_status allocate_values(struct network *network)
     size_t most_cells = 0;
     for (size_t i = 0; i < river->reach_count; i++) {
         const struct routed_reach *reach = &network->reaches[i];
-        network->state_offset[i] = take(layout, routed_reach_state_count(reach), members);
+        const struct routed_tree *tree = network_tree_of(network, i);
+        size_t state_count = tree == NULL                    ? routed_reach_state_count(reach)
+                             : network_is_outlet_of(tree, i) ? routed_tree_state_count(tree)
+                                                             : 0;
+        network->state_offset[i] = take(layout, state_count, members);
         most_stops = reach->stop_count > most_stops ? reach->stop_count : most_stops;
         most_cells = reach->cell_count > most_cells ? reach->cell_count : most_cells;
     }
@@ -203,6 +178,7 @@ static enum fw_status allocate_values(struct network *network)
     layout->gauge = take(layout, river->gauge_count * network->ring_count, members);
     layout->side = take(layout, river->side_inflow_count, members);
     layout->point = take(layout, river->point_count, members);
+    layout->depth = take(layout, river->point_count, members);
 
     network->blocks = room_for(network->group_count * layout->count, sizeof *network->blocks);
     network->side_m3 = room_for(river->side_inflow_count * members, sizeof *network->side_m3);
@@ -210,9 +186,23 @@ static enum fw_status allocate_values(struct network *network)
     network->implicit_m3 = room_for(members, sizeof *network->implicit_m3);
     network->passing_m3 = room_for(members, sizeof *network->passing_m3);
     network->lateral_m3 = room_for(most_cells, sizeof *network->lateral_m3);
+    network->stop_depth_m = room_for(most_stops * members, sizeof *network->stop_depth_m);
     bool is_short = network->blocks == NULL || network->side_m3 == NULL || network->stop_m3 == NULL ||
-                    network->implicit_m3 == NULL || network->passing_m3 == NULL || network->lateral_m3 == NULL;
+                    network->implicit_m3 == NULL || network->passing_m3 == NULL || network->lateral_m3 == NULL ||
+                    network->stop_depth_m == NULL;
     return is_short ? FW_NO_MEMORY : FW_OK;
+}
+
+/* All else is dry as it is allocated. */
+static void dry_trees(struct network *network)
+{
+    for (size_t i = 0; i < network->tree_count; i++) {
+        struct routed_tree *tree = &network->trees[i];
+        size_t outlet = tree->reach_index[tree->branch_count - 1];
+        for (size_t group = 0; group < network->group_count; group++)
+            routed_tree_start_steady(tree, group, network->side_m3,
+                                     network_block_of(network, group) + network->state_offset[outlet]);
+    }
 }
 
 enum fw_status network_create(const struct network_river *river, const struct network_options *options,
@@ -239,10 +229,15 @@ enum fw_status network_create(const struct network_river *river, const struct ne
         status = make_reaches(network, options, fault_out);
     if (status != FW_OK)
         goto cleanup;
+    status = make_trees(network, options);
+    if (status != FW_OK)
+        goto cleanup;
     make_lists(network);
     place_points(network);
     place_delays(network);
     status = allocate_values(network);
+    if (status == FW_OK)
+        dry_trees(network);
 cleanup:
     if (status == FW_OK)
         *network_out = network;
@@ -258,7 +253,13 @@ void network_destroy(struct network *network)
     if (network->reaches != NULL)
         for (size_t i = 0; i < network->river.reach_count; i++)
             routed_reach_clear(&network->reaches[i]);
+    if (network->trees != NULL)
+        for (size_t i = 0; i < network->tree_count; i++)
+            routed_tree_clear(&network->trees[i]);
     free(network->reaches);
+    free(network->tree_of_reach);
+    free(network->trees);
+    free(network->stop_depth_m);
     free(network->order);
     free(network->gauge_of_head);
     free(network->first_above);
@@ -308,7 +309,7 @@ static double side_flow_m3s(const struct network *network, double *block, size_t
     return side->constant_m3s + side->share * gauge_flow;
 }
 
-/* Into the head of a reach, as passing volume. */
+/* Into the head of a reach, as passing volume; what comes from its own tree left out. */
 static void gather_head(const struct network *network, double *block, size_t reach_index, size_t newest_slot)
 {
     size_t members = network->members_per_group;
@@ -320,6 +321,9 @@ static void gather_head(const struct network *network, double *block, size_t rea
                            : network->time_step_s * gauge_slot(network, block, gauge, newest_slot)[member];
     for (size_t above = network->first_above[reach_index]; above != NETWORK_NONE;
          above = network->next_above[above]) {
+        if (network->tree_of_reach[above] != NETWORK_NONE &&
+            network->tree_of_reach[above] == network->tree_of_reach[reach_index])
+            continue;
         const double *foot = block + network->layout.foot_m3 + above * members;
         for (size_t member = 0; member < members; member++)
             head[member] += foot[member];
@@ -330,6 +334,7 @@ static void gather_head(const struct network *network, double *block, size_t rea
 static void keep_flows(const struct network *network, double *block, size_t reach_index)
 {
     const struct routed_reach *reach = &network->reaches[reach_index];
+    bool has_depths = network->tree_of_reach[reach_index] != NETWORK_NONE;
     size_t members = network->members_per_group;
     const double *stop_m3 = network->stop_m3;
     size_t row = members * sizeof *stop_m3;
@@ -337,26 +342,67 @@ static void keep_flows(const struct network *network, double *block, size_t reac
     memcpy(block + network->layout.foot_m3 + reach_index * members, stop_m3 + (reach->stop_count - 1) * members, row);
     for (size_t i = network->first_point[reach_index]; i != NETWORK_NONE; i = network->next_point[i]) {
         double *point = block + network->layout.point + i * members;
+        double *depth = block + network->layout.depth + i * members;
         double share = network->points[i].share_of_next;
-        const double *here = stop_m3 + network->points[i].stop * members;
-        const double *next = share > 0.0 ? here + members : here;
-        for (size_t member = 0; member < members; member++)
-            point[member] = ((1.0 - share) * here[member] + share * next[member]) / network->time_step_s;
+        size_t here = network->points[i].stop * members;
+        size_t next = share > 0.0 ? here + members : here;
+        for (size_t member = 0; member < members; member++) {
+            point[member] =
+                ((1.0 - share) * stop_m3[here + member] + share * stop_m3[next + member]) / network->time_step_s;
+            depth[member] = has_depths ? (1.0 - share) * network->stop_depth_m[here + member] +
+                                             share * network->stop_depth_m[next + member]
+                                       : (double)NAN;
+        }
     }
+}
+
+static double largest_discharge_m3s(const struct network *network, size_t group, size_t reach_index)
+{
+    const struct routed_reach *reach = &network->reaches[reach_index];
+    if (network->tree_of_reach[reach_index] == NETWORK_NONE)
+        return routed_reach_largest_discharge_m3s(reach, group);
+    return reach->curve.conveyance_m3s[reach->curve.count - 1] * sqrt(reach->source->slope_m_per_m) /
+           network->roughness_factors[group];
 }
 
 static void count_flows_outside(struct network *network, const double *block, size_t group, size_t reach_index)
 {
     const double *head = block + network->layout.head_m3 + reach_index * network->members_per_group;
     const double *foot = block + network->layout.foot_m3 + reach_index * network->members_per_group;
-    double largest = network->time_step_s * routed_reach_largest_discharge_m3s(&network->reaches[reach_index], group);
+    bool may_turn = network->tree_of_reach[reach_index] != NETWORK_NONE;
+    double largest = network->time_step_s * largest_discharge_m3s(network, group, reach_index);
     size_t above = 0, below = 0;
     for (size_t member = 0; member < network->members_per_group; member++) {
         above += head[member] > largest || foot[member] > largest;
-        below += foot[member] < 0.0;
+        below += foot[member] < 0.0 && !may_turn;
     }
     network->steps_above_tables += above;
     network->steps_below_zero += below;
+}
+
+/* The heads of a tree, and then all of it at once, when its outlet's turn comes. */
+static void move_tree(struct network *network, size_t group, double *block, struct routed_tree *tree,
+                      size_t newest_slot, bool is_start)
+{
+    size_t members = network->members_per_group;
+    double *state = block + network->state_offset[tree->reach_index[tree->branch_count - 1]];
+    for (size_t branch = 0; branch < tree->branch_count; branch++) {
+        gather_head(network, block, tree->reach_index[branch], newest_slot);
+        for (size_t member = 0; member < members; member++)
+            tree->inflow_m3s[branch * members + member] = network->stop_m3[member] / network->time_step_s;
+    }
+    if (is_start)
+        routed_tree_start_steady(tree, group, network->side_m3, state);
+    else
+        routed_tree_step(tree, group, network->side_m3, state);
+    for (size_t branch = 0; branch < tree->branch_count; branch++) {
+        size_t reach_index = tree->reach_index[branch];
+        routed_tree_read_stops(tree, group, branch, &network->reaches[reach_index], state, network->stop_m3,
+                               network->stop_depth_m);
+        keep_flows(network, block, reach_index);
+        if (!is_start)
+            count_flows_outside(network, block, group, reach_index);
+    }
 }
 
 static bool is_inflow(double value)
@@ -368,7 +414,7 @@ static void start_group(struct network *network, size_t group, const double infl
 {
     const struct network_river *river = &network->river;
     size_t members = network->members_per_group;
-    double *block = block_of(network, group);
+    double *block = network_block_of(network, group);
     struct routed_flows flows = flows_of(network);
     for (size_t gauge = 0; gauge < river->gauge_count; gauge++)
         for (size_t slot = 0; slot < network->ring_count; slot++)
@@ -382,6 +428,12 @@ static void start_group(struct network *network, size_t group, const double infl
         }
     for (size_t i = 0; i < river->reach_count; i++) {
         size_t reach_index = network->order[i];
+        struct routed_tree *tree = network_tree_of(network, reach_index);
+        if (tree != NULL) {
+            if (network_is_outlet_of(tree, reach_index))
+                move_tree(network, group, block, tree, 0, true);
+            continue;
+        }
         gather_head(network, block, reach_index, 0);
         routed_reach_start_steady(&network->reaches[reach_index], group, &flows,
                                   block + network->state_offset[reach_index]);
@@ -412,7 +464,7 @@ static bool are_inflows_in_order(const struct network *network, size_t step_coun
             if (!is_inflow(series[i]))
                 return false;
         for (size_t group = 0; group < network->group_count; group++) {
-            const double *present = gauge_slot(network, block_of(network, group), gauge, network->ring_at);
+            const double *present = gauge_slot(network, network_block_of(network, group), gauge, network->ring_at);
             for (size_t member = 0; member < network->members_per_group; member++)
                 if (series[group * network->members_per_group + member] != present[member])
                     return false;
@@ -427,7 +479,7 @@ static enum fw_status step_group(struct network *network, size_t group, size_t n
 {
     const struct network_river *river = &network->river;
     size_t members = network->members_per_group;
-    double *block = block_of(network, group);
+    double *block = network_block_of(network, group);
     struct routed_flows flows = flows_of(network);
     for (size_t gauge = 0; gauge < river->gauge_count; gauge++)
         memcpy(gauge_slot(network, block, gauge, newest_slot), inflow_m3s + gauge * gauge_stride,
@@ -441,6 +493,12 @@ static enum fw_status step_group(struct network *network, size_t group, size_t n
         }
     for (size_t i = 0; i < river->reach_count; i++) {
         size_t reach_index = network->order[i];
+        struct routed_tree *tree = network_tree_of(network, reach_index);
+        if (tree != NULL) {
+            if (network_is_outlet_of(tree, reach_index))
+                move_tree(network, group, block, tree, newest_slot, false);
+            continue;
+        }
         gather_head(network, block, reach_index, newest_slot);
         enum fw_status status = routed_reach_step(&network->reaches[reach_index], group, &flows,
                                                   block + network->state_offset[reach_index]);
@@ -452,20 +510,29 @@ static enum fw_status step_group(struct network *network, size_t group, size_t n
     return FW_OK;
 }
 
-/* [point][step][member] of one group, from the present. */
+/* [point][step][member] of one group, from the present. Stages may be NULL. */
 static void give_points(const struct network *network, size_t group, size_t step, size_t step_count,
-                        double point_discharge_m3s[])
+                        double point_discharge_m3s[], double point_stage_m[])
 {
     size_t members = network->members_per_group;
     size_t all_members = network_member_count(network);
-    const double *present = block_of(network, group) + network->layout.point;
-    for (size_t point = 0; point < network->river.point_count; point++)
-        memcpy(point_discharge_m3s + (point * (step_count + 1) + step) * all_members + group * members,
-               present + point * members, members * sizeof *present);
+    const double *block = network_block_of(network, group);
+    for (size_t point = 0; point < network->river.point_count; point++) {
+        const double *flow = block + network->layout.point + point * members;
+        const double *depth = block + network->layout.depth + point * members;
+        size_t at = (point * (step_count + 1) + step) * all_members + group * members;
+        memcpy(point_discharge_m3s + at, flow, members * sizeof *flow);
+        bool is_rated = network->river.points[point].stage_rating.row_count > 0;
+        for (size_t member = 0; point_stage_m != NULL && member < members; member++)
+            point_stage_m[at + member] =
+                is_rated || isnan(depth[member])
+                    ? network_point_stage_m(network, point, group * members + member, flow[member])
+                    : depth[member];
+    }
 }
 
-enum fw_status network_advance(struct network *network, size_t step_count, const double inflow_m3s[],
-                               double point_discharge_m3s[])
+enum fw_status network_advance_with_stage(struct network *network, size_t step_count, const double inflow_m3s[],
+                                          double point_discharge_m3s[], double point_stage_m[])
 {
     size_t all_members = network_member_count(network);
     if (!are_inflows_in_order(network, step_count, inflow_m3s))
@@ -474,7 +541,7 @@ enum fw_status network_advance(struct network *network, size_t step_count, const
     /* groups outermost: one group's cells and tables stay in the nearest cache over all steps */
     for (size_t group = 0; group < network->group_count; group++) {
         const double *group_inflow = inflow_m3s + group * network->members_per_group;
-        give_points(network, group, 0, step_count, point_discharge_m3s);
+        give_points(network, group, 0, step_count, point_discharge_m3s, point_stage_m);
         slot = network->ring_at;
         for (size_t step = 1; step <= step_count; step++) {
             slot = slot + 1 < network->ring_count ? slot + 1 : 0;
@@ -482,107 +549,15 @@ enum fw_status network_advance(struct network *network, size_t step_count, const
                 step_group(network, group, slot, group_inflow + step * all_members, (step_count + 1) * all_members);
             if (status != FW_OK)
                 return status;
-            give_points(network, group, step, step_count, point_discharge_m3s);
+            give_points(network, group, step, step_count, point_discharge_m3s, point_stage_m);
         }
     }
     network->ring_at = slot;
     return FW_OK;
 }
 
-/* --- questions -------------------------------------------------------------------------------------------------- */
-
-size_t network_member_count(const struct network *network)
+enum fw_status network_advance(struct network *network, size_t step_count, const double inflow_m3s[],
+                               double point_discharge_m3s[])
 {
-    return network->group_count * network->members_per_group;
-}
-
-size_t network_cell_count(const struct network *network, size_t reach_index)
-{
-    return network->reaches[reach_index].cell_count;
-}
-
-size_t network_steps_above_tables(const struct network *network)
-{
-    return network->steps_above_tables;
-}
-
-size_t network_steps_below_zero(const struct network *network)
-{
-    return network->steps_below_zero;
-}
-
-static double rated_stage_m(const struct network_stage_rating *rating, double discharge_m3s)
-{
-    const double *discharge = rating->discharge_m3s;
-    const double *stage = rating->stage_m;
-    size_t row = 0;
-    if (discharge_m3s <= discharge[0])
-        return stage[0];
-    while (row + 2 < rating->row_count && discharge[row + 1] < discharge_m3s)
-        row++;
-    return stage[row] +
-           (discharge_m3s - discharge[row]) * ((stage[row + 1] - stage[row]) / (discharge[row + 1] - discharge[row]));
-}
-
-double network_point_stage_m(const struct network *network, size_t point_index, size_t member_index,
-                             double discharge_m3s)
-{
-    const struct network_point *point = &network->river.points[point_index];
-    if (point->stage_rating.row_count > 0)
-        return rated_stage_m(&point->stage_rating, discharge_m3s);
-    const struct routed_reach *reach = &network->reaches[point->reach_index];
-    double factor = network->roughness_factors[member_index / network->members_per_group];
-    return flow_curve_depth_m(&reach->curve, discharge_m3s * factor / sqrt(reach->source->slope_m_per_m));
-}
-
-double network_volume_m3(const struct network *network, size_t member_index)
-{
-    size_t members = network->members_per_group;
-    size_t group = member_index / members;
-    size_t member = member_index % members;
-    const double *block = block_of(network, group);
-    double volume = 0.0;
-    for (size_t i = 0; i < network->river.reach_count; i++)
-        volume +=
-            routed_reach_volume_m3(&network->reaches[i], group, members, member, block + network->state_offset[i],
-                                   block[network->layout.head_m3 + i * members + member],
-                                   block[network->layout.foot_m3 + i * members + member]);
-    return volume;
-}
-
-static void summarise_flow(const struct routed_reach *reach, double roughness_factor, double discharge_m3s,
-                           struct network_reach_flow *flow_out)
-{
-    double slope = reach->source->slope_m_per_m;
-    double discharge_per_conveyance = sqrt(slope) / roughness_factor;
-    struct flow_curve_place place;
-    flow_curve_at(&reach->curve, discharge_m3s / discharge_per_conveyance, &place);
-    double celerity = place.conveyance_slope_m_s * discharge_per_conveyance;
-    *flow_out = (struct network_reach_flow){
-        .discharge_m3s = discharge_m3s,
-        .depth_m = place.depth_m,
-        .top_width_m = place.top_width_m,
-        .velocity_m_s = discharge_m3s / place.area_m2,
-        .celerity_m_s = celerity,
-        .travel_time_s = reach->source->length_m / celerity,
-        .diffusivity_m2_s =
-            flow_curve_diffusivity_m2_s(discharge_m3s, place.area_m2, place.top_width_m, celerity, slope),
-        .courant_number = celerity * reach->time_step_s / reach->cell_m,
-    };
-}
-
-enum fw_status network_reach_summary(const struct network *network, size_t reach_index, double roughness_factor,
-                                     size_t flow_count, const double discharge_m3s[],
-                                     struct network_reach_steps *steps_out, struct network_reach_flow flow_out[])
-{
-    if (reach_index >= network->river.reach_count || !(roughness_factor > 0.0) || !isfinite(roughness_factor))
-        return FW_BAD_INPUT;
-    for (size_t i = 0; i < flow_count; i++)
-        if (!(discharge_m3s[i] > 0.0) || !isfinite(discharge_m3s[i]))
-            return FW_BAD_INPUT;
-    const struct routed_reach *reach = &network->reaches[reach_index];
-    *steps_out = (struct network_reach_steps){reach->cell_count, reach->cell_m, reach->time_step_s};
-    for (size_t i = 0; i < flow_count; i++)
-        summarise_flow(reach, roughness_factor, discharge_m3s[i], &flow_out[i]);
-    return FW_OK;
+    return network_advance_with_stage(network, step_count, inflow_m3s, point_discharge_m3s, NULL);
 }

@@ -14,6 +14,7 @@
 #ifndef FOREWATER_ENGINE_NETWORK_H
 #define FOREWATER_ENGINE_NETWORK_H
 
+#include <stdbool.h>
 #include <stddef.h>
 #include <stdint.h>
 
@@ -23,8 +24,15 @@
 enum network_method {
     NETWORK_MUSKINGUM_CUNGE = 0, /* storage form, volume-conserving: the default */
     NETWORK_KINEMATIC,           /* the same with no diffusion of its own */
-    NETWORK_KINEMATIC_LINEAR     /* the published linear scheme: rival and check */
+    NETWORK_KINEMATIC_LINEAR,    /* the published linear scheme: rival and check */
+    NETWORK_DYNAMIC,             /* the full equations; neighbouring reaches are solved as one */
+    NETWORK_DIFFUSIVE            /* the same without inertia */
 };
+
+static inline bool network_method_is_full(enum network_method method)
+{
+    return method == NETWORK_DYNAMIC || method == NETWORK_DIFFUSIVE;
+}
 
 #define NETWORK_NONE ((size_t)-1)
 #define NETWORK_LARGEST_INFLOW_M3S 1e9 /* more than that at one place is a mistake of units, not a flood */
@@ -37,6 +45,7 @@ struct network_reach {
     const struct section *section;
     double cell_m; /* wanted cell length; 0: chosen from celerity and time step */
     enum network_method method;
+    double outlet_depth_m; /* held at the foot of a last reach, by the full equations; 0: the river goes on */
 };
 
 struct network_side_inflow { /* enters the cell that holds at_m, at the mean of its flows at both ends of a step */
@@ -100,7 +109,9 @@ struct network_fault {
 struct network;
 
 /*
- * A new network is dry. Cells: the celerity at typical_peak_m3s times the time step, 3 to 400 of them to a reach.
+ * A new network is dry (by the full equations: but for a film of a millimetre, and a held level). Cells: the
+ * celerity at typical_peak_m3s times the time step, 3 to 400 of them to a reach; by the full equations at least 10,
+ * and no longer than 2 D/c at that flow if 400 are enough.
  *
  * FW_BAD_INPUT  a loop, an orphan, a node without inflow, a gauge in mid-river, a fork, an index outside, a shape or
  *               number refused; fault_out (written only then) says which, by the reach's or point's id.
@@ -133,7 +144,20 @@ FW_MUST_CHECK enum fw_status network_start_steady(struct network *network, const
 FW_MUST_CHECK enum fw_status network_advance(struct network *network, size_t step_count, const double inflow_m3s[],
                                              double point_discharge_m3s[]);
 
-/* Level above the point's invert for a flow there, in the tables of the member's group. */
+/*
+ * The same, and the level above each point's invert: by its own stage rating if it has one; else the depth computed,
+ * where the full equations rule; else the normal stage of its flow.
+ *
+ *   point_stage_m  as point_discharge_m3s
+ */
+FW_MUST_CHECK enum fw_status network_advance_with_stage(struct network *network, size_t step_count,
+                                                        const double inflow_m3s[], double point_discharge_m3s[],
+                                                        double point_stage_m[]);
+
+/*
+ * Level above the point's invert for a flow there, in the tables of the member's group: by rating or normal stage, with
+ * no knowledge of backwater (network_advance_with_stage has it).
+ */
 double network_point_stage_m(const struct network *network, size_t point_index, size_t member_index,
                              double discharge_m3s);
 
@@ -151,6 +175,12 @@ double network_volume_m3(const struct network *network, size_t member_index);
  */
 size_t network_steps_above_tables(const struct network *network);
 size_t network_steps_below_zero(const struct network *network);
+
+/*
+ * Steps so far that the full equations could not take and a kinematic step without backwater replaced, over all
+ * members and trees of such reaches. Water may run upstream there, which is not counted as below zero.
+ */
+size_t network_steps_replaced(const struct network *network);
 
 struct network_reach_steps {
     size_t cell_count;

@@ -53,8 +53,17 @@ static enum fw_status check_reach(const struct network_river *river, size_t reac
     if (reach->cell_m > 0.0 && reach->length_m / reach->cell_m > most_cells)
         return fault(fault_out, "reach '%s': cell_m %g makes %.0f cells, more than %.0f", reach->id, reach->cell_m,
                      reach->length_m / reach->cell_m, most_cells);
-    if ((unsigned)reach->method > NETWORK_KINEMATIC_LINEAR)
+    if ((unsigned)reach->method > NETWORK_DIFFUSIVE)
         return fault(fault_out, "reach '%s': method %d is none that is known", reach->id, (int)reach->method);
+    if (!is_not_negative(reach->outlet_depth_m) || reach->outlet_depth_m > 1e3)
+        return fault(fault_out, "reach '%s': outlet_depth_m %g: expected 0 (none) to 1000", reach->id,
+                     reach->outlet_depth_m);
+    if (reach->outlet_depth_m > 0.0 && !network_method_is_full(reach->method))
+        return fault(fault_out, "reach '%s': outlet_depth_m %g: a held level needs method dynamic or diffusive",
+                     reach->id, reach->outlet_depth_m);
+    if (reach->outlet_depth_m > 0.0 && network_reach_from(river, reach->to_node) != NETWORK_NONE)
+        return fault(fault_out, "reach '%s': outlet_depth_m %g: a level is held at the foot of a last reach only",
+                     reach->id, reach->outlet_depth_m);
     if (reach->section == NULL)
         return fault(fault_out, "reach '%s': has no section", reach->id);
     if (section_check(reach->section, &section_fault) != FW_OK)

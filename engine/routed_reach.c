@@ -4,7 +4,7 @@
 #include <math.h>
 #include <stdlib.h>
 
-enum { FEWEST_CELLS = 3, MOST_CELLS = 400, FIT_POINTS = 64 };
+enum { FEWEST_CELLS = 3, FEWEST_CELLS_FULL = 10, MOST_CELLS = 400, FIT_POINTS = 64 };
 
 static const double table_headroom = 32.0; /* tables end this many times above the largest flow: five octaves */
 static const double fit_from_share =
@@ -37,18 +37,27 @@ static enum fw_status make_curve(struct routed_reach *reach, const struct networ
                            table_headroom * options->largest_discharge_m3s * most / root_slope);
 }
 
-static size_t choose_cell_count(const struct routed_reach *reach, const struct network_options *options)
+static size_t choose_cell_count(struct routed_reach *reach, const struct network_options *options)
 {
     const struct network_reach *source = reach->source;
     double root_slope = sqrt(source->slope_m_per_m);
+    double peak = peak_discharge_m3s(options);
+    bool is_full = network_method_is_full(source->method);
     struct flow_curve_place place;
+    flow_curve_at(&reach->curve, peak / root_slope, &place);
+    double celerity = place.conveyance_slope_m_s * root_slope;
+    reach->diffusion_length_m =
+        flow_curve_diffusivity_m2_s(peak, place.area_m2, place.top_width_m, celerity, source->slope_m_per_m) /
+        celerity;
     if (options->fixed_cell_count > 0)
         return options->fixed_cell_count;
     if (source->cell_m > 0.0)
         return (size_t)fmax(1.0, round(source->length_m / source->cell_m));
-    flow_curve_at(&reach->curve, peak_discharge_m3s(options) / root_slope, &place);
-    double wanted_m = place.conveyance_slope_m_s * root_slope * options->time_step_s;
-    return (size_t)fmin(MOST_CELLS, fmax(FEWEST_CELLS, round(source->length_m / wanted_m)));
+    double wanted_m = celerity * options->time_step_s;
+    if (!is_full)
+        return (size_t)fmin(MOST_CELLS, fmax(FEWEST_CELLS, round(source->length_m / wanted_m)));
+    wanted_m = fmin(wanted_m, 2.0 * reach->diffusion_length_m); /* longer ones make a front's areas negative */
+    return (size_t)fmin(MOST_CELLS, fmax(FEWEST_CELLS_FULL, ceil(source->length_m / wanted_m)));
 }
 
 static enum fw_status make_tables(struct routed_reach *reach, const struct network_options *options)
@@ -188,9 +197,10 @@ enum fw_status routed_reach_init(struct routed_reach *reach, const struct networ
     status = place_sides(reach, river, reach_index);
     if (status == FW_OK)
         status = place_stops(reach, river, reach_index);
-    if (status == FW_OK)
-        status = reach->source->method == NETWORK_KINEMATIC_LINEAR ? make_channels(reach, options)
-                                                                   : make_tables(reach, options);
+    if (status == FW_OK && reach->source->method == NETWORK_KINEMATIC_LINEAR)
+        status = make_channels(reach, options);
+    else if (status == FW_OK && !network_method_is_full(reach->source->method))
+        status = make_tables(reach, options);
 cleanup:
     if (status != FW_OK)
         routed_reach_clear(reach);

@@ -3,6 +3,8 @@
  * One reach of a network: its cells, its tables for every roughness group, and where side inflow enters and flow is
  * read.
  *
+ * A reach by the full equations has neither tables nor channels here: struct routed_tree moves its water.
+ *
  * State is the network's memory, state_count(reach) doubles to a member:
  *   storage form   [cell][member]
  *   linear scheme  [member][node], discharges
@@ -27,9 +29,10 @@ struct routed_reach {
     size_t cell_count;
     double cell_m;
     double time_step_s;
+    double diffusion_length_m; /* D/c at the peak, as the section is given */
     struct flow_curve curve;
-    struct muskingum_cunge_table *tables; /* per group; NULL for the linear scheme */
-    struct kinematic_channel *channels;   /* per group; NULL for the storage form */
+    struct muskingum_cunge_table *tables; /* per group; the storage form's */
+    struct kinematic_channel *channels;   /* per group; the linear scheme's */
     size_t side_count;
     struct routed_side *sides;
     size_t stop_count; /* nodes at which flow is read: rising, the first 0, the last cell_count */

@@ -45,7 +45,7 @@ static void free_and_count(void *block)
 static void every_failed_allocation_is_told_and_nothing_leaks(void **state)
 {
     (void)state;
-    for (int method = NETWORK_MUSKINGUM_CUNGE; method <= NETWORK_KINEMATIC_LINEAR; method++) {
+    for (int method = NETWORK_MUSKINGUM_CUNGE; method <= NETWORK_DIFFUSIVE; method++) {
         enum fw_status status = FW_NO_MEMORY;
         size_t allowed = 0;
         for (; status != FW_OK; allowed++) {

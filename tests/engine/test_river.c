@@ -82,6 +82,16 @@ SPOIL(percent_slope, try->reaches[MIDDLE].slope_m_per_m = 2.4)
 SPOIL(negative_cell, try->reaches[MIDDLE].cell_m = -1.0)
 SPOIL(tiny_cell, try->reaches[MIDDLE].cell_m = 1e-3)
 SPOIL(no_method, try->reaches[MIDDLE].method = (enum network_method)9)
+SPOIL(held_level_by_storage, try->reaches[LOWER].outlet_depth_m = 2.3)
+SPOIL(negative_held_level, try->reaches[LOWER].outlet_depth_m = -0.1)
+SPOIL(nan_held_level, try->reaches[LOWER].outlet_depth_m = NOT_A_NUMBER)
+
+static void held_level_in_mid_river(struct try_river *try)
+{
+    try->reaches[MIDDLE].method = NETWORK_DYNAMIC;
+    try->reaches[MIDDLE].outlet_depth_m = 2.3;
+}
+
 SPOIL(no_section, try->reaches[MIDDLE].section = NULL)
 SPOIL(bad_section, try->reaches[MIDDLE].section = &impossible)
 SPOIL(gauge_outside, try->gauge_node[1] = 5)
@@ -153,6 +163,10 @@ static const struct {
     {negative_cell, "reach 'middle'", "cell_m -1"},
     {tiny_cell, "reach 'middle'", "cell_m 0.001"},
     {no_method, "reach 'middle'", "method 9"},
+    {held_level_by_storage, "reach 'lower'", "needs method dynamic or diffusive"},
+    {negative_held_level, "reach 'lower'", "outlet_depth_m -0.1"},
+    {nan_held_level, "reach 'lower'", "outlet_depth_m nan"},
+    {held_level_in_mid_river, "reach 'middle'", "a last reach only"},
     {no_section, "reach 'middle'", "no section"},
     {bad_section, "reach 'middle'", "section: "},
     {gauge_outside, "gauge_node[1]", "node 5"},
