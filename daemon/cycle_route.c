@@ -69,16 +69,6 @@ static enum fw_status fill_inflow(struct cycle *cycle, size_t index, const struc
     return status;
 }
 
-static void compute_stages(struct cycle *cycle)
-{
-    size_t members = cycle->member_count;
-    size_t row = (cycle->step_count + 1) * members;
-    for (size_t point = 0; point < cycle->settings->point_count; point++)
-        for (size_t index = 0; index < row; index++)
-            cycle->stage_m[point * row + index] =
-                network_point_stage_m(cycle->network, point, index % members, cycle->point_m3s[point * row + index]);
-}
-
 enum fw_status cycle_route(struct cycle *cycle, int64_t now_utc_s, const struct picture *picture,
                            struct fw_error *error)
 {
@@ -101,9 +91,9 @@ enum fw_status cycle_route(struct cycle *cycle, int64_t now_utc_s, const struct 
     status = network_start_steady(cycle->network, start);
     free(start);
     if (status == FW_OK)
-        status = network_advance(cycle->network, cycle->step_count, cycle->inflow_m3s, cycle->point_m3s);
+        status = network_advance_with_stage(cycle->network, cycle->step_count, cycle->inflow_m3s, cycle->point_m3s,
+                                            cycle->stage_m);
     if (status != FW_OK)
         return fw_error_set(error, status, "the flow could not be routed: an inflow is not finite or is negative");
-    compute_stages(cycle);
     return FW_OK;
 }

@@ -40,10 +40,17 @@ static enum fw_status print_reach(const struct check_facts *facts, size_t index,
            found.reach->length_m, found.reach->slope_m_per_m, found.method, found.steps.cell_count,
            found.steps.cell_m, found.steps.time_step_s);
     print_flows(&found);
-    printf(
-        "    fit for floods that rise to %.0f m3/s in %.0f min or more; in quicker ones this method's peak comes out "
-        "LATE and low\n",
-        found.peak_m3s, ceil(found.least_rise_s / 60.0));
+    if (isfinite(found.least_rise_s))
+        printf(
+            "    fit for floods that rise to %.0f m3/s in %.0f min or more; in quicker ones this method's peak comes "
+            "out LATE and low\n",
+            found.peak_m3s, ceil(found.least_rise_s / 60.0));
+    else
+        printf("    knows backwater; at %.0f m3/s a wave evens out over D/c = %.0f m%s\n", found.peak_m3s,
+               found.diffusion_length_m,
+               found.steps.cell_m > 2.0 * found.diffusion_length_m
+                   ? ": cells longer than twice that give WRONG LEVELS, this reach is too steep for the method"
+                   : "");
     return FW_OK;
 }
 

@@ -81,7 +81,9 @@ enum fw_status check_facts_reach(const struct check_facts *facts, size_t index, 
 {
     static const char *const method_names[] = {[NETWORK_MUSKINGUM_CUNGE] = "muskingum-cunge",
                                                [NETWORK_KINEMATIC] = "kinematic",
-                                               [NETWORK_KINEMATIC_LINEAR] = "kinematic-linear"};
+                                               [NETWORK_KINEMATIC_LINEAR] = "kinematic-linear",
+                                               [NETWORK_DYNAMIC] = "dynamic",
+                                               [NETWORK_DIFFUSIVE] = "diffusive"};
     const struct network_reach *reach = &facts->settings->river.reaches[index];
     struct check_reach found = {.reach = reach,
                                 .method = method_names[reach->method],
@@ -96,7 +98,10 @@ enum fw_status check_facts_reach(const struct check_facts *facts, size_t index, 
         status = network_reach_summary(facts->network, index, 1.0, 1, &found.peak_m3s, &found.steps, &peak);
     if (status != FW_OK)
         return fw_error_set(error, status, "reach '%s': its flows cannot be computed", reach->id);
-    found.least_rise_s = method_storage_least_rise_s(reach->length_m, peak.celerity_m_s, peak.diffusivity_m2_s);
+    found.least_rise_s = network_method_is_full(reach->method)
+                             ? NAN
+                             : method_storage_least_rise_s(reach->length_m, peak.celerity_m_s, peak.diffusivity_m2_s);
+    found.diffusion_length_m = peak.diffusivity_m2_s / peak.celerity_m_s;
     *reach_out = found;
     return FW_OK;
 }

@@ -23,7 +23,8 @@ struct check_reach {
     struct network_reach_flow flows[CHECK_FLOW_COUNT + 1];
     double bank_full_m3s; /* NAN: not known */
     double peak_m3s;      /* the flow whose rise the next line speaks of */
-    double least_rise_s;  /* quicker floods than this are not for this method (engine/method.h) */
+    double least_rise_s;  /* quicker floods than this are not for this method (engine/method.h); NAN: no such limit */
+    double diffusion_length_m; /* D/c at the peak */
 };
 
 /* What a gauge upstream is worth for a point. */

@@ -172,7 +172,9 @@ static enum fw_status choose_method(struct route_plan *plan, const char *name, s
     } methods[] = {{"muskingum-cunge", NETWORK_MUSKINGUM_CUNGE},
                    {"auto", NETWORK_MUSKINGUM_CUNGE},
                    {"kinematic", NETWORK_KINEMATIC},
-                   {"kinematic-linear", NETWORK_KINEMATIC_LINEAR}};
+                   {"kinematic-linear", NETWORK_KINEMATIC_LINEAR},
+                   {"dynamic", NETWORK_DYNAMIC},
+                   {"diffusive", NETWORK_DIFFUSIVE}};
     plan->river = plan->settings->river;
     plan->reaches = calloc(plan->river.reach_count + 1, sizeof *plan->reaches);
     if (plan->reaches == NULL)
@@ -185,14 +187,11 @@ static enum fw_status choose_method(struct route_plan *plan, const char *name, s
         if (strcmp(name, methods[index].name) != 0)
             continue;
         for (size_t reach = 0; reach < plan->river.reach_count; reach++)
-            plan->reaches[reach].method = methods[index].method;
+            plan->reaches[reach].method = strcmp(name, "auto") == 0 && plan->reaches[reach].outlet_depth_m > 0.0
+                                              ? NETWORK_DYNAMIC
+                                              : methods[index].method;
         return FW_OK;
     }
-    if (strcmp(name, "diffusive") == 0 || strcmp(name, "dynamic") == 0)
-        return fw_error_set(error, FW_UNAVAILABLE,
-                            "--method: '%s' (the full equations) is not in this version; it has "
-                            "muskingum-cunge, kinematic and kinematic-linear",
-                            name);
     return fw_error_set(error, FW_USAGE,
                         "--method: '%s' is not one of kinematic-linear, kinematic, muskingum-cunge, "
                         "diffusive, dynamic, auto",
@@ -296,8 +295,17 @@ static double between(const double values[], double steps)
     return share > 0.0 ? values[index] + share * (values[index + 1] - values[index]) : values[index];
 }
 
+/* The depth computed, where there is one; elsewhere the level of the flow. */
+static double point_stage_at(const struct route_plan *plan, const struct network *network, size_t point,
+                             double flow_m3s, const double stage_m[], double steps)
+{
+    enum network_method method = plan->reaches[plan->river.points[point].reach_index].method;
+    return network_method_is_full(method) ? between(stage_m, steps)
+                                          : network_point_stage_m(network, point, 0, flow_m3s);
+}
+
 static void print_rows(const struct route_plan *plan, const struct network *network, size_t step_count,
-                       const double inflow_m3s[], const double point_m3s[])
+                       const double inflow_m3s[], const double point_m3s[], const double stage_m[])
 {
     print_header(plan);
     for (size_t row = 0; (double)row * plan->every_s <= plan->until_s - plan->start_s + 1e-6; row++) {
@@ -309,7 +317,8 @@ static void print_rows(const struct route_plan *plan, const struct network *netw
         }
         for (size_t point = 0; point < plan->settings->point_count; point++) {
             double flow = between(point_m3s + point * (step_count + 1), steps);
-            printf(",%.6f,%.4f", flow, network_point_stage_m(network, point, 0, flow));
+            printf(",%.6f,%.4f", flow,
+                   point_stage_at(plan, network, point, flow, stage_m + point * (step_count + 1), steps));
         }
         printf("\n");
     }
@@ -341,10 +350,11 @@ static enum fw_status route(const struct route_plan *plan, struct fw_error *erro
     struct network *network = NULL;
     double *inflow_m3s = calloc(gauges * (step_count + 1) + 1, sizeof(double));
     double *point_m3s = calloc(points * (step_count + 1) + 1, sizeof(double));
+    double *stage_m = calloc(points * (step_count + 1) + 1, sizeof(double));
     double *start_m3s = calloc(gauges + 1, sizeof(double));
     double largest_m3s = 0.0;
     enum fw_status status = FW_OK;
-    if (inflow_m3s == NULL || point_m3s == NULL || start_m3s == NULL) {
+    if (inflow_m3s == NULL || point_m3s == NULL || stage_m == NULL || start_m3s == NULL) {
         status = fw_error_set(error, FW_NO_MEMORY, "no memory for %zu steps", step_count);
         goto cleanup;
     }
@@ -367,17 +377,23 @@ static enum fw_status route(const struct route_plan *plan, struct fw_error *erro
     if (status == FW_OK)
         status = network_start_steady(network, start_m3s);
     if (status == FW_OK)
-        status = network_advance(network, step_count, inflow_m3s, point_m3s);
+        status = network_advance_with_stage(network, step_count, inflow_m3s, point_m3s, stage_m);
     if (status == FW_OK)
-        print_rows(plan, network, step_count, inflow_m3s, point_m3s);
+        print_rows(plan, network, step_count, inflow_m3s, point_m3s, stage_m);
     else if (error->text[0] == '\0')
         fw_error_set(error, status, "the flow could not be routed");
+    if (status == FW_OK && network_steps_replaced(network) > 0)
+        fprintf(stderr,
+                "forewater: note: in %zu of %zu steps the full equations could not be solved; simpler ones without "
+                "backwater took their place (fronts into a nearly dry bed do that)\n",
+                network_steps_replaced(network), step_count);
     if (status == FW_OK && (fflush(stdout) != 0 || ferror(stdout)))
         status = fw_error_set(error, FW_IO, "standard output: %s", strerror(errno));
 cleanup:
     network_destroy(network);
     free(inflow_m3s);
     free(point_m3s);
+    free(stage_m);
     free(start_m3s);
     return status;
 }

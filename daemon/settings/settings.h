@@ -147,8 +147,7 @@ struct settings {
     size_t role_count;
     struct settings_role *roster;
 
-    struct network_river river;     /* ready for network_create; its arrays belong to the settings */
-    const char **reach_outlet_note; /* per reach: NULL, or why its "outlet" cannot be used by this version */
+    struct network_river river; /* ready for network_create; its arrays belong to the settings */
     const char **node_names;
 };
 

@@ -166,18 +166,19 @@ static size_t node_of(struct settings *settings, const char *name)
     return settings->river.node_count++;
 }
 
-static enum network_method method_of(struct settings_work *work, const struct json_value *object)
+static enum network_method method_of(const struct json_value *object)
 {
-    struct json_value *method = settings_work_member(object, "reaches[].method");
-    if (method == NULL || strcmp(method->string, "auto") == 0 || strcmp(method->string, "muskingum-cunge") == 0)
-        return NETWORK_MUSKINGUM_CUNGE;
-    if (strcmp(method->string, "kinematic") == 0)
-        return NETWORK_KINEMATIC;
-    if (strcmp(method->string, "kinematic-linear") == 0)
-        return NETWORK_KINEMATIC_LINEAR;
-    json_tree_fault(work->report, method,
-                    "is not in this version: expected \"auto\", \"muskingum-cunge\", \"kinematic\" or "
-                    "\"kinematic-linear\"");
+    static const struct {
+        const char *word;
+        enum network_method method;
+    } methods[] = {{"kinematic", NETWORK_KINEMATIC},
+                   {"kinematic-linear", NETWORK_KINEMATIC_LINEAR},
+                   {"dynamic", NETWORK_DYNAMIC},
+                   {"diffusive", NETWORK_DIFFUSIVE}};
+    const char *word = settings_work_string(object, "reaches[].method");
+    for (size_t i = 0; word != NULL && i < sizeof methods / sizeof *methods; i++)
+        if (strcmp(word, methods[i].word) == 0)
+            return methods[i].method;
     return NETWORK_MUSKINGUM_CUNGE;
 }
 
@@ -191,20 +192,37 @@ static void build_reach(struct settings_work *work, struct network_reach *reach,
         .length_m = settings_work_number(object, "reaches[].length_m"),
         .slope_m_per_m = settings_work_number(object, "reaches[].slope"),
         .cell_m = number_or_zero(object, "reaches[].cell_m"),
-        .method = method_of(work, object),
+        .method = method_of(object),
     };
     const char *section = settings_work_string(object, "reaches[].section");
     for (size_t i = 0; section != NULL && i < settings->section_count; i++)
         if (settings->section_ids[i] != NULL && strcmp(settings->section_ids[i], section) == 0)
             reach->section = &settings->sections[i];
     struct json_value *outlet = settings_work_member(object, "reaches[].outlet");
-    if (outlet != NULL)
-        json_tree_fault(
-            work->report, outlet,
-            "with a stated level is not in this version: expected none, the river goes on at normal depth");
+    const char *method = settings_work_string(object, "reaches[].method");
+    if (outlet != NULL && (method == NULL || strcmp(method, "auto") == 0))
+        reach->method = NETWORK_DYNAMIC;
+    if (outlet != NULL && !network_method_is_full(reach->method))
+        json_tree_fault(work->report, outlet,
+                        "holds a level: expected \"method\" \"auto\", \"dynamic\" or \"diffusive\" with it");
+    else if (outlet != NULL)
+        reach->outlet_depth_m = settings_work_number(outlet, "reaches[].outlet.stage_m");
     struct json_value *to = settings_work_member(object, "reaches[].to");
     if (to != NULL && reach->from_node == reach->to_node)
         json_tree_fault(work->report, to, "is where the reach begins: expected another node");
+}
+
+/* Once all reaches are known: a level is held where none leaves. */
+static void check_outlets(struct settings_work *work, const struct json_value *reaches)
+{
+    const struct network_river *river = &work->settings->river;
+    const struct json_value *object;
+    size_t reach = 0;
+    for (size_t i = 0; (object = settings_work_next(reaches, &i)) != NULL; reach++)
+        if (river->reaches[reach].outlet_depth_m > 0.0 &&
+            network_reach_from(river, river->reaches[reach].to_node) != NETWORK_NONE)
+            json_tree_fault(work->report, settings_work_member(object, "reaches[].outlet"),
+                            "holds a level in mid-river: expected it where the last reach ends");
 }
 
 static bool build_reaches(struct settings_work *work, const struct json_value *reaches)
@@ -213,13 +231,13 @@ static bool build_reaches(struct settings_work *work, const struct json_value *r
     size_t count = settings_work_count(reaches);
     struct network_reach *built = arena_take(work->arena, count, sizeof *built);
     settings->node_names = arena_take(work->arena, 2 * count, sizeof *settings->node_names);
-    settings->reach_outlet_note = arena_take(work->arena, count, sizeof *settings->reach_outlet_note);
-    if (built == NULL || settings->node_names == NULL || settings->reach_outlet_note == NULL)
+    if (built == NULL || settings->node_names == NULL)
         return false;
     const struct json_value *object;
     for (size_t i = 0; (object = settings_work_next(reaches, &i)) != NULL;)
         build_reach(work, &built[settings->river.reach_count++], object);
     settings->river.reaches = built;
+    check_outlets(work, reaches);
     return true;
 }
 

@@ -206,6 +206,19 @@ static void a_gauge_of_discharge_has_its_own_keys(void **state)
     settings_destroy(settings);
 }
 
+static void an_outlet_holds_a_level_by_the_full_equations(void **state)
+{
+    (void)state;
+    struct settings *settings = read_sound(SETTINGS_OUTLET, SETTINGS_FOR_ROUTE);
+    assert_int_equal(settings->river.reaches[0].method, NETWORK_DYNAMIC); /* it says nothing: auto */
+    assert_true(settings->river.reaches[0].outlet_depth_m == 5.0);
+    settings_destroy(settings);
+    settings = read_sound(SETTINGS_EXAMPLE, SETTINGS_FOR_RUN);
+    assert_int_equal(settings->river.reaches[0].method, NETWORK_MUSKINGUM_CUNGE);
+    assert_true(settings->river.reaches[0].outlet_depth_m == 0.0);
+    settings_destroy(settings);
+}
+
 static void a_point_stands_at_its_node_or_where_it_is_put(void **state)
 {
     (void)state;
@@ -505,6 +518,7 @@ int main(void)
         cmocka_unit_test(the_river_of_the_example_is_ready_for_the_engine),
         cmocka_unit_test(what_is_not_stated_has_the_default_of_the_table),
         cmocka_unit_test(a_gauge_of_discharge_has_its_own_keys),
+        cmocka_unit_test(an_outlet_holds_a_level_by_the_full_equations),
         cmocka_unit_test(a_point_stands_at_its_node_or_where_it_is_put),
         cmocka_unit_test(gauges_above_a_point_are_those_whose_water_passes_it),
         cmocka_unit_test(things_are_found_by_id),

@@ -171,6 +171,28 @@ static void method_cells_and_steps_are_told_per_reach(void **state)
     run_clear(&run);
 }
 
+/* The full equations have a limit of their own: cells against D/c. */
+static void full_equations_are_told_with_their_own_limit(void **state)
+{
+    char *text = changed(read_whole(EXAMPLE), "\"method\": \"auto\"", "\"method\": \"dynamic\"");
+    struct run run = RUN(NULL, "check", "--config", scratch_file(*state, "x.json", text));
+    assert_run(&run, EX_OK);
+    char *block = block_of(run.output, "reach scar-ford:");
+    assert_says(block, "method dynamic, ");
+    assert_says(block, "    knows backwater; at ");
+    assert_null(strstr(block, "    fit for floods")); /* the storage form's limit */
+    free(block);
+    run_clear(&run);
+    free(text);
+    text = changed(read_whole(EXAMPLE), "\"method\": \"auto\"", "\"method\": \"dynamic\", \"cell_m\": 3000");
+    run = RUN(NULL, "check", "--config", scratch_file(*state, "x.json", text));
+    assert_run(&run, EX_OK);
+    assert_says(run.output,
+                ": cells longer than twice that give WRONG LEVELS, this reach is too steep for the method\n");
+    run_clear(&run);
+    free(text);
+}
+
 /* --- need against lead ---------------------------------------------------------------------------------------- */
 
 struct told_lead {
@@ -328,16 +350,14 @@ static void every_fault_of_a_file_comes_in_one_run_with_line_and_key(void **stat
     free(text);
 }
 
-static void what_this_version_cannot_do_is_a_fault(void **state)
+static void what_is_enough_for_route_is_not_enough_to_run(void **state)
 {
     (void)state;
     struct run run = RUN(NULL, "check", "--config", FW_SOURCE_DIR "/tests/data/settings/outlet.json");
     assert_run(&run, EX_CONFIG);
-    assert_says(run.errors, "outlet.json:6: reaches[0].outlet: ");
-    assert_says(run.errors,
-                "outlet.json:1: district: missing: expected an object in { }\n"); /* enough for route only */
+    assert_says(run.errors, "outlet.json:1: district: missing: expected an object in { }\n");
     assert_says(run.errors, "outlet.json:1: store: missing: expected an object in { }\n");
-    assert_says(run.errors, "outlet.json has 7 faults; the first: ");
+    assert_says(run.errors, "outlet.json has 6 faults; the first: ");
     run_clear(&run);
 }
 
@@ -441,12 +461,13 @@ int main(void)
     const struct CMUnitTest tests[] = {
         TEST(travel_times_fall_with_the_flow_up_to_bank_full_and_rise_above),
         TEST(method_cells_and_steps_are_told_per_reach),
+        TEST(full_equations_are_told_with_their_own_limit),
         TEST(the_ford_cannot_be_protected_at_night_by_its_gauge_alone),
         TEST(a_longer_way_to_the_station_takes_the_day_away_too),
         TEST(without_a_trigger_the_engineer_is_asked_for_one),
         TEST(a_point_without_crew_is_watched_only),
         TEST(every_fault_of_a_file_comes_in_one_run_with_line_and_key),
-        TEST(what_this_version_cannot_do_is_a_fault),
+        TEST(what_is_enough_for_route_is_not_enough_to_run),
         TEST(a_file_that_is_no_configuration_is_told_with_its_line),
         TEST(a_bad_command_line_is_a_usage_fault_and_a_missing_file_unavailable),
         TEST(the_same_facts_come_as_json),

@@ -393,10 +393,11 @@ static void a_reach_s_own_cell_length_is_the_same_as_that_number_of_cells(void *
 
 static void every_method_delays_and_none_raises_the_peak(void **state)
 {
-    static const char *const methods[] = {"kinematic-linear", "kinematic", "muskingum-cunge", "auto"};
+    static const char *const methods[] = {"kinematic-linear", "kinematic", "muskingum-cunge", "auto",
+                                          "dynamic",          "diffusive"};
     const char *inflow = scratch_inflow(*state, "head", flood);
-    struct run runs[4];
-    for (size_t i = 0; i < 4; i++) {
+    struct run runs[6];
+    for (size_t i = 0; i < 6; i++) {
         runs[i] = RUN(NULL, "route", "--config", DATA "one_reach.json", "--inflow", inflow, "--method", methods[i],
                       "--until", "30000", "--every", "60");
         assert_run(&runs[i], EX_OK);
@@ -414,8 +415,40 @@ static void every_method_delays_and_none_raises_the_peak(void **state)
     assert_string_not_equal(runs[0].output, runs[1].output);
     assert_string_not_equal(runs[1].output, runs[2].output);
     assert_string_equal(runs[2].output, runs[3].output);
-    for (size_t i = 0; i < 4; i++)
+    assert_string_not_equal(runs[2].output, runs[4].output);
+    assert_string_not_equal(runs[4].output, runs[5].output);
+    for (size_t i = 0; i < 6; i++)
         run_clear(&runs[i]);
+}
+
+/* A lake held 4 m deep at the foot: its level stands there whatever flows, and further up nothing is lower than it. */
+static void a_held_level_stands_at_the_foot_and_backs_the_water_up(void **state)
+{
+    struct run run = RUN(NULL, "route", "--config", DATA "held_level.json", "--inflow",
+                         scratch_inflow(*state, "head", flood), "--until", "30000", "--every", "600");
+    assert_run(&run, EX_OK);
+    struct routed routed = routed_read(&run);
+    for (size_t row = 0; row < routed.row_count; row++) {
+        assert_near(routed_value(&routed, row, "end.stage_m"), 4.0, printed_m);
+        double above = routed_value(&routed, row, "p-4500.stage_m"); /* its bed is 1.8 m above the foot's */
+        assert_true(above >= 2.2 - 0.001 && above < 3.2);
+    }
+    routed_clear(&routed);
+    run_clear(&run);
+}
+
+/* A flood into a bed that is all but dry is more than the full equations can take here: it is said. */
+static void steps_that_were_replaced_are_told(void **state)
+{
+    struct run run = RUN(NULL, "route", "--config", DATA "one_reach.json", "--inflow",
+                         scratch_inflow(*state, "head", "time,discharge_m3s\n0,0\n60,0\n120,150\n3600,150\n"),
+                         "--method", "dynamic");
+    assert_run(&run, EX_OK);
+    assert_says(run.errors, "forewater: note: in ");
+    assert_says(run.errors,
+                " of 61 steps the full equations could not be solved; simpler ones without backwater took "
+                "their place");
+    run_clear(&run);
 }
 
 /* The scheme is of the second order in space and time where the flow is smooth: a step of half the length changes
@@ -521,6 +554,8 @@ int main(void)
         TEST(between_two_cell_boundaries_lies_their_mean),
         TEST(a_reach_s_own_cell_length_is_the_same_as_that_number_of_cells),
         TEST(every_method_delays_and_none_raises_the_peak),
+        TEST(a_held_level_stands_at_the_foot_and_backs_the_water_up),
+        TEST(steps_that_were_replaced_are_told),
         TEST(the_time_step_is_the_one_asked_for),
         TEST(output_comes_at_the_interval_asked_for_until_the_time_asked_for),
         TEST(the_same_command_prints_the_same_bytes),

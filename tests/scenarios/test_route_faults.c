@@ -175,9 +175,6 @@ static void a_bad_command_line_says_what_was_expected(void **state)
     } cases[] = {
         {good, "--method", "euler", EX_USAGE,
          "--method: 'euler' is not one of kinematic-linear, kinematic, muskingum-cunge, diffusive, dynamic, auto"},
-        {good, "--method", "dynamic", EX_UNAVAILABLE,
-         "--method: 'dynamic' (the full equations) is not in this version"},
-        {good, "--method", "diffusive", EX_UNAVAILABLE, "it has muskingum-cunge, kinematic and kinematic-linear"},
         {good, "--step", "0", EX_USAGE, "--step: '0' is not a whole number from 1 to 86400"},
         {good, "--step", "-60", EX_USAGE, "--step: '-60' is not a whole number from 1 to 86400"},
         {good, "--step", "1,5", EX_USAGE, "--step: '1,5' is not a whole number from 1 to 86400"},
@@ -224,15 +221,15 @@ static void every_fault_of_the_configuration_is_told_with_line_and_key(void **st
         "  \"sections\": [ { \"id\": \"s\", \"shape\": \"wide\", \"bottom_m\": 30, \"n\": 3.0 } ],\n"
         "  \"reaches\": [\n"
         "    { \"id\": \"r\", \"from\": \"head\", \"to\": \"end\", \"length_m\": 9000,\n"
-        "      \"slpoe\": 0.001, \"section\": \"s\", \"method\": \"dynamic\",\n"
-        "      \"outlet\": { \"stage_m\": 5.0 } } ],\n"
+        "      \"slpoe\": 0.001, \"section\": \"s\", \"method\": \"kinetic\",\n"
+        "      \"outlet\": { \"stage_m\": -5.0 } } ],\n"
         "  \"points\": [ { \"id\": \"end\" } ]\n}\n";
     struct run run = RUN(NULL, "route", "--config", scratch_file(*state, "x.json", config), "--inflow",
                          scratch_inflow(*state, "head", flood));
     demand(&run, "four faults", EX_CONFIG, "x.json:2: sections[0].n: 3.0 ");
     assert_says(run.errors, "x.json:5: reaches[0].slpoe: unknown key: expected 'slope'?");
     assert_says(run.errors, "x.json:5: reaches[0].method: ");
-    assert_says(run.errors, "x.json:6: reaches[0].outlet: ");
+    assert_says(run.errors, "x.json:6: reaches[0].outlet.stage_m: -5.0 is too small");
     run_clear(&run);
 }
 
