@@ -250,8 +250,8 @@ static const struct settings_key keys[] = {
     WORD("reaches[].method", OPTIONAL, "auto|muskingum-cunge|kinematic|kinematic-linear|diffusive|dynamic",
          "\"auto\"",
          "How it is routed. auto is dynamic above an outlet and muskingum-cunge elsewhere. dynamic solves the full "
-         "equations and knows "
-         "backwater, diffusive the same without inertia: for flat reaches, not for steep or dry ones."),
+         "equations and knows backwater, diffusive the same without inertia: for flat reaches, not for steep or dry "
+         "ones."),
     OTHERWISE("reaches[].cell_m", OPTIONAL, "m", 0.1, 1e6, "chosen from celerity and time step",
               "Length of its cells."),
     ARRAY("reaches[].side_inflow", OPTIONAL, 0, 20, NULL, "Water that no gauge measures, by assumption."),
@@ -265,10 +265,9 @@ static const struct settings_key keys[] = {
     NUMBER("reaches[].side_inflow[].constant_m3s", OPTIONAL, "m3/s", 0, 1e5, "0", "A constant flow."),
     NUMBER("reaches[].side_inflow[].spread", OPTIONAL, "", 0, 5, "0",
            "How uncertain it is, a share. Kept for the ensemble; not used by this version."),
-    OBJECT(
-        "reaches[].outlet", OPTIONAL,
-        "A level held at the foot of a last reach: a lake, a weir pool. Needs method dynamic or diffusive. Without "
-        "one the river goes on at normal depth."),
+    OBJECT("reaches[].outlet", OPTIONAL,
+           "A level held at the foot of a last reach: a lake, a weir pool. Needs method auto, dynamic or diffusive. "
+           "Without one the river goes on at normal depth."),
     NUMBER("reaches[].outlet.stage_m", WANTED, "m", 0.01, 200, NULL, "Level at the foot above the invert."),
 
     ARRAY("points", FOR_RUN, 0, 200, NULL, "The crossings, and other places to look at."),
