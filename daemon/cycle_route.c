@@ -88,6 +88,7 @@ enum fw_status cycle_route(struct cycle *cycle, int64_t now_utc_s, const struct 
         memcpy(start + gauge * cycle->member_count,
                cycle->inflow_m3s + gauge * (cycle->step_count + 1) * cycle->member_count,
                cycle->member_count * sizeof *start);
+    size_t replaced_before = network_steps_replaced(cycle->network);
     status = network_start_steady(cycle->network, start);
     free(start);
     if (status == FW_OK)
@@ -95,5 +96,7 @@ enum fw_status cycle_route(struct cycle *cycle, int64_t now_utc_s, const struct 
                                             cycle->stage_m);
     if (status != FW_OK)
         return fw_error_set(error, status, "the flow could not be routed: an inflow is not finite or is negative");
+    cycle->replaced_share = fmin(1.0, (double)(network_steps_replaced(cycle->network) - replaced_before) /
+                                          (double)(cycle->step_count * cycle->member_count));
     return FW_OK;
 }

@@ -23,11 +23,12 @@ struct cycle {
 
     /* of the present pass */
     int64_t start_utc_s;
-    size_t step_count;  /* from start to now + horizon */
-    bool *has_inflow;   /* [gauge]: there is something to route */
-    double *inflow_m3s; /* [gauge][step + 1][member] */
-    double *point_m3s;  /* [point][step + 1][member] */
-    double *stage_m;    /* [point][step + 1][member], above the point's invert */
+    double replaced_share; /* of the steps of all members, that the full equations could not take */
+    size_t step_count;     /* from start to now + horizon */
+    bool *has_inflow;      /* [gauge]: there is something to route */
+    double *inflow_m3s;    /* [gauge][step + 1][member] */
+    double *point_m3s;     /* [point][step + 1][member] */
+    double *stage_m;       /* [point][step + 1][member], above the point's invert */
 
     /* scratch */
     int64_t *sample_utc_s;

@@ -103,6 +103,7 @@ struct picture {
     char store_trouble[FACT_NOTE_SIZE];
     int64_t away_from_utc_s; /* after a restart: when the run before ended; 0: not */
 
+    double replaced_share; /* of the routing steps, that had to do without backwater; 0 with the storage form */
     size_t gauge_count;
     struct gauge_picture *gauges;
     size_t point_count;

@@ -202,6 +202,7 @@ enum fw_status picture_write_json(const struct settings *settings, const struct 
     add_text(json, "settings", settings->digest);
     add_text(json, "previous_link", picture->newest_link);
     add_bool(json, "store_failing", picture->is_store_failing);
+    add_number(json, "replaced_share", 4, picture->replaced_share);
     add_key(json, "assumed");
     add_string(json, "held, last rise carried forward, recession; uncalibrated");
     add_key(json, "gauges");

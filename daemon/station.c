@@ -232,6 +232,11 @@ static void run_cycle(struct station *station, int64_t now_utc_s)
     if (!was_stored && !was_failing) /* made before the trouble was known; later ones say it themselves */
         mark_not_stored(station->picture, delta.first_message);
     outbox_use_picture(station->outbox, station->picture);
+    if (station->picture->replaced_share > 0.0)
+        journal_say(
+            &station->journal, JOURNAL_WARNING,
+            "routing: the full equations could not take some steps of this forecast; those were routed without "
+            "backwater, and the bulletin says so");
     settle_receipts(station, was_stored);
     say_changes(station, &delta);
     news_clear(&station->news);

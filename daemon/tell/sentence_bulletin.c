@@ -426,16 +426,21 @@ static void add_measured(struct bulletin *bulletin)
         text_add(&roughness, "%s%.*f", i > 0 ? " " : "", decimals_of(settings->roughness_factors[i]),
                  settings->roughness_factors[i]);
     snprintf(share, sizeof share, "%.0f", 100.0 * view->state->unmeasured_share);
+    char replaced[24];
+    snprintf(replaced, sizeof replaced, "%.1f", fmax(0.1, 100.0 * view->picture->replaced_share));
     const struct sentence_field fields[] = {
         {"until", sentence_moment(view, view->state->measured_until_utc_s, until)},
         {"roughness", text_string(&roughness)},
         {"share", share},
+        {"replaced", replaced},
         {0}};
     struct text paragraph = {0};
     bool never_parts = view->state->measured_until_utc_s == PASSAGE_NEVER;
     fill(&paragraph, bulletin, never_parts ? RESTS_ALL_MEASURED : RESTS_MEASURED, fields);
     if (view->state->unmeasured_share >= 0.005)
         fill(&paragraph, bulletin, RESTS_SHARE, fields);
+    if (view->picture->replaced_share > 0.0)
+        fill(&paragraph, bulletin, RESTS_REPLACED, fields);
     text_clear(&roughness);
     end_paragraph(bulletin, &paragraph);
 }

@@ -165,6 +165,8 @@ static const struct sentence_catalogue english = {
                 "roughness {roughness}; uncalibrated.",
             [RESTS_ALL_MEASURED] = "Measured beyond the hours looked ahead; roughness {roughness}, uncalibrated.",
             [RESTS_SHARE] = " No gauge measures {share} % of the flow there.",
+            [RESTS_REPLACED] =
+                " In {replaced} % of its steps the routing had to do without backwater: levels are less sure.",
             [RESTS_PEAK_BEYOND] = " The peak is beyond the highest gauging and may be well off.",
             [RESTS_STAGE_RATING] = "Level there is from a stage rating of its own.",
             [RESTS_PART_BLOCKED] =

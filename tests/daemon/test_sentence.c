@@ -867,6 +867,11 @@ static void with_no_reading(struct night *night)
     night->gauge_pictures[0].newest_utc_s = 0;
 }
 
+static void with_replaced(struct night *night)
+{
+    night->picture.replaced_share = 0.025;
+}
+
 static void with_no_forecast(struct night *night)
 {
     with_no_reading(night);
@@ -1006,6 +1011,7 @@ static void what_is_special_tonight_is_said(void **state)
          "falling 0.50 m/h, seen 21:15, 45 min old, [//] BLIND (limit 25 min), newer readings stand still.",
          with_frozen},
         {"nothing read yet", "Orlin Scar: no reading yet", with_no_reading},
+        {"routed without backwater", "In 2.5 % of its steps the routing had to do without backwater", with_replaced},
         {"no forecast", "There is NO FORECAST for Tallowick Ford", with_no_forecast},
         {"silent for days", "seen Tue 22:00, 3 days old", with_long_silence},
         {"live gauge", "no reading from Orlin Scar by 22:20;", with_live_gauge},
