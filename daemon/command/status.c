@@ -76,7 +76,7 @@ static void print_point(const struct when_zone *zone, const cJSON *point)
     else
         snprintf(wet, sizeof wet, "%s / %s / %s", clock_of(zone, deck, "earliest", times[0]),
                  clock_of(zone, deck, "likely", times[1]), clock_of(zone, deck, "latest", times[2]));
-    printf("%-7s %-19s %-22s %-23s %-9s %s %s\n", clock_of(zone, point, "act_by", times[3]), text_of(point, "name"),
+    printf("%-7s %-19s %-22s %-29s %-9s %s %s\n", clock_of(zone, point, "act_by", times[3]), text_of(point, "name"),
            advice, wet, clock_of(zone, point, "measured_until", times[4]), text_of(road, "state"),
            time_of(road, "at") == PASSAGE_NEVER ? "" : clock_of(zone, road, "at", times[5]));
 }
@@ -113,7 +113,7 @@ static enum fw_status print_picture(const struct settings *settings, const cJSON
     printf("\n\n");
     for (const cJSON *gauge = gauges != NULL ? gauges->child : NULL; gauge != NULL; gauge = gauge->next)
         print_gauge(&settings->zone, gauge, as_of);
-    printf("\n%-7s %-19s %-22s %-23s %-9s %s\n", "ACT BY", "CROSSING", "WATER ADVICE", "DECK WET (early/likely/late)",
+    printf("\n%-7s %-19s %-22s %-29s %-9s %s\n", "ACT BY", "CROSSING", "WATER ADVICE", "DECK WET (early/likely/late)",
            "MEASURED", "ROAD (people)");
     for (int index = 0; index < count; index++)
         rows[index] = cJSON_GetArrayItem(points, index);
