@@ -12,24 +12,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-static size_t allocations_until_failure;
-static size_t blocks_held;
-
-static void *calloc_or_fail(size_t count, size_t size)
-{
-    if (allocations_until_failure == 0)
-        return NULL;
-    allocations_until_failure--;
-    void *block = calloc(count, size);
-    blocks_held += block != NULL;
-    return block;
-}
-
-static void free_and_count(void *block)
-{
-    blocks_held -= block != NULL;
-    free(block);
-}
+#include "tests/engine/failing_memory.h"
 
 #define calloc calloc_or_fail
 #define free free_and_count
