@@ -46,16 +46,6 @@ static int64_t measured_until(const struct cycle *cycle, size_t point)
     return isfinite(earliest_s) ? cycle->start_utc_s + (int64_t)floor(earliest_s) : PASSAGE_NEVER;
 }
 
-/* Does water at this node come past the reach? */
-static bool drains_through(const struct network_river *river, size_t node, size_t wanted_reach)
-{
-    for (size_t reach; (reach = network_reach_from(river, node)) != NETWORK_NONE;
-         node = river->reaches[reach].to_node)
-        if (reach == wanted_reach)
-            return true;
-    return false;
-}
-
 /*
  * Side water that enters above the point and no gauge measures, as a share of all water on its way there. Both are taken at the gauges' newest
  * flow, so that the share does not swing with where on the river a flood's front is.
@@ -73,7 +63,8 @@ static double unmeasured_share(const struct cycle *cycle, const struct picture *
         const struct network_side_inflow *inflow = &river->side_inflows[side];
         bool is_above = inflow->reach_index == place->reach_index
                             ? inflow->at_m < place->at_m
-                            : drains_through(river, river->reaches[inflow->reach_index].to_node, place->reach_index);
+                            : network_leads_to(river, river->reaches[inflow->reach_index].to_node,
+                                               river->reaches[place->reach_index].from_node);
         if (is_above)
             unmeasured_m3s += inflow->share_of_gauge == NETWORK_NONE
                                   ? inflow->constant_m3s

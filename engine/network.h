@@ -92,6 +92,28 @@ static inline size_t network_reach_from(const struct network_river *river, size_
     return NETWORK_NONE;
 }
 
+/* The first reach that ends in a node; NETWORK_NONE: it is a head. */
+static inline size_t network_reach_into(const struct network_river *river, size_t node)
+{
+    for (size_t reach = 0; reach < river->reach_count; reach++)
+        if (river->reaches[reach].to_node == node)
+            return reach;
+    return NETWORK_NONE;
+}
+
+/* Does the water at one node come past the other? Steps are counted, so that a river not yet checked for rings can be asked. */
+static inline bool network_leads_to(const struct network_river *river, size_t from_node, size_t to_node)
+{
+    size_t node = from_node;
+    for (size_t steps = 0; steps <= river->reach_count && node != to_node; steps++) {
+        size_t reach = network_reach_from(river, node);
+        if (reach == NETWORK_NONE)
+            return false;
+        node = river->reaches[reach].to_node;
+    }
+    return node == to_node;
+}
+
 struct network_options {
     double time_step_s;
     size_t fixed_cell_count; /* per reach; 0: chosen */

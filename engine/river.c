@@ -182,23 +182,6 @@ enum fw_status river_check_values(const struct network_river *river, const struc
     return status;
 }
 
-/* The first reach that ends in (or leaves) a node, or NETWORK_NONE. */
-static size_t reach_into(const struct network_river *river, size_t node)
-{
-    for (size_t i = 0; i < river->reach_count; i++)
-        if (river->reaches[i].to_node == node)
-            return i;
-    return NETWORK_NONE;
-}
-
-static size_t reach_out_of(const struct network_river *river, size_t node)
-{
-    for (size_t i = 0; i < river->reach_count; i++)
-        if (river->reaches[i].from_node == node)
-            return i;
-    return NETWORK_NONE;
-}
-
 static size_t gauge_at(const struct network_river *river, size_t node)
 {
     for (size_t i = 0; i < river->gauge_count; i++)
@@ -211,14 +194,14 @@ static enum fw_status check_gauges(const struct network_river *river, struct net
 {
     for (size_t i = 0; i < river->gauge_count; i++) {
         size_t node = river->gauge_node[i];
-        size_t above = reach_into(river, node);
+        size_t above = network_reach_into(river, node);
         if (gauge_at(river, node) != i)
             return fault(fault_out, "gauge_node[%zu]: node %zu has gauge %zu already", i, node,
                          gauge_at(river, node));
         if (above != NETWORK_NONE)
             return fault(fault_out, "reach '%s': ends at the gauge of node %zu; a gauge must stand at a head",
                          river->reaches[above].id, node);
-        if (reach_out_of(river, node) == NETWORK_NONE)
+        if (network_reach_from(river, node) == NETWORK_NONE)
             return fault(fault_out, "gauge_node[%zu]: no reach leaves node %zu", i, node);
     }
     return FW_OK;
@@ -227,15 +210,16 @@ static enum fw_status check_gauges(const struct network_river *river, struct net
 static enum fw_status check_nodes(const struct network_river *river, struct network_fault *fault_out)
 {
     for (size_t node = 0; node < river->node_count; node++)
-        if (reach_into(river, node) == NETWORK_NONE && reach_out_of(river, node) == NETWORK_NONE)
+        if (network_reach_into(river, node) == NETWORK_NONE && network_reach_from(river, node) == NETWORK_NONE)
             return fault(fault_out, "node %zu: no reach begins or ends there", node);
     for (size_t i = 0; i < river->reach_count; i++) {
         const struct network_reach *reach = &river->reaches[i];
-        size_t leaving = reach_out_of(river, reach->from_node);
+        size_t leaving = network_reach_from(river, reach->from_node);
         if (leaving != i)
             return fault(fault_out, "reach '%s': leaves node %zu, as reach '%s' does; a river does not fork",
                          reach->id, reach->from_node, river->reaches[leaving].id);
-        if (reach_into(river, reach->from_node) == NETWORK_NONE && gauge_at(river, reach->from_node) == NETWORK_NONE)
+        if (network_reach_into(river, reach->from_node) == NETWORK_NONE &&
+            gauge_at(river, reach->from_node) == NETWORK_NONE)
             return fault(fault_out,
                          "reach '%s': nothing flows into its head, node %zu: no gauge there, and no reach ends",
                          reach->id, reach->from_node);
@@ -262,7 +246,7 @@ enum fw_status river_order(const struct network_river *river, size_t order_out[]
             order_out[count++] = i;
     for (size_t done = 0; done < count; done++) {
         size_t node = river->reaches[order_out[done]].to_node;
-        size_t below = reach_out_of(river, node);
+        size_t below = network_reach_from(river, node);
         if (--waiting[node] == 0 && below != NETWORK_NONE)
             order_out[count++] = below;
     }

@@ -189,25 +189,10 @@ size_t settings_point_index(const struct settings *settings, const char *id)
     return SETTINGS_NONE;
 }
 
-/* Does the river lead from one node down to the other? Rings were refused, but the steps are counted all the same. */
-static bool leads_to(const struct network_river *river, size_t from_node, size_t to_node)
-{
-    size_t node = from_node;
-    for (size_t steps = 0; steps <= river->reach_count && node != to_node; steps++) {
-        size_t reach = 0;
-        while (reach < river->reach_count && river->reaches[reach].from_node != node)
-            reach++;
-        if (reach == river->reach_count)
-            return false;
-        node = river->reaches[reach].to_node;
-    }
-    return node == to_node;
-}
-
 void settings_gauges_above(const struct settings *settings, size_t point, bool is_upstream_out[])
 {
     const struct network_river *river = &settings->river;
     size_t head = river->reaches[settings->points[point].reach].from_node;
     for (size_t i = 0; i < settings->gauge_count; i++)
-        is_upstream_out[i] = leads_to(river, settings->gauges[i].node, head);
+        is_upstream_out[i] = network_leads_to(river, settings->gauges[i].node, head);
 }

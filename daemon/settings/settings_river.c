@@ -311,22 +311,6 @@ static bool is_gauge_node(const struct settings *settings, size_t node)
     return false;
 }
 
-static size_t reach_into(const struct network_river *river, size_t node)
-{
-    for (size_t i = 0; i < river->reach_count; i++)
-        if (river->reaches[i].to_node == node)
-            return i;
-    return NETWORK_NONE;
-}
-
-static size_t reach_out_of(const struct network_river *river, size_t node)
-{
-    for (size_t i = 0; i < river->reach_count; i++)
-        if (river->reaches[i].from_node == node)
-            return i;
-    return NETWORK_NONE;
-}
-
 static bool place_gauges(struct settings_work *work)
 {
     struct settings *settings = work->settings;
@@ -343,7 +327,7 @@ static bool place_gauges(struct settings_work *work)
             if (strcmp(settings->node_names[n], id->string) == 0)
                 node = n;
         settings->gauges[gauge].node = gauge_node[gauge] = node;
-        size_t into = node != NETWORK_NONE ? reach_into(&settings->river, node) : NETWORK_NONE;
+        size_t into = node != NETWORK_NONE ? network_reach_into(&settings->river, node) : NETWORK_NONE;
         if (id != NULL && node == NETWORK_NONE)
             json_tree_fault(work->report, id, "stands at no reach: expected a reach with this id as its 'from'");
         else if (id != NULL && into != NETWORK_NONE)
@@ -362,7 +346,7 @@ static bool is_in_ring(const struct network_river *river, size_t reach, size_t *
     size_t at = reach;
     *last = reach;
     for (size_t steps = 0; steps < river->reach_count; steps++) {
-        at = reach_out_of(river, river->reaches[at].to_node);
+        at = network_reach_from(river, river->reaches[at].to_node);
         if (at == NETWORK_NONE)
             return false;
         *last = at > *last ? at : *last;
@@ -381,7 +365,7 @@ static void report_no_inflow(struct settings_work *work, struct json_value *from
     for (size_t i = 0; i < settings->gauge_count && count < CANDIDATES_MAX; i++)
         candidates[count++] = settings->gauges[i].id;
     for (size_t i = 0; i < settings->river.node_count && count < CANDIDATES_MAX; i++)
-        if (reach_into(&settings->river, i) != NETWORK_NONE)
+        if (network_reach_into(&settings->river, i) != NETWORK_NONE)
             candidates[count++] = settings->node_names[i];
     const char *nearest = settings_report_nearest(from->string, count, candidates);
     json_tree_fault(work->report, from, "has no inflow: expected a gauge, or a node where another reach ends%s%s%s",
@@ -398,12 +382,12 @@ static void check_tree(struct settings_work *work, const struct json_value *reac
     for (size_t i = 0; (object = settings_work_next(reaches, &i)) != NULL; reach++) {
         struct json_value *from = settings_work_member(object, "reaches[].from");
         struct json_value *to = settings_work_member(object, "reaches[].to");
-        size_t first_out = reach_out_of(river, river->reaches[reach].from_node);
+        size_t first_out = network_reach_from(river, river->reaches[reach].from_node);
         size_t last_in_ring = 0;
         if (first_out < reach)
             json_tree_fault(work->report, from, "has two reaches that leave it, '%s' and this one: expected one",
                             river->reaches[first_out].id != NULL ? river->reaches[first_out].id : "?");
-        else if (reach_into(river, river->reaches[reach].from_node) == NETWORK_NONE &&
+        else if (network_reach_into(river, river->reaches[reach].from_node) == NETWORK_NONE &&
                  !is_gauge_node(settings, river->reaches[reach].from_node))
             report_no_inflow(work, from);
         if (is_in_ring(river, reach, &last_in_ring) && last_in_ring == reach && !to->is_faulty)
