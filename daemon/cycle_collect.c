@@ -4,6 +4,8 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "daemon/feed/quantity.h"
+
 enum { KEPT_BEYOND_WARM_UP_S = 6 * 3600, MESSAGES_KEPT_S = 48 * 3600 };
 
 static enum fw_status take_reading(struct delta *delta, const struct reading *reading)
@@ -28,10 +30,6 @@ static enum fw_status take_hand_reading(struct cycle *cycle, struct delta *delta
     size_t gauge = settings_gauge_index(cycle->settings, word->subject);
     if (gauge == SETTINGS_NONE)
         return FW_OK;
-    static const struct {
-        const char *unit;
-        double factor;
-    } units[] = {{"m", 1.0}, {"cm", 0.01}, {"mm", 0.001}, {"ft", 0.3048}, {"m3/s", 1.0}, {"l/s", 0.001}};
     struct reading reading = {.gauge = (int32_t)gauge,
                               .source = FACT_SOURCE_HAND,
                               .observed_utc_s = word->at_utc_s,
@@ -40,9 +38,8 @@ static enum fw_status take_hand_reading(struct cycle *cycle, struct delta *delta
                               .received_utc_s = word->received_utc_s};
     memcpy(reading.unit, word->unit, sizeof reading.unit);
     memcpy(reading.by, word->by, sizeof reading.by);
-    for (size_t unit = 0; unit < sizeof units / sizeof *units; unit++)
-        if (strcmp(units[unit].unit, word->unit) == 0)
-            reading.value_si = word->value * units[unit].factor;
+    if (quantity_to_si(word->value, word->unit, cycle->settings->gauges[gauge].measures, &reading.value_si) != FW_OK)
+        reading.value_si = word->value; /* no unit of this gauge: the inbox refuses such a word */
     return take_reading(delta, &reading);
 }
 

@@ -8,6 +8,7 @@
 
 #include "daemon/command/table.h"
 #include "daemon/feed/inbox.h"
+#include "daemon/feed/quantity.h"
 #include "daemon/store/store.h"
 
 static enum fw_status add_reading(struct replay_input *input, const struct reading *reading, struct fw_error *error)
@@ -72,8 +73,7 @@ static enum fw_status read_reading(const struct settings *settings, size_t gauge
                             settings->gauges[gauge].feed_count - 1);
     reading.source = (int32_t)source;
     reading.value_si = reading.value;
-    snprintf(reading.unit, sizeof reading.unit, "%s",
-             settings->gauges[gauge].measures == SETTINGS_STAGE ? "m" : "m3/s");
+    snprintf(reading.unit, sizeof reading.unit, "%s", quantity_default_unit(settings->gauges[gauge].measures));
     *reading_out = reading;
     return FW_OK;
 }

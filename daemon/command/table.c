@@ -3,14 +3,13 @@
 
 #include <csv.h>
 #include <errno.h>
-#include <locale.h>
-#include <math.h>
 #include <stdbool.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
 #include "daemon/buffer.h"
+#include "daemon/feed/quantity.h"
 
 struct reader {
     struct table *table;
@@ -164,16 +163,9 @@ enum fw_status table_number(const struct table *table, size_t row, size_t column
             "%s:%zu: %s: '%s' stands in a row of %zu cells, but the header names %zu columns: expected "
             "a decimal point, not a comma",
             table->file, table->line[row + 1], column_name(table, column), text, cell_count, table->first_cell[1]);
-    locale_t plain = newlocale(LC_NUMERIC_MASK, "C", (locale_t)0);
-    char *end = NULL;
-    bool is_decimal = strspn(text, "+-0123456789.eE") == strlen(text); /* not hexadecimal, nor a word */
-    double value = plain != (locale_t)0 && is_decimal ? strtod_l(text, &end, plain) : NAN;
-    if (plain != (locale_t)0)
-        freelocale(plain);
-    if (end == NULL || end == text || *end != '\0' || !isfinite(value))
+    if (!quantity_read_number(text, value_out))
         return fw_error_set(error, FW_BAD_INPUT, "%s:%zu: %s: '%s' is not a number with a decimal point", table->file,
                             table->line[row + 1], column_name(table, column), text);
-    *value_out = value;
     return FW_OK;
 }
 

@@ -230,6 +230,29 @@ static void a_reach_by_the_full_equations_brings_the_water_at_the_same_time(void
     assert_true(llabs((long long)(likely[1] - likely[0])) <= 180);
 }
 
+static void a_hand_reading_in_centimetres_is_the_metres_a_feed_would_have_made_of_it(void **state)
+{
+    (void)state;
+    struct scene scene = scene_open(NULL, NULL);
+    struct news news = {0};
+    struct word word = {.id = "hand",
+                        .kind = WORD_READING,
+                        .subject = "orlin-scar",
+                        .value = 139.0,
+                        .unit = "cm",
+                        .by = "catchment technician",
+                        .at_utc_s = SCENE_START,
+                        .received_utc_s = SCENE_START};
+    assert_int_equal(news_add_word(&news, &word), FW_OK);
+    struct delta delta = scene_run(&scene, &news, SCENE_START);
+    assert_int_equal(delta.reading_count, 1);
+    assert_true(delta.readings[0].value_si == 1.39); /* to the last bit: 139 x 0.01 is another number */
+    assert_true(delta.readings[0].value == 139.0);
+    delta_clear(&delta);
+    news_clear(&news);
+    scene_close(&scene);
+}
+
 static void the_links_of_two_cycles_make_a_chain(void **state)
 {
     (void)state;
@@ -259,6 +282,7 @@ int main(void)
         cmocka_unit_test(a_district_without_any_reading_is_blind_and_not_quiet),
         cmocka_unit_test(what_rests_on_measured_water_stands_whatever_comes),
         cmocka_unit_test(a_reach_by_the_full_equations_brings_the_water_at_the_same_time),
+        cmocka_unit_test(a_hand_reading_in_centimetres_is_the_metres_a_feed_would_have_made_of_it),
         cmocka_unit_test(the_links_of_two_cycles_make_a_chain),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
