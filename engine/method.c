@@ -2,6 +2,30 @@
 #include "engine/method.h"
 
 #include <math.h>
+#include <stddef.h>
+#include <string.h>
+
+static const char *const names[] = {[NETWORK_MUSKINGUM_CUNGE] = "muskingum-cunge",
+                                    [NETWORK_KINEMATIC] = "kinematic",
+                                    [NETWORK_KINEMATIC_LINEAR] = "kinematic-linear",
+                                    [NETWORK_DYNAMIC] = "dynamic",
+                                    [NETWORK_DIFFUSIVE] = "diffusive"};
+enum { NAME_COUNT = sizeof names / sizeof *names };
+
+const char *method_name(enum network_method method)
+{
+    return (size_t)method < NAME_COUNT ? names[method] : "?";
+}
+
+bool method_from_name(const char *name, enum network_method *method_out)
+{
+    for (size_t method = 0; method < NAME_COUNT; method++)
+        if (strcmp(name, names[method]) == 0) {
+            *method_out = (enum network_method)method;
+            return true;
+        }
+    return false;
+}
 
 double method_storage_number(double length_m, double celerity_m_s, double diffusivity_m2_s, double rise_s)
 {

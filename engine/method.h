@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * Is the storage form fit for a reach and a flood? Two numbers without units decide, taken at the flood's peak:
+ * What the methods are called, and whether the storage form is fit for a reach and a flood.
+ * Two numbers without units decide, taken at the flood's peak:
  *     eps = D / (c^2 T)   the time a wave needs to spread by itself, against its rise
  *     lam = L / (c T)     how long the reach is, against the rise
  * with the celerity c, the hydraulic diffusivity D, the reach length L and the rise time T = (Qpeak - Qbase) / max(dQ/dt). The
@@ -12,7 +13,16 @@
 #ifndef FOREWATER_ENGINE_METHOD_H
 #define FOREWATER_ENGINE_METHOD_H
 
+#include <stdbool.h>
+
+#include "engine/network.h"
+
 #define METHOD_STORAGE_LIMIT 0.007
+
+/* The words people write and read: "muskingum-cunge". */
+const char *method_name(enum network_method method);
+/* False, and nothing written, for any other word; "auto" is a choice, not a method. */
+bool method_from_name(const char *name, enum network_method *method_out);
 
 /* eps^1.5 lam. All arguments positive, SI. */
 double method_storage_number(double length_m, double celerity_m_s, double diffusivity_m2_s, double rise_s);

@@ -79,14 +79,9 @@ static size_t reach_flows(const struct check_facts *facts, double bank_full, dou
 enum fw_status check_facts_reach(const struct check_facts *facts, size_t index, struct check_reach *reach_out,
                                  struct fw_error *error)
 {
-    static const char *const method_names[] = {[NETWORK_MUSKINGUM_CUNGE] = "muskingum-cunge",
-                                               [NETWORK_KINEMATIC] = "kinematic",
-                                               [NETWORK_KINEMATIC_LINEAR] = "kinematic-linear",
-                                               [NETWORK_DYNAMIC] = "dynamic",
-                                               [NETWORK_DIFFUSIVE] = "diffusive"};
     const struct network_reach *reach = &facts->settings->river.reaches[index];
     struct check_reach found = {.reach = reach,
-                                .method = method_names[reach->method],
+                                .method = method_name(reach->method),
                                 .bank_full_m3s = bank_full_m3s(reach),
                                 .peak_m3s = facts->flows_m3s[FLOW_COUNT - 2]};
     double flows_m3s[FLOW_COUNT + 1];

@@ -11,6 +11,7 @@
 #include "daemon/command/options.h"
 #include "daemon/command/table.h"
 #include "daemon/facts.h"
+#include "engine/method.h"
 
 enum {
     STEPS_MOST = 4000000,
@@ -166,15 +167,7 @@ static enum fw_status read_inflows(struct route_plan *plan, const struct option_
 
 static enum fw_status choose_method(struct route_plan *plan, const char *name, struct fw_error *error)
 {
-    static const struct {
-        const char *name;
-        enum network_method method;
-    } methods[] = {{"muskingum-cunge", NETWORK_MUSKINGUM_CUNGE},
-                   {"auto", NETWORK_MUSKINGUM_CUNGE},
-                   {"kinematic", NETWORK_KINEMATIC},
-                   {"kinematic-linear", NETWORK_KINEMATIC_LINEAR},
-                   {"dynamic", NETWORK_DYNAMIC},
-                   {"diffusive", NETWORK_DIFFUSIVE}};
+    enum network_method method = NETWORK_MUSKINGUM_CUNGE;
     plan->river = plan->settings->river;
     plan->reaches = calloc(plan->river.reach_count + 1, sizeof *plan->reaches);
     if (plan->reaches == NULL)
@@ -183,19 +176,15 @@ static enum fw_status choose_method(struct route_plan *plan, const char *name, s
     plan->river.reaches = plan->reaches;
     if (name == NULL)
         return FW_OK;
-    for (size_t index = 0; index < sizeof methods / sizeof *methods; index++) {
-        if (strcmp(name, methods[index].name) != 0)
-            continue;
-        for (size_t reach = 0; reach < plan->river.reach_count; reach++)
-            plan->reaches[reach].method = strcmp(name, "auto") == 0 && plan->reaches[reach].outlet_depth_m > 0.0
-                                              ? NETWORK_DYNAMIC
-                                              : methods[index].method;
-        return FW_OK;
-    }
-    return fw_error_set(error, FW_USAGE,
-                        "--method: '%s' is not one of kinematic-linear, kinematic, muskingum-cunge, "
-                        "diffusive, dynamic, auto",
-                        name);
+    bool is_auto = strcmp(name, "auto") == 0;
+    if (!is_auto && !method_from_name(name, &method))
+        return fw_error_set(error, FW_USAGE,
+                            "--method: '%s' is not one of kinematic-linear, kinematic, muskingum-cunge, "
+                            "diffusive, dynamic, auto",
+                            name);
+    for (size_t reach = 0; reach < plan->river.reach_count; reach++)
+        plan->reaches[reach].method = is_auto && plan->reaches[reach].outlet_depth_m > 0.0 ? NETWORK_DYNAMIC : method;
+    return FW_OK;
 }
 
 static enum fw_status plan_times(struct route_plan *plan, const char *until, long every_s, long step_s,

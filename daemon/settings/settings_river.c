@@ -6,6 +6,7 @@
 #include <stdio.h>
 #include <string.h>
 
+#include "engine/method.h"
 #include "engine/river.h"
 
 static const double MINUTE_S = 60;
@@ -168,18 +169,9 @@ static size_t node_of(struct settings *settings, const char *name)
 
 static enum network_method method_of(const struct json_value *object)
 {
-    static const struct {
-        const char *word;
-        enum network_method method;
-    } methods[] = {{"kinematic", NETWORK_KINEMATIC},
-                   {"kinematic-linear", NETWORK_KINEMATIC_LINEAR},
-                   {"dynamic", NETWORK_DYNAMIC},
-                   {"diffusive", NETWORK_DIFFUSIVE}};
     const char *word = settings_work_string(object, "reaches[].method");
-    for (size_t i = 0; word != NULL && i < sizeof methods / sizeof *methods; i++)
-        if (strcmp(word, methods[i].word) == 0)
-            return methods[i].method;
-    return NETWORK_MUSKINGUM_CUNGE;
+    enum network_method method = NETWORK_MUSKINGUM_CUNGE; /* auto, or not stated */
+    return word != NULL && method_from_name(word, &method) ? method : NETWORK_MUSKINGUM_CUNGE;
 }
 
 static void build_reach(struct settings_work *work, struct network_reach *reach, const struct json_value *object)

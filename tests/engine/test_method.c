@@ -29,6 +29,22 @@ static void the_least_rise_is_where_the_number_is_the_limit(void **state)
     }
 }
 
+static void every_method_is_found_by_its_name_and_no_other_word_is(void **state)
+{
+    (void)state;
+    static const char *const others[] = {"", "auto", "Dynamic", "kinematic-", "muskingum"};
+    for (int method = NETWORK_MUSKINGUM_CUNGE; method <= NETWORK_DIFFUSIVE; method++) {
+        enum network_method found = NETWORK_MUSKINGUM_CUNGE;
+        assert_true(method_from_name(method_name((enum network_method)method), &found));
+        assert_int_equal(found, method);
+    }
+    for (size_t index = 0; index < sizeof others / sizeof *others; index++) {
+        enum network_method found = NETWORK_DIFFUSIVE;
+        assert_false(method_from_name(others[index], &found));
+        assert_int_equal(found, NETWORK_DIFFUSIVE);
+    }
+}
+
 /* Q = 100 + 800 [(t/Tp) e^(1 - t/Tp)]^16, Tp = 24 h; the rise is 800 over its steepest slope, found by small steps. */
 static double published_rise_s(void)
 {
@@ -77,6 +93,7 @@ int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(the_least_rise_is_where_the_number_is_the_limit),
+        cmocka_unit_test(every_method_is_found_by_its_name_and_no_other_word_is),
         cmocka_unit_test(the_rule_parts_the_published_waves_that_the_storage_form_meets_from_those_it_misses),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
