@@ -204,6 +204,15 @@ size_t network_steps_below_zero(const struct network *network);
  */
 size_t network_steps_replaced(const struct network *network);
 
+/*
+ * All that stepping depends on, and the counters above, as network_state_count doubles. Restored into the same network, or another made
+ * from the same river and options, the next steps are the same bit for bit as if the network had never stopped. The caller must
+ * not change them; from another network they mean nothing. Neither fails nor allocates.
+ */
+size_t network_state_count(const struct network *network);
+void network_state_save(const struct network *network, double to[]);
+void network_state_restore(struct network *network, const double from[]);
+
 struct network_reach_steps {
     size_t cell_count;
     double cell_m;
