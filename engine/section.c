@@ -8,6 +8,7 @@
 
 #include <math.h>
 
+#define ALL_PANELS ((size_t)-1)
 enum { NEWTON_ONLY = 12, ITERATIONS_MAX = 240 };
 
 static const double DEEPEST_M = 1e30;
@@ -161,10 +162,17 @@ enum fw_status section_check(const struct section *section, const char **fault_o
 
 /* --- geometry --------------------------------------------------------------------------------------------------- */
 
-static void add_panel(const struct wetted *panel, double roughness_n, struct section_properties *sum,
-                      double *width_rate_sum)
+/* What is asked for: the sums over all panels, or those of one. */
+struct panel_sums {
+    size_t only; /* or ALL_PANELS */
+    struct section_properties *properties;
+    double width_rate;
+};
+
+static void add_panel(const struct wetted *panel, size_t index, double roughness_n, struct panel_sums *sums)
 {
-    if (panel->area_m2 <= 0)
+    struct section_properties *sum = sums->properties;
+    if (panel->area_m2 <= 0 || (sums->only != ALL_PANELS && sums->only != index))
         return;
     double root = cbrt(panel->area_m2 / panel->perimeter_m);
     double conveyance_m3s = panel->area_m2 * root * root / roughness_n;
@@ -174,11 +182,10 @@ static void add_panel(const struct wetted *panel, double roughness_n, struct sec
     sum->conveyance_m3s += conveyance_m3s;
     sum->conveyance_slope_m2s +=
         conveyance_m3s * (5 * panel->width_m / panel->area_m2 - 2 * panel->perimeter_rate / panel->perimeter_m) / 3;
-    *width_rate_sum += panel->width_rate;
+    sums->width_rate += panel->width_rate;
 }
 
-static void measure_simple_shape(const struct section *section, double depth_m, struct section_properties *sum,
-                                 double *width_rate_sum)
+static void measure_simple_shape(const struct section *section, double depth_m, struct panel_sums *sums)
 {
     const bool is_over_bank = section->has_plain && depth_m > section->plain_above_m;
     const bool do_banks_rub = section->shape != SECTION_WIDE;
@@ -194,7 +201,7 @@ static void measure_simple_shape(const struct section *section, double depth_m, 
         .perimeter_m = section->bottom_m + bank_length * in_bank_m,
         .perimeter_rate = is_over_bank ? 0 : bank_length,
     };
-    add_panel(&channel, section->roughness_n, sum, width_rate_sum);
+    add_panel(&channel, 0, section->roughness_n, sums);
     if (!is_over_bank)
         return;
     const double end_walls = do_banks_rub ? 2 : 0;
@@ -204,7 +211,7 @@ static void measure_simple_shape(const struct section *section, double depth_m, 
         .perimeter_m = section->plain_width_m + end_walls * over_bank_m,
         .perimeter_rate = end_walls,
     };
-    add_panel(&plain, section->plain_roughness_n, sum, width_rate_sum);
+    add_panel(&plain, 1, section->plain_roughness_n, sums);
 }
 
 static struct bed_walk start_of_bed(const struct section *section)
@@ -278,8 +285,7 @@ static void add_end_wall(double end_height_m, double depth_m, struct wetted *pan
     panel->perimeter_rate += 1;
 }
 
-static void measure_points(const struct section *section, double depth_m, struct section_properties *sum,
-                           double *width_rate_sum)
+static void measure_points(const struct section *section, double depth_m, struct panel_sums *sums)
 {
     const double whole_n = section->roughness_n;
     const double *panel_n = section->panel_count == 0 ? &whole_n : section->panel_roughness_n;
@@ -287,36 +293,55 @@ static void measure_points(const struct section *section, double depth_m, struct
     struct bed_piece piece;
     struct wetted panel = {0};
     size_t panel_index = 0;
-    add_end_wall(walk.height_m, depth_m, &panel, &sum->is_above_survey);
+    add_end_wall(walk.height_m, depth_m, &panel, &sums->properties->is_above_survey);
     while (next_bed_piece(section, &walk, &piece)) {
         if (piece.panel != panel_index) {
-            add_panel(&panel, panel_n[panel_index], sum, width_rate_sum);
+            add_panel(&panel, panel_index, panel_n[panel_index], sums);
             panel = (struct wetted){0};
             panel_index = piece.panel;
         }
         add_bed_piece(&piece, depth_m, &panel);
     }
-    add_end_wall(walk.height_m, depth_m, &panel, &sum->is_above_survey);
-    add_panel(&panel, panel_n[panel_index], sum, width_rate_sum);
+    add_end_wall(walk.height_m, depth_m, &panel, &sums->properties->is_above_survey);
+    add_panel(&panel, panel_index, panel_n[panel_index], sums);
+}
+
+static void measure_panels(const struct section *section, size_t only, double depth_m,
+                           struct section_properties *properties_out, double *width_rate_out)
+{
+    *properties_out = (struct section_properties){0};
+    struct panel_sums sums = {.only = only, .properties = properties_out};
+    if (depth_m > 0 && section->shape == SECTION_POINTS)
+        measure_points(section, depth_m, &sums);
+    else if (depth_m > 0)
+        measure_simple_shape(section, depth_m, &sums);
+    *width_rate_out = sums.width_rate;
 }
 
 static void measure(const struct section *section, double depth_m, struct section_properties *properties_out,
                     double *width_rate_out)
 {
-    *properties_out = (struct section_properties){0};
-    *width_rate_out = 0;
-    if (!(depth_m > 0))
-        return;
-    if (section->shape == SECTION_POINTS)
-        measure_points(section, depth_m, properties_out, width_rate_out);
-    else
-        measure_simple_shape(section, depth_m, properties_out, width_rate_out);
+    measure_panels(section, ALL_PANELS, depth_m, properties_out, width_rate_out);
 }
 
 void section_properties_at(const struct section *section, double depth_m, struct section_properties *properties_out)
 {
     double width_rate;
     measure(section, depth_m, properties_out, &width_rate);
+}
+
+size_t section_panel_count(const struct section *section)
+{
+    if (section->shape != SECTION_POINTS)
+        return section->has_plain ? 2 : 1;
+    return section->panel_count > 0 ? section->panel_count : 1;
+}
+
+void section_panel_at(const struct section *section, size_t panel, double depth_m,
+                      struct section_properties *properties_out)
+{
+    double width_rate;
+    measure_panels(section, panel, depth_m, properties_out, &width_rate);
 }
 
 /* The first height above a depth at which a bank, a bed piece or a plain begins or ends; INFINITY above them all. */

@@ -71,6 +71,14 @@ FW_MUST_CHECK enum fw_status section_check(const struct section *section, const 
 void section_properties_at(const struct section *section, double depth_m, struct section_properties *properties_out);
 
 /*
+ * One panel's share of them, the same rules holding; zero where it is dry. A channel is panel 0 and the plain beside it 1;
+ * surveyed panels count from the left.
+ */
+size_t section_panel_count(const struct section *section);
+void section_panel_at(const struct section *section, size_t panel, double depth_m,
+                      struct section_properties *properties_out);
+
+/*
  * Whether conveyance falls somewhere as the water rises, and from which depth on: water that spreads over a berm
  * within one panel adds perimeter before area, and the divided-channel rule then takes flow away. The cure is a panel
  * boundary at the edge of the berm.

@@ -104,3 +104,9 @@ double stage_structure_depth_above_m(const struct stage_structure *structure, do
     }
     return 0.5 * (low + high);
 }
+
+double stage_structure_drowned_share(double ratio)
+{
+    double slope;
+    return ratio > 0.0 ? drowned_factor(fmin(ratio, 1.0), &slope) : 1.0;
+}

@@ -45,4 +45,7 @@ struct stage_flow stage_structure_flow(const struct stage_structure *structure, 
 double stage_structure_depth_above_m(const struct stage_structure *structure, double discharge_m3s,
                                      double depth_below_m);
 
+/* Villemonte's rule: what is left of the free flow, 1 to 0, where the heads below and above stand in this ratio. */
+double stage_structure_drowned_share(double head_below_by_head_above);
+
 #endif

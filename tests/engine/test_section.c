@@ -147,6 +147,31 @@ static void a_plain_adds_its_panel_and_two_outer_walls(void **state)
     assert_near(properties.conveyance_m3s, channel_k + plain_k, ROUNDING, "conveyance");
 }
 
+static void the_panels_add_up_to_the_whole(void **state)
+{
+    (void)state;
+    for (size_t index = 0; index < SECTION_COUNT; index++)
+        for (double depth_m = -0.3; depth_m < 9.0; depth_m += 0.37) {
+            const struct section *section = every_section[index].section;
+            struct section_properties whole = properties_of(section, depth_m), sum = {0};
+            for (size_t panel = 0; panel < section_panel_count(section); panel++) {
+                struct section_properties part;
+                section_panel_at(section, panel, depth_m, &part);
+                sum.area_m2 += part.area_m2;
+                sum.top_width_m += part.top_width_m;
+                sum.wetted_perimeter_m += part.wetted_perimeter_m;
+                sum.conveyance_m3s += part.conveyance_m3s;
+            }
+            assert_near(sum.area_m2, whole.area_m2, ROUNDING, "area");
+            assert_near(sum.top_width_m, whole.top_width_m, ROUNDING, "top width");
+            assert_near(sum.wetted_perimeter_m, whole.wetted_perimeter_m, ROUNDING, "wetted perimeter");
+            assert_near(sum.conveyance_m3s, whole.conveyance_m3s, ROUNDING, "conveyance");
+        }
+    struct section_properties none;
+    section_panel_at(&wide, section_panel_count(&wide), 2.0, &none);
+    assert_true(none.area_m2 == 0 && none.conveyance_m3s == 0);
+}
+
 static void only_the_width_of_a_wide_section_rubs(void **state)
 {
     (void)state;
@@ -743,6 +768,7 @@ int main(void)
         cmocka_unit_test(the_shapes_used_here_pass_the_check),
         cmocka_unit_test(a_trapezoid_has_the_properties_of_the_textbook),
         cmocka_unit_test(a_plain_adds_its_panel_and_two_outer_walls),
+        cmocka_unit_test(the_panels_add_up_to_the_whole),
         cmocka_unit_test(only_the_width_of_a_wide_section_rubs),
         cmocka_unit_test(a_dry_section_has_nothing),
         cmocka_unit_test(a_slope_that_is_not_downhill_carries_nothing),

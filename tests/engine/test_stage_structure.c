@@ -52,6 +52,8 @@ static void water_below_drowns_the_flow(void **state)
     double half = stage_structure_flow(&weir, 2.3, 1.8).discharge_m3s;
     assert_true(fabs(half - free_m3s * pow(1.0 - pow(0.5, 1.5), 0.385)) <= 1e-12 * free_m3s);
     assert_true(half > 0.84 * free_m3s && half < 0.85 * free_m3s);
+    assert_true(half == free_m3s * stage_structure_drowned_share(0.5));
+    assert_true(stage_structure_drowned_share(-0.2) == 1.0 && stage_structure_drowned_share(1.3) == 0.0);
     double before = free_m3s;
     for (double below = 1.31; below < 2.3; below += 0.01) {
         double drowned = stage_structure_flow(&weir, 2.3, below).discharge_m3s;
