@@ -5,6 +5,8 @@
 #ifndef FOREWATER_ENGINE_DYNAMIC_INTERNAL_H
 #define FOREWATER_ENGINE_DYNAMIC_INTERNAL_H
 
+#include <math.h>
+
 #include "engine/dynamic_tree.h"
 
 static const double dynamic_gravity_m_s2 = 9.80665;
@@ -48,13 +50,22 @@ struct dynamic_work {
     double *lone_depth, *lone_depth_before, *lone_depth_now; /* [branch], at the feet */
     double *lone_side, *lone_side_now;                       /* [side], of the step and of a part */
     double *lone_passed;                                     /* [node] */
+
+    /* [branch], as lone_depth, at the heads; not a number: not gauged */
+    double *lone_gauged, *lone_gauged_before, *lone_gauged_now;
 };
 
 struct dynamic_step_data {
     double time_step_s;
     bool has_inertia;
     const double *inflow_m3s, *foot_depth_m, *side_m3;
+    const double *gauged_m3s; /* [branch][member], or NULL */
 };
+
+static inline double dynamic_gauged_m3s(const struct dynamic_step_data *data, size_t at)
+{
+    return data->gauged_m3s == NULL ? (double)NAN : data->gauged_m3s[at];
+}
 
 /*
  * Newton's method over the tree for all members of a work, from state to state. work->old_area and old_discharge hold

@@ -45,8 +45,11 @@ static double side_volume(const struct dynamic_tree *tree, const struct dynamic_
 
 /* What enters a head in the step. */
 static double head_volume(const struct dynamic_tree *tree, const struct dynamic_step_data *data,
-                          const struct dynamic_state *state, size_t branch_index)
+                          const struct dynamic_state *state, size_t branch_index, double old_flow_m3s)
 {
+    double gauged = dynamic_gauged_m3s(data, branch_index);
+    if (!isnan(gauged))
+        return data->time_step_s * (theta * gauged + (1.0 - theta) * old_flow_m3s);
     double volume = data->time_step_s *
                     (theta * data->inflow_m3s[branch_index] + (1.0 - theta) * state->inflow_m3s[branch_index]);
     size_t node = 0;
@@ -61,6 +64,9 @@ static double head_volume(const struct dynamic_tree *tree, const struct dynamic_
 static double head_flow(const struct dynamic_tree *tree, const struct dynamic_step_data *data,
                         const struct dynamic_state *state, size_t branch_index)
 {
+    double gauged = dynamic_gauged_m3s(data, branch_index);
+    if (!isnan(gauged))
+        return gauged;
     double flow = data->inflow_m3s[branch_index];
     size_t node = 0;
     for (size_t i = 0; i < branch_index; i++) {
@@ -78,7 +84,7 @@ void dynamic_replace_step(const struct dynamic_tree *tree, const struct dynamic_
     double dt = data->time_step_s;
     for (size_t i = 0; i < tree->branch_count; i++) {
         const struct dynamic_branch *branch = &tree->branches[i];
-        double coming = head_volume(tree, data, state, i);
+        double coming = head_volume(tree, data, state, i, work->old_discharge[node]);
         double above_m = 0.0; /* half the interval above */
         for (size_t k = 0; k <= branch->interval_count; k++, node++) {
             bool is_foot = k == branch->interval_count;

@@ -233,7 +233,9 @@ static void enter_branch(const struct dynamic_tree *tree, size_t branch_index, s
     size_t at = first_node * count;
     for (size_t m = 0; m < count; m++) {
         work->sweep_e[at + m] = 0.0;
-        work->sweep_f[at + m] = data->inflow_m3s[branch_index * count + m] - state->discharge_m3s[at + m];
+        double gauged = dynamic_gauged_m3s(data, branch_index * count + m);
+        double inflow = isnan(gauged) ? data->inflow_m3s[branch_index * count + m] : gauged;
+        work->sweep_f[at + m] = inflow - state->discharge_m3s[at + m];
     }
     size_t node = 0;
     for (size_t i = 0; i < branch_index; i++) {
@@ -248,6 +250,8 @@ static void enter_branch(const struct dynamic_tree *tree, size_t branch_index, s
                                           tree->branches[branch_index].table, state->area_m2[at + m]);
             work->meeting_by_below[i * count + m] = meeting.above_by_below;
             work->meeting_fixed[i * count + m] = meeting.above_fixed;
+            if (!isnan(dynamic_gauged_m3s(data, branch_index * count + m)))
+                continue;
             work->sweep_e[at + m] += e * meeting.above_by_below;
             work->sweep_f[at + m] += state->discharge_m3s[foot + m] + (f + e * meeting.above_fixed);
         }

@@ -145,11 +145,14 @@ static void lay_out_lone(struct dynamic_work *work, double **room, size_t node_c
     work->lone_depth = take(room, branch_count);
     work->lone_depth_before = take(room, branch_count);
     work->lone_depth_now = take(room, branch_count);
+    work->lone_gauged = take(room, branch_count);
+    work->lone_gauged_before = take(room, branch_count);
+    work->lone_gauged_now = take(room, branch_count);
     work->lone_side = take(room, side_count);
     work->lone_side_now = take(room, side_count);
 }
 
-enum { BY_NODE = 11, BY_BRANCH = 3, BY_MEMBER = 5 + 2 * 10, LONE_BY_NODE = 4, LONE_BY_BRANCH = 6 };
+enum { BY_NODE = 11, BY_BRANCH = 3, BY_MEMBER = 5 + 2 * 10, LONE_BY_NODE = 4, LONE_BY_BRANCH = 9 };
 
 static enum fw_status create_work(struct dynamic_work **work_out, const struct dynamic_tree *tree,
                                   size_t member_count, bool is_lone)
@@ -201,8 +204,9 @@ static void start_flows(const struct dynamic_tree *tree, size_t member_count, si
 {
     size_t node = 0, side = 0;
     for (size_t i = 0; i < tree->branch_count; i++) {
-        double flow = state->inflow_m3s[i * member_count + member];
-        for (size_t above = 0; above < i; above++)
+        double gauged = tree->gauged_m3s == NULL ? (double)NAN : tree->gauged_m3s[i * member_count + member];
+        double flow = isnan(gauged) ? state->inflow_m3s[i * member_count + member] : gauged;
+        for (size_t above = 0; above < i && isnan(gauged); above++)
             if (tree->branches[above].below == i)
                 flow += state->discharge_m3s[(dynamic_tree_first_node(tree, above + 1) - 1) * member_count + member];
         for (size_t k = 0; k <= tree->branches[i].interval_count; k++, node++) {
@@ -311,6 +315,8 @@ static void begin_lone(const struct dynamic_tree *tree, const struct dynamic_ste
         bool is_given = tree->branches[i].foot == DYNAMIC_FOOT_STAGE;
         work->lone_depth[i] = is_given ? data->foot_depth_m[i * members + member] : 0.0;
         work->lone_depth_before[i] = area_table_depth_m(tree->branches[i].table, work->lone_state.area_m2[foot]);
+        work->lone_gauged[i] = dynamic_gauged_m3s(data, i * members + member);
+        work->lone_gauged_before[i] = work->lone_state.discharge_m3s[foot - tree->branches[i].interval_count];
     }
     memset(work->lone_passed, 0, nodes * sizeof *work->lone_passed);
 }
@@ -327,12 +333,14 @@ static bool solve_in_parts(const struct dynamic_tree *tree, double time_step_s, 
         for (size_t i = 0; i < tree->branch_count; i++) {
             work->lone_inflow_now[i] = (1.0 - share) * work->lone_state.inflow_m3s[i] + share * work->lone_inflow[i];
             work->lone_depth_now[i] = (1.0 - share) * work->lone_depth_before[i] + share * work->lone_depth[i];
+            work->lone_gauged_now[i] = (1.0 - share) * work->lone_gauged_before[i] + share * work->lone_gauged[i];
         }
         const struct dynamic_step_data data = {.time_step_s = time_step_s / (double)part_count,
                                                .has_inertia = has_inertia,
                                                .inflow_m3s = work->lone_inflow_now,
                                                .foot_depth_m = work->lone_depth_now,
-                                               .side_m3 = work->lone_side_now};
+                                               .side_m3 = work->lone_side_now,
+                                               .gauged_m3s = work->lone_gauged_now};
         keep_old(&work->lone_state, nodes, work->lone);
         if (dynamic_solve(tree, &data, &work->lone_state, work->lone, counts) > 0)
             return false;
@@ -366,7 +374,8 @@ static void rescue(const struct dynamic_tree *tree, const struct dynamic_step_da
             const struct dynamic_step_data lone_data = {.time_step_s = data->time_step_s,
                                                         .inflow_m3s = work->lone_inflow,
                                                         .foot_depth_m = work->lone_depth,
-                                                        .side_m3 = work->lone_side};
+                                                        .side_m3 = work->lone_side,
+                                                        .gauged_m3s = work->lone_gauged};
             counts->replaced++;
             begin_lone(tree, data, member, state, work);
             keep_old(&work->lone_state, nodes, work->lone);
@@ -387,7 +396,8 @@ void dynamic_tree_step(const struct dynamic_tree *tree, double time_step_s, size
                                            .has_inertia = !tree->is_diffusive,
                                            .inflow_m3s = inflow_m3s,
                                            .foot_depth_m = foot_depth_m,
-                                           .side_m3 = side_m3};
+                                           .side_m3 = side_m3,
+                                           .gauged_m3s = tree->gauged_m3s};
     keep_old(state, dynamic_tree_node_count(tree) * member_count, work);
     counts->steps += member_count;
     if (dynamic_solve(tree, &data, state, work, counts) > 0)

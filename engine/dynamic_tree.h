@@ -56,6 +56,10 @@ struct dynamic_tree {
     bool is_diffusive;      /* no inertia */
     size_t side_count;
     const size_t *side_node; /* side inflow enters the interval below this node; rising */
+    /* [branch][member], the caller's, read at a steady start and at every step: the measured flow into each head now, in
+     * place of all that comes there; its level stays joined to the feet above. Not a number, or NULL: what comes
+     * goes on. */
+    const double *gauged_m3s;
 };
 
 /* FW_BAD_INPUT  a branch without intervals, a length not positive, a number not finite, a foot without what it needs,

@@ -190,6 +190,67 @@ static void a_confluence_conserves_volume_and_has_one_level(void **state)
     }
 }
 
+/* The junction is gauged from 3 h to 7 h for one of two members: its head carries what was measured, its level stays joined, the
+ * other member knows nothing of it. */
+static void a_measured_flow_takes_the_place_of_what_comes(void **state)
+{
+    (void)state;
+    enum { MEMBERS = 2, FROM = 180, TO = 420 };
+    struct grove y, untouched;
+    double side_m3s[2 * MEMBERS] = {1.9, 1.9, 3.3, 3.3}, side_m3[2 * MEMBERS];
+    double inflow[3 * MEMBERS] = {0.0}, gauged[3 * MEMBERS];
+    for (size_t i = 0; i < 2 * MEMBERS; i++)
+        side_m3[i] = 60.0 * side_m3s[i];
+    for (size_t i = 0; i < 3 * MEMBERS; i++)
+        gauged[i] = (double)NAN;
+    for (size_t m = 0; m < MEMBERS; m++) {
+        inflow[m] = gamma_flood_m3s(0.0, &flood);
+        inflow[MEMBERS + m] = gamma_flood_m3s(0.0, &beck_flood);
+    }
+    make_y(&y, MEMBERS, false);
+    make_y(&untouched, MEMBERS, false);
+    y.tree.gauged_m3s = gauged;
+    grove_start(&y, inflow, side_m3s, NULL);
+    grove_start(&untouched, inflow, side_m3s, NULL);
+    size_t head = dynamic_tree_first_node(&y.tree, 2), feet[2] = {foot_node(&y, 0), foot_node(&y, 1)};
+    double held = grove_volume_m3(&y, 0), in = 0.0, out = 0.0, worst_level = 0.0, apart = 0.0;
+    for (int step = 1; step <= 900; step++) {
+        for (size_t m = 0; m < MEMBERS; m++) {
+            inflow[m] = gamma_flood_m3s(60.0 * step, &flood);
+            inflow[MEMBERS + m] = gamma_flood_m3s(60.0 * step, &beck_flood);
+        }
+        bool is_gauged = step >= FROM && step < TO;
+        gauged[2 * MEMBERS] = is_gauged ? 31.7 + 0.11 * step : (double)NAN;
+        dynamic_tree_step(&y.tree, 60.0, MEMBERS, inflow, NULL, side_m3, &y.state, y.work, &y.counts);
+        dynamic_tree_step(&untouched.tree, 60.0, MEMBERS, inflow, NULL, side_m3, &untouched.state, untouched.work,
+                          &untouched.counts);
+        if (is_gauged)
+            assert_true(fabs(y.state.discharge_m3s[head * MEMBERS] / gauged[2 * MEMBERS] - 1.0) <= 1e-14);
+        in += y.state.passed_m3[0] + y.state.passed_m3[(feet[0] + 1) * MEMBERS] + side_m3[0] + side_m3[2] +
+              y.state.passed_m3[head * MEMBERS];
+        out += y.state.passed_m3[feet[0] * MEMBERS] + y.state.passed_m3[feet[1] * MEMBERS] +
+               y.state.passed_m3[foot_node(&y, 2) * MEMBERS];
+        for (size_t i = 0; i < 2; i++)
+            worst_level = fmax(worst_level, fabs(depth_at(&y, i, feet[i], 0) - depth_at(&y, 2, head, 0)));
+        size_t nodes = dynamic_tree_node_count(&y.tree);
+        for (size_t node = 0; node < nodes; node++) {
+            size_t at = node * MEMBERS + 1;
+            assert_true(y.state.area_m2[at] == untouched.state.area_m2[at]);
+            if (step == TO)
+                apart = fmax(apart, fabs(y.state.discharge_m3s[at - 1] - untouched.state.discharge_m3s[at - 1]));
+        }
+    }
+    double imbalance = (in - out - (grove_volume_m3(&y, 0) - held)) / in;
+    print_message("gauged junction: volume error %.1e, levels within %.1e m, %.1f m3/s from the ungauged river\n",
+                  imbalance, worst_level, apart);
+    assert_true(fabs(imbalance) <= 1e-12);
+    assert_true(worst_level <= 0.03); /* as in the confluence above, but the flow jumps by tens of m3/s in a step */
+    assert_true(apart > 10.0);
+    assert_int_equal(y.counts.replaced, 0);
+    grove_clear(&y);
+    grove_clear(&untouched);
+}
+
 /* Two becks that are halves of one river (wide: no bank rubs) carry half each, as if never parted. */
 static void two_halves_of_a_river_join_as_if_never_parted(void **state)
 {
@@ -548,6 +609,7 @@ int main(void)
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(a_river_cut_in_two_is_the_uncut_one),
         cmocka_unit_test(a_confluence_conserves_volume_and_has_one_level),
+        cmocka_unit_test(a_measured_flow_takes_the_place_of_what_comes),
         cmocka_unit_test(two_halves_of_a_river_join_as_if_never_parted),
         cmocka_unit_test(a_flood_backs_up_into_a_quiet_beck),
         cmocka_unit_test(a_weir_and_culvert_hold_their_rating_clean_and_part_blocked),
