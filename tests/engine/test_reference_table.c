@@ -6,6 +6,7 @@
 #include <stdint.h>
 
 #include <cmocka.h>
+#include <dirent.h>
 
 #include "tests/engine/reference_table.h"
 
@@ -36,28 +37,60 @@ static void a_whole_column_comes_as_numbers(void **state)
     reference_table_clear(&table);
 }
 
-static void every_published_table_loads(void **state)
+static bool is_of_hydraulics(const char *name)
+{
+    static const char *const others[] = {"cap12_", "packaged_", "qartod_", "verification_"};
+    for (size_t i = 0; i < sizeof others / sizeof *others; i++)
+        if (strncmp(name, others[i], strlen(others[i])) == 0)
+            return false;
+    return true;
+}
+
+static char *read_document(const char *name)
+{
+    static char text[1 << 16];
+    char path[4096];
+    snprintf(path, sizeof path, "%s/docs/%s", FW_SOURCE_DIR, name);
+    FILE *file = fopen(path, "rb");
+    assert_non_null(file);
+    size_t size = fread(text, 1, sizeof text - 1, file);
+    fclose(file);
+    assert_true(size < sizeof text - 1);
+    text[size] = '\0';
+    return text;
+}
+
+/* "x.csv" is told as `x`; a series of files that differ in their ending may be told as `..._ending`. */
+static bool tells_of(const char *document, const char *file)
+{
+    char told[300], last[300];
+    size_t stem = strlen(file) - strlen(".csv");
+    snprintf(told, sizeof told, "`%.*s`", (int)stem, file);
+    const char *ending = strrchr(file, '_');
+    snprintf(last, sizeof last, "`...%.*s`", ending == NULL ? 0 : (int)(file + stem - ending), ending);
+    return strstr(document, told) != NULL || strstr(document, last) != NULL;
+}
+
+static void every_published_table_loads_and_the_hydraulic_ones_are_accounted_for(void **state)
 {
     (void)state;
-    static const char *const names[] = {
-        "cap12_elements.csv",
-        "chow1988_8_4_1_muskingum.csv",
-        "chow1988_9_6_1_linear_kinematic.csv",
-        "manning_n_chow1959.csv",
-        "muskingum_cunge_coefficients.csv",
-        "rating_formulas.csv",
-        "vehicle_stability.csv",
-        "kinematic_characteristics_exact.csv",
-        "rating_subramanya_gaugings.csv",
-        "qartod_water_level.csv",
-        "thomas_problem_500mi.csv",
-        "wave_model_applicability.csv",
-    };
-    for (size_t index = 0; index < sizeof names / sizeof *names; index++) {
-        struct reference_table table = reference_table_load(names[index]);
+    const char *document = read_document("hydraulics-checks.md");
+    DIR *folder = opendir(FW_SOURCE_DIR "/tests/reference");
+    assert_non_null(folder);
+    size_t count = 0;
+    for (struct dirent *entry; (entry = readdir(folder)) != NULL;) {
+        size_t length = strlen(entry->d_name);
+        if (length < 5 || strcmp(entry->d_name + length - 4, ".csv") != 0)
+            continue;
+        struct reference_table table = reference_table_load(entry->d_name);
         assert_true(table.row_count >= 2);
         reference_table_clear(&table);
+        if (is_of_hydraulics(entry->d_name) && !tells_of(document, entry->d_name))
+            fail_msg("docs/hydraulics-checks.md does not say what becomes of %s", entry->d_name);
+        count++;
     }
+    closedir(folder);
+    assert_true(count >= 37);
 }
 
 int main(void)
@@ -65,7 +98,7 @@ int main(void)
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(columns_are_found_by_name_and_empty_cells_are_not_numbers),
         cmocka_unit_test(a_whole_column_comes_as_numbers),
-        cmocka_unit_test(every_published_table_loads),
+        cmocka_unit_test(every_published_table_loads_and_the_hydraulic_ones_are_accounted_for),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }
