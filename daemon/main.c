@@ -16,6 +16,7 @@ static const struct {
     {"route", command_route, "routes hydrographs from files, no store: the engine alone"},
     {"replay", command_replay, "the daemon's own cycle over past readings, as known at each minute"},
     {"status", command_status, "the present picture, in the terminal"},
+    {"export", command_export, "readings as CSV, now or as they were known at a moment"},
     {"say", command_say, "a person's word: accept, reading, seen, road, note"},
 };
 

@@ -17,6 +17,7 @@ command_function command_route;
 command_function command_replay;
 command_function command_status;
 command_function command_say;
+command_function command_export;
 
 /*
  * For what goes on while the file has faults: run, say, status. When the file cannot be used, the last settings that worked, which the store keeps, loudly.

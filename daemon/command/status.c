@@ -1,5 +1,5 @@
 /* SPDX-License-Identifier: MIT */
-/* The newest recorded picture, in the terminal. Reads the store without writing to it. */
+/* The newest recorded picture, or one of the past, in the terminal. Reads the store without writing to it. */
 #include "daemon/command/command.h"
 
 #include <cjson/cJSON.h>
@@ -8,6 +8,7 @@
 #include <string.h>
 
 #include "daemon/clock.h"
+#include "daemon/command/known_at.h"
 #include "daemon/command/options.h"
 #include "daemon/store/store.h"
 
@@ -88,8 +89,8 @@ static int compare_act_by(const void *left, const void *right)
     return (a > b) - (a < b);
 }
 
-static enum fw_status print_picture(const struct settings *settings, const cJSON *picture, const char *link,
-                                    struct fw_error *error)
+static enum fw_status print_picture(const struct settings *settings, const cJSON *picture, bool is_past,
+                                    const char *link, struct fw_error *error)
 {
     char text[WHEN_TEXT_SIZE];
     struct clock clock = clock_real();
@@ -104,11 +105,13 @@ static enum fw_status print_picture(const struct settings *settings, const cJSON
         return fw_error_set(error, FW_NO_MEMORY, "no memory");
     printf("%s  picture of %s", text_of(picture, "district"), when_rfc3339_local(&settings->zone, as_of, text));
     int64_t age_min = (clock_world_utc_s(&clock) - as_of) / 60;
-    if (is_held)
+    if (is_past)
+        printf("  AS KNOWN THEN, not the newest");
+    else if (is_held)
         printf("  daemon: process %ld", pid);
     else
         printf("  NO DAEMON IS RUNNING: this is the last picture it recorded");
-    if (age_min > 2 * settings->forecast_every_s / 60)
+    if (!is_past && age_min > 2 * settings->forecast_every_s / 60)
         printf("  (%lld min OLD)", (long long)age_min);
     printf("\n\n");
     for (const cJSON *gauge = gauges != NULL ? gauges->child : NULL; gauge != NULL; gauge = gauge->next)
@@ -127,23 +130,27 @@ static enum fw_status print_picture(const struct settings *settings, const cJSON
     return FW_OK;
 }
 
-static enum fw_status show(const struct settings *settings, bool as_json, struct fw_error *error)
+static enum fw_status show(const struct settings *settings, const struct option_values *known_at, bool as_json,
+                           struct fw_error *error)
 {
     struct store *store = NULL;
     struct text json = {0};
-    int64_t utc_s = 0;
+    int64_t entry = STORE_NOW, utc_s = 0;
     char link[FACT_DIGEST_SIZE] = "";
     enum fw_status status = store_open(settings->store_file, STORE_READ, &store, error);
     if (status == FW_OK)
-        status = store_newest_payload(store, &json, &utc_s, link, error);
+        status = known_at_read(known_at, &settings->zone, store, &entry, error);
+    if (status == FW_OK)
+        status = store_payload_at(store, entry, &json, &utc_s, link, error);
     if (status == FW_NOTHING_NEW)
-        status = fw_error_set(error, FW_UNAVAILABLE, "%s holds no picture yet", settings->store_file);
+        status = fw_error_set(error, FW_UNAVAILABLE, "%s holds no picture %s", settings->store_file,
+                              known_at->count > 0 ? "of that time" : "yet");
     if (status == FW_OK && as_json) {
         printf("%s\n", text_string(&json));
     } else if (status == FW_OK) {
         cJSON *picture = cJSON_Parse(text_string(&json));
         status = picture != NULL
-                     ? print_picture(settings, picture, link, error)
+                     ? print_picture(settings, picture, known_at->count > 0, link, error)
                      : fw_error_set(error, FW_DAMAGED, "%s: the newest picture cannot be read", settings->store_file);
         cJSON_Delete(picture);
     }
@@ -154,16 +161,18 @@ static enum fw_status show(const struct settings *settings, bool as_json, struct
 
 enum fw_status command_status(int argument_count, char *arguments[], struct fw_error *error)
 {
-    struct option_values config = {0}, json = {0}, store = {0};
+    struct option_values config = {0}, json = {0}, known_at = {0}, store = {0};
     const struct option_spec options[] = {
         {"config", "FILE", "the configuration (default " COMMAND_DEFAULT_CONFIG ")", &config},
         {"json", NULL, "the picture as one JSON object", &json},
+        {"known-at", KNOWN_AT_ARGUMENT, "the picture of a moment, or of an entry of the record", &known_at},
         {"store", "FILE", "where the last good settings are, should the configuration be unreadable", &store},
         {NULL, NULL, NULL, NULL}};
-    const struct command_line line = {"status", "",
-                                      "Shows the newest recorded picture: gauges, crossings by act-by, what "
-                                      "people said of the roads.",
-                                      options};
+    const struct command_line line = {
+        "status", "",
+        "Shows the newest recorded picture, or one of the past: gauges, crossings by act-by, what "
+        "people said of the roads.",
+        options};
     struct settings *settings = NULL;
     int rest = 0;
     enum fw_status status = options_read(&line, argument_count, arguments, &rest, error);
@@ -174,7 +183,7 @@ enum fw_status command_status(int argument_count, char *arguments[], struct fw_e
                                                 option_text(&store, NULL), &settings, error);
     if (status != FW_OK)
         return status;
-    status = show(settings, json.count > 0, error);
+    status = show(settings, &known_at, json.count > 0, error);
     settings_destroy(settings);
     return status;
 }

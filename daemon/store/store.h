@@ -94,9 +94,46 @@ FW_MUST_CHECK enum fw_status store_load_picture(struct store *store, const struc
 FW_MUST_CHECK enum fw_status store_has_word(struct store *store, const char *id, bool *has_out,
                                             struct fw_error *error);
 
-/* Newest ledger payload (canonical JSON of the picture) and its time; FW_NOTHING_NEW: none. */
-FW_MUST_CHECK enum fw_status store_newest_payload(struct store *store, struct text *json_out, int64_t *utc_s_out,
-                                                  char link_out[FACT_DIGEST_SIZE], struct fw_error *error);
+#define STORE_NOW INT64_MAX /* as known at: the newest entry there is */
+
+/* The entry that was newest at a moment: of the last cycle that had ended by then. 0: none had. */
+FW_MUST_CHECK enum fw_status store_entry_at(struct store *store, int64_t utc_s, int64_t *entry_out,
+                                            struct fw_error *error);
+
+/* Newest ledger payload (canonical JSON of the picture) up to an entry, and its time; FW_NOTHING_NEW: none. */
+FW_MUST_CHECK enum fw_status store_payload_at(struct store *store, int64_t known_at_entry, struct text *json_out,
+                                              int64_t *utc_s_out, char link_out[FACT_DIGEST_SIZE],
+                                              struct fw_error *error);
+
+/*
+ * Readings as they were known at an entry, gauge by gauge in order of id, then by observed time, source and entry;
+ * each with its judgement as known then. Without every_revision only the newest value of a source for a time.
+ */
+struct store_reading_query {
+    const char *gauge; /* NULL: all */
+    int64_t from_utc_s, to_utc_s;
+    int64_t known_at_entry;
+    bool every_revision;
+};
+struct stored_reading { /* texts live until the function returns */
+    int64_t entry;
+    const char *gauge, *source;
+    int64_t observed_utc_s;
+    double value;
+    const char *unit;
+    int64_t received_utc_s;
+    const char *by; /* NULL: it came by a feed */
+    bool is_judged;
+    int flag;
+    const char *use;
+    int64_t reasons;
+};
+typedef enum fw_status store_reading_function(void *context, const struct stored_reading *reading,
+                                              struct fw_error *error);
+/* Stops at the first status that is not FW_OK, and returns it. */
+FW_MUST_CHECK enum fw_status store_each_reading(struct store *store, const struct store_reading_query *query,
+                                                store_reading_function *function, void *context,
+                                                struct fw_error *error);
 
 /*
  * Rows for replay: readings (every source, every revision, in order of entry) and words received in [from, to).

@@ -73,8 +73,17 @@ static const char *const statement_text[STORE_STATEMENT_COUNT] = {
     [STORE_HAS_WORD] = "SELECT 1 FROM word WHERE id = ?",
     [STORE_HAS_FACT] = "SELECT 1 FROM word WHERE kind = ? AND subject = ? AND at = ? AND value IS ? AND is_wet IS ? "
                        "AND road IS ? AND \"by\" = ?",
-    [STORE_NEWEST_PAYLOAD] = "SELECT payload, utc, link FROM ledger JOIN ledger_payload USING (entry) "
-                             "WHERE kind <> 'reseed' ORDER BY entry DESC LIMIT 1",
+    [STORE_PAYLOAD_AT] = "SELECT payload, utc, link FROM ledger JOIN ledger_payload USING (entry) "
+                         "WHERE kind <> 'reseed' AND entry <= ? ORDER BY entry DESC LIMIT 1",
+    [STORE_ENTRY_AT] = "SELECT max(entry) FROM ledger WHERE utc <= ?",
+    [STORE_EACH_READING] =
+        "SELECT " READING_COLUMNS ", j.flag, j.use, j.reasons FROM reading r LEFT JOIN judgement j "
+        "ON j.entry = (SELECT max(entry) FROM judgement WHERE reading = r.entry AND entry <= ?1) "
+        "WHERE r.gauge = ?2 AND r.observed >= ?3 AND r.observed < ?4 AND r.entry <= ?1 "
+        "AND (?5 OR NOT EXISTS (SELECT 1 FROM reading n WHERE n.gauge = r.gauge AND n.observed = r.observed "
+        "AND n.source = r.source AND n.entry > r.entry AND n.entry <= ?1)) "
+        "ORDER BY r.observed, r.source, r.entry",
+    [STORE_NEXT_GAUGE] = "SELECT min(gauge) FROM reading WHERE gauge > ?",
     [STORE_LEDGER_WALK] = "SELECT entry, utc, kind, payload_digest, link, payload FROM ledger "
                           "LEFT JOIN ledger_payload USING (entry) ORDER BY entry",
 };

@@ -98,7 +98,7 @@ static void an_empty_store_loads_as_a_first_picture(void **state)
     assert_int_equal(picture->away_from_utc_s, 0);
     assert_int_equal(picture->outbox_count, 0);
     assert_int_equal(store_last_settings(store, &text, &scene->error), FW_NOTHING_NEW);
-    assert_int_equal(store_newest_payload(store, &text, &utc_s, link, &scene->error), FW_NOTHING_NEW);
+    assert_int_equal(store_payload_at(store, STORE_NOW, &text, &utc_s, link, &scene->error), FW_NOTHING_NEW);
     picture_destroy(picture);
     store_close(store);
 }
@@ -650,7 +650,7 @@ static void the_newest_picture_comes_back_byte_for_byte(void **state)
         step_seal(&step, SCENE_NOW_S + (int64_t)index, payloads[index]);
         commit(scene, store, &step);
         advance(&step, &picture);
-        assert_int_equal(store_newest_payload(store, &json, &utc_s, link, &scene->error), FW_OK);
+        assert_int_equal(store_payload_at(store, STORE_NOW, &json, &utc_s, link, &scene->error), FW_OK);
         assert_string_equal(json.bytes, payloads[index]);
         assert_int_equal(utc_s, SCENE_NOW_S + (int64_t)index);
         assert_string_equal(link, picture->newest_link);

@@ -116,7 +116,7 @@ static size_t ask_everything(struct scene *scene, struct store *store, const cha
         store_list_readings(store, &scene->settings, 0, INT64_MAX, &readings, &count, &errors[2]),
         store_list_words(store, 0, INT64_MAX, &words, &count, &errors[3]),
         store_has_word(store, "w-1", &has, &errors[4]),
-        store_newest_payload(store, &text, &utc_s, link, &errors[5]),
+        store_payload_at(store, STORE_NOW, &text, &utc_s, link, &errors[5]),
         store_check_ledger(store, &count, &errors[6]),
         store_save_delivery(store, &message, &errors[7]),
         store_keep_settings(store, &scene->settings, SCENE_NOW_S, &errors[8]),
