@@ -74,6 +74,11 @@ static inline double *network_block_of(const struct network *network, size_t gro
     return network->blocks + group * network->layout.count;
 }
 
+static inline double *network_gauge_slot(const struct network *network, double *block, size_t gauge, size_t slot)
+{
+    return block + network->layout.gauge + (gauge * network->ring_count + slot) * network->members_per_group;
+}
+
 static inline struct routed_tree *network_tree_of(const struct network *network, size_t reach_index)
 {
     size_t tree = network->tree_of_reach[reach_index];

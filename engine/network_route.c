@@ -1,0 +1,289 @@
+/* SPDX-License-Identifier: MIT */
+#include "engine/network_internal.h"
+
+#include <math.h>
+#include <stdbool.h>
+#include <string.h>
+
+static struct routed_flows flows_of(const struct network *network)
+{
+    return (struct routed_flows){
+        .member_count = network->members_per_group,
+        .side_m3 = network->side_m3,
+        .stop_m3 = network->stop_m3,
+        .implicit_m3 = network->implicit_m3,
+        .passing_m3 = network->passing_m3,
+        .lateral_m3 = network->lateral_m3,
+    };
+}
+
+/* The side inflow's flow at the ring's newest slot. */
+static double side_flow_m3s(const struct network *network, double *block, size_t side_index, size_t newest_slot,
+                            size_t member)
+{
+    const struct network_side_inflow *side = &network->river.side_inflows[side_index];
+    if (side->share_of_gauge == NETWORK_NONE)
+        return side->constant_m3s;
+    const struct delayed_share *delay = &network->delays[side_index];
+    size_t later =
+        newest_slot >= delay->whole ? newest_slot - delay->whole : newest_slot + network->ring_count - delay->whole;
+    size_t earlier = later > 0 ? later - 1 : network->ring_count - 1;
+    double gauge_flow =
+        (1.0 - delay->part) * network_gauge_slot(network, block, side->share_of_gauge, later)[member] +
+        delay->part * network_gauge_slot(network, block, side->share_of_gauge, earlier)[member];
+    return side->constant_m3s + side->share * gauge_flow;
+}
+
+/* Into the head of a reach, as passing volume; what comes from its own tree left out. */
+static void gather_head(const struct network *network, double *block, size_t reach_index, size_t newest_slot)
+{
+    size_t members = network->members_per_group;
+    double *head = network->stop_m3;
+    size_t gauge = network->gauge_of_head[reach_index];
+    for (size_t member = 0; member < members; member++)
+        head[member] = gauge == NETWORK_NONE
+                           ? 0.0
+                           : network->time_step_s * network_gauge_slot(network, block, gauge, newest_slot)[member];
+    for (size_t above = network->first_above[reach_index]; above != NETWORK_NONE;
+         above = network->next_above[above]) {
+        if (network->tree_of_reach[above] != NETWORK_NONE &&
+            network->tree_of_reach[above] == network->tree_of_reach[reach_index])
+            continue;
+        const double *foot = block + network->layout.foot_m3 + above * members;
+        for (size_t member = 0; member < members; member++)
+            head[member] += foot[member];
+    }
+}
+
+/* Takes what a step left at the stops of a reach to its head, foot and points. */
+static void keep_flows(const struct network *network, double *block, size_t reach_index)
+{
+    const struct routed_reach *reach = &network->reaches[reach_index];
+    bool has_depths = network->tree_of_reach[reach_index] != NETWORK_NONE;
+    size_t members = network->members_per_group;
+    const double *stop_m3 = network->stop_m3;
+    size_t row = members * sizeof *stop_m3;
+    memcpy(block + network->layout.head_m3 + reach_index * members, stop_m3, row);
+    memcpy(block + network->layout.foot_m3 + reach_index * members, stop_m3 + (reach->stop_count - 1) * members, row);
+    for (size_t i = network->first_point[reach_index]; i != NETWORK_NONE; i = network->next_point[i]) {
+        double *point = block + network->layout.point + i * members;
+        double *depth = block + network->layout.depth + i * members;
+        double share = network->points[i].share_of_next;
+        size_t here = network->points[i].stop * members;
+        size_t next = share > 0.0 ? here + members : here;
+        for (size_t member = 0; member < members; member++) {
+            point[member] =
+                ((1.0 - share) * stop_m3[here + member] + share * stop_m3[next + member]) / network->time_step_s;
+            depth[member] = has_depths ? (1.0 - share) * network->stop_depth_m[here + member] +
+                                             share * network->stop_depth_m[next + member]
+                                       : (double)NAN;
+        }
+    }
+}
+
+static double largest_discharge_m3s(const struct network *network, size_t group, size_t reach_index)
+{
+    const struct routed_reach *reach = &network->reaches[reach_index];
+    if (network->tree_of_reach[reach_index] == NETWORK_NONE)
+        return routed_reach_largest_discharge_m3s(reach, group);
+    return reach->curve.conveyance_m3s[reach->curve.count - 1] * sqrt(reach->source->slope_m_per_m) /
+           network->roughness_factors[group];
+}
+
+static void count_flows_outside(struct network *network, const double *block, size_t group, size_t reach_index)
+{
+    const double *head = block + network->layout.head_m3 + reach_index * network->members_per_group;
+    const double *foot = block + network->layout.foot_m3 + reach_index * network->members_per_group;
+    bool may_turn = network->tree_of_reach[reach_index] != NETWORK_NONE;
+    double largest = network->time_step_s * largest_discharge_m3s(network, group, reach_index);
+    size_t above = 0, below = 0;
+    for (size_t member = 0; member < network->members_per_group; member++) {
+        above += head[member] > largest || foot[member] > largest;
+        below += foot[member] < 0.0 && !may_turn;
+    }
+    network->steps_above_tables += above;
+    network->steps_below_zero += below;
+}
+
+/* The heads of a tree, and then all of it at once, when its outlet's turn comes. */
+static void move_tree(struct network *network, size_t group, double *block, struct routed_tree *tree,
+                      size_t newest_slot, bool is_start)
+{
+    size_t members = network->members_per_group;
+    double *state = block + network->state_offset[tree->reach_index[tree->branch_count - 1]];
+    for (size_t branch = 0; branch < tree->branch_count; branch++) {
+        gather_head(network, block, tree->reach_index[branch], newest_slot);
+        for (size_t member = 0; member < members; member++)
+            tree->inflow_m3s[branch * members + member] = network->stop_m3[member] / network->time_step_s;
+    }
+    if (is_start)
+        routed_tree_start_steady(tree, group, network->side_m3, state);
+    else
+        routed_tree_step(tree, group, network->side_m3, state);
+    for (size_t branch = 0; branch < tree->branch_count; branch++) {
+        size_t reach_index = tree->reach_index[branch];
+        routed_tree_read_stops(tree, group, branch, &network->reaches[reach_index], state, network->stop_m3,
+                               network->stop_depth_m);
+        keep_flows(network, block, reach_index);
+        if (!is_start)
+            count_flows_outside(network, block, group, reach_index);
+    }
+}
+
+static bool is_inflow(double value)
+{
+    return value >= 0.0 && value <= NETWORK_LARGEST_INFLOW_M3S;
+}
+
+static void start_group(struct network *network, size_t group, const double inflow_m3s[])
+{
+    const struct network_river *river = &network->river;
+    size_t members = network->members_per_group;
+    double *block = network_block_of(network, group);
+    struct routed_flows flows = flows_of(network);
+    for (size_t gauge = 0; gauge < river->gauge_count; gauge++)
+        for (size_t slot = 0; slot < network->ring_count; slot++)
+            memcpy(network_gauge_slot(network, block, gauge, slot),
+                   inflow_m3s + gauge * network->group_count * members + group * members, members * sizeof *block);
+    for (size_t side = 0; side < river->side_inflow_count; side++)
+        for (size_t member = 0; member < members; member++) {
+            double flow = side_flow_m3s(network, block, side, 0, member);
+            block[network->layout.side + side * members + member] = flow;
+            network->side_m3[side * members + member] = network->time_step_s * flow;
+        }
+    for (size_t i = 0; i < river->reach_count; i++) {
+        size_t reach_index = network->order[i];
+        struct routed_tree *tree = network_tree_of(network, reach_index);
+        if (tree != NULL) {
+            if (network_is_outlet_of(tree, reach_index))
+                move_tree(network, group, block, tree, 0, true);
+            continue;
+        }
+        gather_head(network, block, reach_index, 0);
+        routed_reach_start_steady(&network->reaches[reach_index], group, &flows,
+                                  block + network->state_offset[reach_index]);
+        keep_flows(network, block, reach_index);
+    }
+}
+
+enum fw_status network_start_steady(struct network *network, const double inflow_m3s[])
+{
+    size_t count = network->river.gauge_count * network_member_count(network);
+    for (size_t i = 0; i < count; i++)
+        if (!is_inflow(inflow_m3s[i]))
+            return FW_BAD_INPUT;
+    for (size_t group = 0; group < network->group_count; group++)
+        start_group(network, group, inflow_m3s);
+    network->ring_at = 0;
+    network->steps_above_tables = 0;
+    network->steps_below_zero = 0;
+    return FW_OK;
+}
+
+static bool are_inflows_in_order(const struct network *network, size_t step_count, const double inflow_m3s[])
+{
+    size_t members = network_member_count(network);
+    for (size_t gauge = 0; gauge < network->river.gauge_count; gauge++) {
+        const double *series = inflow_m3s + gauge * (step_count + 1) * members;
+        for (size_t i = 0; i < (step_count + 1) * members; i++)
+            if (!is_inflow(series[i]))
+                return false;
+        for (size_t group = 0; group < network->group_count; group++) {
+            const double *present =
+                network_gauge_slot(network, network_block_of(network, group), gauge, network->ring_at);
+            for (size_t member = 0; member < network->members_per_group; member++)
+                if (series[group * network->members_per_group + member] != present[member])
+                    return false;
+        }
+    }
+    return true;
+}
+
+/* One step of one group. `inflow_m3s` points at the new inflows of the group's first member at gauge 0. */
+static enum fw_status step_group(struct network *network, size_t group, size_t newest_slot, const double inflow_m3s[],
+                                 size_t gauge_stride)
+{
+    const struct network_river *river = &network->river;
+    size_t members = network->members_per_group;
+    double *block = network_block_of(network, group);
+    struct routed_flows flows = flows_of(network);
+    for (size_t gauge = 0; gauge < river->gauge_count; gauge++)
+        memcpy(network_gauge_slot(network, block, gauge, newest_slot), inflow_m3s + gauge * gauge_stride,
+               members * sizeof *block);
+    for (size_t side = 0; side < river->side_inflow_count; side++)
+        for (size_t member = 0; member < members; member++) {
+            double *flow = block + network->layout.side + side * members + member;
+            double flow_new = side_flow_m3s(network, block, side, newest_slot, member);
+            network->side_m3[side * members + member] = 0.5 * network->time_step_s * (*flow + flow_new);
+            *flow = flow_new;
+        }
+    for (size_t i = 0; i < river->reach_count; i++) {
+        size_t reach_index = network->order[i];
+        struct routed_tree *tree = network_tree_of(network, reach_index);
+        if (tree != NULL) {
+            if (network_is_outlet_of(tree, reach_index))
+                move_tree(network, group, block, tree, newest_slot, false);
+            continue;
+        }
+        gather_head(network, block, reach_index, newest_slot);
+        enum fw_status status = routed_reach_step(&network->reaches[reach_index], group, &flows,
+                                                  block + network->state_offset[reach_index]);
+        if (status != FW_OK)
+            return status;
+        keep_flows(network, block, reach_index);
+        count_flows_outside(network, block, group, reach_index);
+    }
+    return FW_OK;
+}
+
+/* [point][step][member] of one group, from the present. Stages may be NULL. */
+static void give_points(const struct network *network, size_t group, size_t step, size_t step_count,
+                        double point_discharge_m3s[], double point_stage_m[])
+{
+    size_t members = network->members_per_group;
+    size_t all_members = network_member_count(network);
+    const double *block = network_block_of(network, group);
+    for (size_t point = 0; point < network->river.point_count; point++) {
+        const double *flow = block + network->layout.point + point * members;
+        const double *depth = block + network->layout.depth + point * members;
+        size_t at = (point * (step_count + 1) + step) * all_members + group * members;
+        memcpy(point_discharge_m3s + at, flow, members * sizeof *flow);
+        bool is_rated = network->river.points[point].stage_rating.row_count > 0;
+        for (size_t member = 0; point_stage_m != NULL && member < members; member++)
+            point_stage_m[at + member] =
+                is_rated || isnan(depth[member])
+                    ? network_point_stage_m(network, point, group * members + member, flow[member])
+                    : depth[member];
+    }
+}
+
+enum fw_status network_advance_with_stage(struct network *network, size_t step_count, const double inflow_m3s[],
+                                          double point_discharge_m3s[], double point_stage_m[])
+{
+    size_t all_members = network_member_count(network);
+    if (!are_inflows_in_order(network, step_count, inflow_m3s))
+        return FW_BAD_INPUT;
+    size_t slot = network->ring_at;
+    /* groups outermost: one group's cells and tables stay in the nearest cache over all steps */
+    for (size_t group = 0; group < network->group_count; group++) {
+        const double *group_inflow = inflow_m3s + group * network->members_per_group;
+        give_points(network, group, 0, step_count, point_discharge_m3s, point_stage_m);
+        slot = network->ring_at;
+        for (size_t step = 1; step <= step_count; step++) {
+            slot = slot + 1 < network->ring_count ? slot + 1 : 0;
+            enum fw_status status =
+                step_group(network, group, slot, group_inflow + step * all_members, (step_count + 1) * all_members);
+            if (status != FW_OK)
+                return status;
+            give_points(network, group, step, step_count, point_discharge_m3s, point_stage_m);
+        }
+    }
+    network->ring_at = slot;
+    return FW_OK;
+}
+
+enum fw_status network_advance(struct network *network, size_t step_count, const double inflow_m3s[],
+                               double point_discharge_m3s[])
+{
+    return network_advance_with_stage(network, step_count, inflow_m3s, point_discharge_m3s, NULL);
+}
