@@ -1,8 +1,7 @@
 /* SPDX-License-Identifier: MIT */
 /*
  * engine/dynamic_tree against waves that others computed: the published flood waves and linear waves of
- * tests/reference/, and our own fine-grid solution of the full equations (saint_venant.h), which shares nothing with
- * the engine.
+ * tests/reference/, and the independent fine-grid solution of the full equations (tests/independent/full_flow.h).
  */
 #include <setjmp.h>
 #include <stdarg.h>
@@ -18,7 +17,7 @@
 #include "tests/engine/dynamic_channel.h"
 #include "tests/engine/reference_table.h"
 #include "tests/engine/route_one_reach.h"
-#include "tests/engine/saint_venant.h"
+#include "tests/independent/full_flow.h"
 
 static const double full_turn = 6.283185307179586;
 
@@ -298,7 +297,7 @@ static const struct gamma_flood flashy_flood = {3.0, 57.0, 1.5 * 3600.0, 4.0};
 struct judged_case {
     const char *name;
     struct channel_case channel;
-    struct sv_case full;
+    double extension_m;
     double peak_tolerance, efficiency;
     double time_tolerance_s;
     size_t most_halved;
@@ -310,19 +309,14 @@ static struct judged_case judged(const char *name, const struct gamma_flood *flo
 {
     struct judged_case made = {
         .name = name,
+        .extension_m = extension,
         .channel = {.section = {.shape = SECTION_RECTANGLE, .bottom_m = width, .roughness_n = n},
                     .slope_m_per_m = slope,
                     .length_m = length,
                     .extension_m = extension,
                     .flood = gamma_flood_m3s,
                     .flood_parameters = flood,
-                    .largest_m3s = flood->base_m3s + flood->rise_m3s},
-        .full = {.section = {width, n, plain_above, plain_width, plain_n},
-                 .slope_m_per_m = slope,
-                 .length_m = length,
-                 .extension_m = extension,
-                 .flood = gamma_flood_m3s,
-                 .flood_parameters = flood}};
+                    .largest_m3s = flood->base_m3s + flood->rise_m3s}};
     if (plain_width > 0.0) {
         made.channel.section.has_plain = true;
         made.channel.section.plain_above_m = plain_above;
@@ -335,11 +329,20 @@ static struct judged_case judged(const char *name, const struct gamma_flood *flo
 static void judge(struct judged_case *run, double cell_m, double time_step_s, double judge_cell_m, double duration_s)
 {
     run->channel.cell_m = cell_m;
-    run->channel.time_step_s = run->full.output_step_s = time_step_s;
-    run->channel.duration_s = run->full.duration_s = duration_s;
-    run->full.cell_m = judge_cell_m;
+    run->channel.time_step_s = time_step_s;
+    run->channel.duration_s = duration_s;
+    const struct full_flow_case fine = {.section = &run->channel.section,
+                                        .slope_m_per_m = run->channel.slope_m_per_m,
+                                        .length_m = run->channel.length_m,
+                                        .cell_count = (size_t)lround(run->channel.length_m / judge_cell_m),
+                                        .largest_m3s = run->channel.largest_m3s,
+                                        .duration_s = duration_s,
+                                        .output_step_s = time_step_s,
+                                        .inflow = run->channel.flood,
+                                        .inflow_parameters = run->channel.flood_parameters};
     struct channel_result routed = channel_run(&run->channel);
-    struct sv_result full = sv_run(&run->full);
+    struct full_flow_result full;
+    assert_true(full_flow_run(&fine, &full));
     assert_int_equal(routed.count, full.count);
     double mean = 0.0, error = 0.0, spread = 0.0;
     for (size_t i = 0; i < full.count; i++)
@@ -365,7 +368,7 @@ static void judge(struct judged_case *run, double cell_m, double time_step_s, do
     assert_true(routed.counts.halved <= run->most_halved);
     assert_int_equal(routed.counts.replaced, 0);
     channel_result_clear(&routed);
-    sv_result_clear(&full);
+    full_flow_result_clear(&full);
 }
 
 static void named_rivers_agree_with_the_fine_grid(void **state)

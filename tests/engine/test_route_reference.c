@@ -1,7 +1,7 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * The storage form against the full Saint-Venant equations: our own fine-grid solution (saint_venant.h), and the
- * flood waves of tests/reference/, which a third method computed.
+ * The storage form against the full Saint-Venant equations: the independent fine-grid solution
+ * (tests/independent/full_flow.h), and the flood waves of tests/reference/, which a third method computed.
  */
 #include <setjmp.h>
 #include <stdarg.h>
@@ -15,7 +15,7 @@
 
 #include "tests/engine/reference_table.h"
 #include "tests/engine/route_one_reach.h"
-#include "tests/engine/saint_venant.h"
+#include "tests/independent/full_flow.h"
 
 /* --- the rivers
  * ------------------------------------------------------------------------------------------------------ Hydrographs
@@ -28,7 +28,7 @@ static const struct section published_rectangle = {
 
 struct river_case {
     const char *name;
-    struct sv_case full; /* on the coarser of two grids */
+    struct full_flow_case full; /* on the coarser of two grids */
     struct section section;
     double time_step_s;
 };
@@ -36,15 +36,13 @@ struct river_case {
 static const struct gamma_flood steep_flood = {5.0, 95.0, 2.0 * 3600.0, 4.0};
 static const struct river_case steep = {
     .name = "steep: 20 m wide, S0 0.01, n 0.04, 20 km, 5 to 100 m3/s in 2 h",
-    .full = {.section = {.width_m = 20.0, .n = 0.04},
-             .slope_m_per_m = 0.01,
+    .full = {.slope_m_per_m = 0.01,
              .length_m = 20000.0,
-             .extension_m = 1000.0,
-             .cell_m = 100.0,
+             .cell_count = 200,
              .duration_s = 7.0 * 3600.0,
              .output_step_s = 60.0,
-             .flood = gamma_flood_m3s,
-             .flood_parameters = &steep_flood},
+             .inflow = gamma_flood_m3s,
+             .inflow_parameters = &steep_flood},
     .section = {.shape = SECTION_RECTANGLE, .bottom_m = 20.0, .roughness_n = 0.04},
     .time_step_s = 60.0};
 
@@ -52,15 +50,13 @@ static const struct gamma_flood flashy_flood = {3.0, 57.0, 1.5 * 3600.0, 4.0};
 static const struct river_case flashy = {
     .name =
         "flashy: 8 m channel 1.8 m deep, plains of 20 m in all, n 0.04/0.07, S0 0.003, 12 km, 3 to 60 m3/s in 90 min",
-    .full = {.section = {.width_m = 8.0, .n = 0.04, .plain_above_m = 1.8, .plain_width_m = 20.0, .plain_n = 0.07},
-             .slope_m_per_m = 0.003,
+    .full = {.slope_m_per_m = 0.003,
              .length_m = 12000.0,
-             .extension_m = 2500.0, /* five times D/c at the peak */
-             .cell_m = 100.0,
+             .cell_count = 120,
              .duration_s = 9.0 * 3600.0,
              .output_step_s = 60.0,
-             .flood = gamma_flood_m3s,
-             .flood_parameters = &flashy_flood},
+             .inflow = gamma_flood_m3s,
+             .inflow_parameters = &flashy_flood},
     .section = {.shape = SECTION_RECTANGLE,
                 .bottom_m = 8.0,
                 .roughness_n = 0.04,
@@ -71,25 +67,22 @@ static const struct river_case flashy = {
     .time_step_s = 60.0};
 
 /* Wider plains: the wave is flattened three times as much, and the routing shows what it cannot do. */
-static const struct river_case wide_plains = {
-    .name = "as flashy, with plains of 60 m in all",
-    .full = {.section = {.width_m = 8.0, .n = 0.04, .plain_above_m = 1.8, .plain_width_m = 60.0, .plain_n = 0.07},
-             .slope_m_per_m = 0.003,
-             .length_m = 12000.0,
-             .extension_m = 2500.0,
-             .cell_m = 50.0,
-             .duration_s = 9.0 * 3600.0,
-             .output_step_s = 60.0,
-             .flood = gamma_flood_m3s,
-             .flood_parameters = &flashy_flood},
-    .section = {.shape = SECTION_RECTANGLE,
-                .bottom_m = 8.0,
-                .roughness_n = 0.04,
-                .has_plain = true,
-                .plain_above_m = 1.8,
-                .plain_width_m = 60.0,
-                .plain_roughness_n = 0.07},
-    .time_step_s = 60.0};
+static const struct river_case wide_plains = {.name = "as flashy, with plains of 60 m in all",
+                                              .full = {.slope_m_per_m = 0.003,
+                                                       .length_m = 12000.0,
+                                                       .cell_count = 240,
+                                                       .duration_s = 9.0 * 3600.0,
+                                                       .output_step_s = 60.0,
+                                                       .inflow = gamma_flood_m3s,
+                                                       .inflow_parameters = &flashy_flood},
+                                              .section = {.shape = SECTION_RECTANGLE,
+                                                          .bottom_m = 8.0,
+                                                          .roughness_n = 0.04,
+                                                          .has_plain = true,
+                                                          .plain_above_m = 1.8,
+                                                          .plain_width_m = 60.0,
+                                                          .plain_roughness_n = 0.07},
+                                              .time_step_s = 60.0};
 
 /* Nash and Sutcliffe (1970): 1 is perfect, 0 no better than the mean. */
 static double efficiency(size_t count, const double expected[], const double routed[])
@@ -102,70 +95,6 @@ static double efficiency(size_t count, const double expected[], const double rou
         spread += (expected[i] - mean) * (expected[i] - mean);
     }
     return 1.0 - square / spread;
-}
-
-/* --- the reference solver itself
- * ----------------------------------------------------------------------------------- */
-
-static double even_flow(double t_s, const void *parameters)
-{
-    (void)t_s;
-    return *(const double *)parameters;
-}
-
-static void full_equations_keep_uniform_flow(void **state)
-{
-    (void)state;
-    static const double flows[] = {3.0, 41.7};
-    for (size_t i = 0; i < 2; i++) {
-        struct sv_case even = flashy.full;
-        even.flood = even_flow;
-        even.flood_parameters = &flows[i];
-        even.duration_s = 3600.0;
-        struct sv_result result = sv_run(&even);
-        double normal_depth = 0.0; /* and the engine's section agrees on what uniform flow is */
-        assert_int_equal(section_normal_depth_m(&flashy.section, even.slope_m_per_m, flows[i], &normal_depth), FW_OK);
-        for (size_t k = 0; k < result.count; k++) {
-            assert_true(fabs(result.discharge_m3s[k] - flows[i]) <= 1e-9 * flows[i]);
-            assert_true(fabs(result.depth_m[k] - normal_depth) <= 1e-9 * normal_depth);
-        }
-        sv_result_clear(&result);
-    }
-}
-
-static void full_equations_reproduce_the_published_flood_wave(void **state)
-{
-    (void)state;
-    const struct sv_case wave = {.section = {.width_m = 50.0, .n = 0.035},
-                                 .slope_m_per_m = 0.001,
-                                 .length_m = 100e3,
-                                 .extension_m = 25e3,
-                                 .cell_m = 1000.0,
-                                 .duration_s = 72.0 * 3600.0,
-                                 .output_step_s = 300.0,
-                                 .flood = gamma_flood_m3s,
-                                 .flood_parameters = &published_flood};
-    struct reference_table table = reference_table_load("saint_venant_flood_wave_summary.csv");
-    size_t row = 1; /* rectangle, 0.001 */
-    assert_string_equal(reference_table_text(&table, row, "section"), "rectangle");
-    assert_true(fabs(reference_table_number(&table, row, "S0") - 0.001) <= 1e-15);
-    struct sv_result result = sv_run(&wave);
-    struct flood_peak flow = flood_peak_of(result.count, result.discharge_m3s, 300.0);
-    struct flood_peak depth = flood_peak_of(result.count, result.depth_m, 300.0);
-    double expected = reference_table_number(&table, row, "peak_Q_100km");
-    double expected_depth = reference_table_number(&table, row, "peak_depth_100km_m");
-    print_message(
-        "full equations, published wave, S0 0.001: peak %.2f m3/s (%.2f) at %.3f h (%.3f), depth %.4f m (%.4f)\n",
-        flow.discharge_m3s, expected, flow.time_s / 3600.0, reference_table_number(&table, row, "t_peak_Q_h"),
-        depth.discharge_m3s, expected_depth);
-    /* an order of magnitude inside the file's own tolerances of 0.5 % and 0.25 h */
-    assert_true(fabs(flow.discharge_m3s / expected - 1.0) <= 5e-4);
-    assert_true(fabs(flow.time_s / 3600.0 - reference_table_number(&table, row, "t_peak_Q_h")) <= 0.025);
-    assert_true(fabs(depth.discharge_m3s / expected_depth - 1.0) <= 5e-4);
-    assert_true(fabs(depth.time_s / 3600.0 - reference_table_number(&table, row, "t_peak_depth_h")) <= 0.025);
-    assert_true(fabs(result.imbalance) <= 1e-12);
-    sv_result_clear(&result);
-    reference_table_clear(&table);
 }
 
 /* --- the storage form against it
@@ -181,17 +110,21 @@ struct comparison {
 static struct comparison compare(const struct river_case *river)
 {
     struct comparison comparison;
-    struct sv_case finer = river->full;
-    const struct gamma_flood *flood = river->full.flood_parameters;
-    finer.cell_m *= 0.5;
-    struct sv_result coarse = sv_run(&river->full);
-    struct sv_result truth = sv_run(&finer);
+    const struct gamma_flood *flood = river->full.inflow_parameters;
+    struct full_flow_case coarser = river->full;
+    coarser.section = &river->section;
+    coarser.largest_m3s = flood->base_m3s + flood->rise_m3s;
+    struct full_flow_case finer = coarser;
+    finer.cell_count *= 2;
+    struct full_flow_result coarse, truth;
+    assert_true(full_flow_run(&coarser, &coarse));
+    assert_true(full_flow_run(&finer, &truth));
     const struct one_reach one = {.section = &river->section,
                                   .slope_m_per_m = river->full.slope_m_per_m,
                                   .length_m = river->full.length_m,
                                   .time_step_s = river->time_step_s,
                                   .largest_m3s = flood->base_m3s + flood->rise_m3s,
-                                  .flood = river->full.flood,
+                                  .flood = river->full.inflow,
                                   .flood_parameters = flood,
                                   .duration_s = river->full.duration_s};
     struct one_reach_result routed = route_one_reach(&one);
@@ -210,8 +143,8 @@ static struct comparison compare(const struct river_case *river)
                   100.0 * comparison.grid_peak_difference, (coarse_peak.time_s - true_peak.time_s) / 60.0,
                   river->time_step_s, routed.cell_count, routed.cell_m, 100.0 * comparison.peak_error,
                   comparison.time_error_s / 60.0, comparison.efficiency);
-    sv_result_clear(&coarse);
-    sv_result_clear(&truth);
+    full_flow_result_clear(&coarse);
+    full_flow_result_clear(&truth);
     one_reach_result_clear(&routed);
     return comparison;
 }
@@ -377,8 +310,6 @@ static void the_linear_scheme_makes_or_loses_water_and_the_storage_form_does_not
 int main(void)
 {
     const struct CMUnitTest tests[] = {
-        cmocka_unit_test(full_equations_keep_uniform_flow),
-        cmocka_unit_test(full_equations_reproduce_the_published_flood_wave),
         cmocka_unit_test(steep_and_flashy_peaks_are_those_of_the_full_equations),
         cmocka_unit_test(wide_plains_show_the_limit_of_the_method),
         cmocka_unit_test(published_flood_waves_come_out),
