@@ -156,6 +156,11 @@ enum fw_status station_store_open(struct station *station, struct fw_error *erro
     enum fw_status status = store_open(station->settings->store_file, STORE_WRITE, &station->store, error);
     if (status == FW_OK)
         status = store_keep_settings(station->store, station->settings, clock_world_utc_s(&station->clock), error);
+    if (status == FW_OK && store_upgraded_from(station->store) != 0)
+        journal_say(&station->journal, JOURNAL_NOTICE,
+                    "store: was of version %d and has been brought on; what it was is kept as %s.version-%d",
+                    store_upgraded_from(station->store), station->settings->store_file,
+                    store_upgraded_from(station->store));
     if (status == FW_OK)
         return station_store_load(station, error);
     if (status == FW_LOCKED || status == FW_FOREIGN || status == FW_NO_MEMORY)

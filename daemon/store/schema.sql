@@ -1,5 +1,5 @@
 -- SPDX-License-Identifier: MIT
--- The store, version 1. docs/store.md tells every column. Times are UTC seconds since 1970; no value: there is none.
+-- The store, version 2 (store_upgrade.c brings older ones to it). docs/store.md tells every column. Times are UTC seconds since 1970; no value: there is none.
 -- `entry` numbers rise for ever over reading, judgement, word, outbox and ledger together: the "known at" axis.
 
 CREATE TABLE ledger (
@@ -33,14 +33,15 @@ CREATE TABLE judgement (
     reading INTEGER NOT NULL REFERENCES reading (entry),
     flag    INTEGER NOT NULL,
     use     TEXT NOT NULL CHECK (use IN ('use', 'hold', 'keep out')),
-    reasons INTEGER NOT NULL
+    reasons INTEGER NOT NULL,
+    tests   TEXT CHECK (length(tests) = 11)
 ) STRICT;
 CREATE INDEX judgement_by_reading ON judgement (reading);
 
 CREATE TABLE word (
     entry    INTEGER PRIMARY KEY,
     id       TEXT NOT NULL UNIQUE,
-    kind     TEXT NOT NULL CHECK (kind IN ('accept', 'reading', 'seen', 'road', 'note')),
+    kind     TEXT NOT NULL CHECK (kind IN ('accept', 'reading', 'seen', 'road', 'note', 'rating')),
     subject  TEXT NOT NULL,
     value    REAL,
     unit     TEXT,
@@ -50,8 +51,10 @@ CREATE TABLE word (
     "by"     TEXT NOT NULL,
     at       INTEGER NOT NULL,
     received INTEGER NOT NULL,
+    rating   TEXT CHECK (rating IN ('void', 'in force')),
     CHECK ((kind = 'seen') = (is_wet IS NOT NULL)),
-    CHECK ((kind = 'road') = (road IS NOT NULL))
+    CHECK ((kind = 'road') = (road IS NOT NULL)),
+    CHECK ((kind = 'rating') = (rating IS NOT NULL))
 ) STRICT;
 
 CREATE TABLE advice (

@@ -16,7 +16,8 @@ enum { STORE_PATH_SIZE = 1024 }; /* of a store's path with everything that is pu
 
 /*
  * STORE_WRITE takes the lock file "<file>.lock" first and creates what is missing, the directory too when its
- * parent exists. This is version 1 of the tables: there is no older one to migrate from.
+ * parent exists. A store of an earlier version is copied
+ * beside and brought to this one.
  * FW_LOCKED      another instance holds it; the error names its pid
  * FW_FOREIGN     not a Forewater store, or of a version this program does not know: both named, the file untouched
  *                byte for byte
@@ -28,6 +29,9 @@ enum { STORE_PATH_SIZE = 1024 }; /* of a store's path with everything that is pu
 FW_MUST_CHECK enum fw_status store_open(const char *file, enum store_access access, struct store **store_out,
                                         struct fw_error *error);
 void store_close(struct store *store); /* NULL is fine */
+
+/* The version the store had when it was opened for writing, if that was an earlier one; else 0. */
+int store_upgraded_from(const struct store *store);
 
 /* Is a daemon holding the write lock of this store? *pid_out 0: no. Needs no store_open. */
 bool store_is_held(const char *file, long *pid_out);

@@ -8,6 +8,7 @@
 #include <stdio.h>
 #include <string.h>
 #include <sys/stat.h>
+#include <sys/statvfs.h>
 #include <sys/vfs.h>
 #include <unistd.h>
 
@@ -45,7 +46,8 @@ static enum store_file_kind kind_of_header(const unsigned char header[HEADER_SIZ
     if (memcmp(header, "SQLite format 3", 16) != 0 || big_endian_32(header + APPLICATION_AT) != STORE_APPLICATION_ID)
         return STORE_FILE_STRANGE;
     *version_out = big_endian_32(header + VERSION_AT);
-    return *version_out != STORE_VERSION ? STORE_FILE_OTHER : STORE_FILE_OURS;
+    bool is_known = *version_out >= STORE_OLDEST_VERSION && *version_out <= STORE_VERSION;
+    return is_known ? STORE_FILE_OURS : STORE_FILE_OTHER;
 }
 
 bool store_file_is_our_header(const unsigned char header[STORE_HEADER_SIZE])
@@ -101,6 +103,22 @@ enum fw_status store_file_make_room(const char *file, struct fw_error *error)
     if (status == FW_OK && mkdir(directory, 0750) != 0 && errno != EEXIST)
         status = system_fault(directory, "make the directory of the store", error);
     return status;
+}
+
+enum fw_status store_file_check_room(const char *file, int64_t bytes, struct fw_error *error)
+{
+    char directory[STORE_PATH_SIZE];
+    struct statvfs place;
+    enum fw_status status = directory_of(file, directory, error);
+    if (status != FW_OK)
+        return status;
+    if (statvfs(directory, &place) != 0)
+        return system_fault(directory, "look at the file system", error);
+    uint64_t free_bytes = (uint64_t)place.f_bavail * place.f_frsize;
+    if (free_bytes < (uint64_t)bytes)
+        return fw_error_set(error, FW_IO, "%s: %llu MiB free, %llu MiB needed", directory,
+                            (unsigned long long)(free_bytes >> 20), (unsigned long long)bytes >> 20);
+    return FW_OK;
 }
 
 /* Locks and shared memory are not to be trusted there. */

@@ -10,7 +10,8 @@
 
 enum {
     STORE_APPLICATION_ID = 0x46777472, /* "Fwtr", at byte 68 of the file */
-    STORE_VERSION = 1,                 /* user_version, at byte 60 */
+    STORE_OLDEST_VERSION = 1,          /* from which a store can be brought on */
+    STORE_VERSION = 2,                 /* user_version, at byte 60 */
     STORE_RAW_ROWS_MAX = 200,
     STORE_RAW_BYTES_MAX = 16 * 1024 * 1024
 };
@@ -66,10 +67,11 @@ enum store_statement {
 struct store {
     char *file;
     enum store_access access;
-    sqlite3 *db;      /* NULL: closed by a failed store_reopen */
-    int lock;         /* descriptor of the lock file; -1 for readers */
-    bool must_reopen; /* a write, a sync or a page failed: what is in memory is no longer to be trusted */
-    dev_t device;     /* of the file that is open, and of its write-ahead log */
+    sqlite3 *db;       /* NULL: closed by a failed store_reopen */
+    int lock;          /* descriptor of the lock file; -1 for readers */
+    int upgraded_from; /* the version it had when it was opened for writing; 0: this one */
+    bool must_reopen;  /* a write, a sync or a page failed: what is in memory is no longer to be trusted */
+    dev_t device;      /* of the file that is open, and of its write-ahead log */
     ino_t inode, log_inode;
     char newest_link[FACT_DIGEST_SIZE];
     sqlite3_stmt *statements[STORE_STATEMENT_COUNT]; /* prepared at first use */
@@ -170,9 +172,9 @@ FW_MUST_CHECK enum fw_status store_newest_verdict(struct store *store, int64_t r
 
 enum store_file_kind {
     STORE_FILE_MISSING, /* or empty */
-    STORE_FILE_OURS,
-    STORE_FILE_OTHER,  /* ours, of a version this program does not know */
-    STORE_FILE_STRANGE /* another program's, or its first page is damaged */
+    STORE_FILE_OURS,    /* of this version, or one that can be brought to it */
+    STORE_FILE_OTHER,   /* ours, of a version this program does not know */
+    STORE_FILE_STRANGE  /* another program's, or its first page is damaged */
 };
 /* Reads the first bytes by hand: SQLite never opens a file that is not ours. version_out: of OURS and OTHER. */
 enum { STORE_HEADER_SIZE = 100 };
@@ -183,8 +185,16 @@ enum fw_status store_file_refuse_strange(const char *file, struct fw_error *erro
 enum fw_status store_file_refuse_version(const char *file, int version, struct fw_error *error); /* likewise */
 /* Makes the directory (its parent must exist). */
 FW_MUST_CHECK enum fw_status store_file_make_room(const char *file, struct fw_error *error);
+/* Room for so many bytes more. FW_IO: there is not, or it cannot be said. */
+FW_MUST_CHECK enum fw_status store_file_check_room(const char *file, int64_t bytes, struct fw_error *error);
 /* On a file system of this machine, and not writable by everyone? */
 FW_MUST_CHECK enum fw_status store_file_check_place(const char *file, struct fw_error *error);
+/*
+ * An open store of an earlier version, its pages found sound, is copied whole to "<file>.version-N", and then brought
+ * on, each version in one transaction. Cut off anywhere, the next opening goes on. FW_IO: no room for the copy, or a
+ * step failed; the store is of some version in between, as good as before.
+ */
+FW_MUST_CHECK enum fw_status store_upgrade(struct store *store, int from_version, struct fw_error *error);
 /* A whole, empty store, built beside and renamed into place. The lock is held. */
 FW_MUST_CHECK enum fw_status store_file_create(const char *file, struct fw_error *error);
 /* FW_DAMAGED when SQLite's quick check finds anything. Writes nothing to the file. */

@@ -30,16 +30,45 @@ static enum fw_status open_database(struct store *store, const char *name, int f
 }
 
 /* The first read. The header seen by hand may be older than what the write-ahead log holds. */
-static enum fw_status check_version(struct store *store, struct fw_error *error)
+static enum fw_status read_version(struct store *store, int *version_out, struct fw_error *error)
 {
     sqlite3_stmt *query = NULL;
     enum fw_status status = FW_OK;
     if (sqlite3_prepare_v2(store->db, "PRAGMA user_version", -1, &query, NULL) != SQLITE_OK ||
         sqlite3_step(query) != SQLITE_ROW)
         status = store_fault(store, "read the version", error);
-    else if (sqlite3_column_int(query, 0) != STORE_VERSION)
-        status = store_file_refuse_version(store->file, sqlite3_column_int(query, 0), error);
+    else
+        *version_out = sqlite3_column_int(query, 0);
     sqlite3_finalize(query);
+    return status;
+}
+
+static enum fw_status check_version(struct store *store, struct fw_error *error)
+{
+    int version = 0;
+    enum fw_status status = read_version(store, &version, error);
+    if (status == FW_OK && version >= STORE_OLDEST_VERSION && version < STORE_VERSION)
+        return fw_error_set(
+            error, FW_FOREIGN,
+            "%s: is a store of version %d, this program works on version %d; the daemon brings it on when "
+            "it starts",
+            store->file, version, STORE_VERSION);
+    if (status == FW_OK && version != STORE_VERSION)
+        return store_file_refuse_version(store->file, version, error);
+    return status;
+}
+
+/* Sound pages first: nothing is written to a damaged store. */
+static enum fw_status check_and_bring_on(struct store *store, struct fw_error *error)
+{
+    int version = 0;
+    enum fw_status status = read_version(store, &version, error);
+    if (status == FW_OK && (version < STORE_OLDEST_VERSION || version > STORE_VERSION))
+        return store_file_refuse_version(store->file, version, error);
+    if (status == FW_OK)
+        status = store_quick_check(store->db, store->file, error);
+    if (status == FW_OK && version < STORE_VERSION)
+        status = store_upgrade(store, version, error);
     return status;
 }
 
@@ -86,9 +115,7 @@ static enum fw_status connect_writer(struct store *store, struct fw_error *error
     sqlite3_soft_heap_limit64(HEAP_SOFT_LIMIT);
     enum fw_status status = open_database(store, store->file, SQLITE_OPEN_READWRITE, error);
     if (status == FW_OK)
-        status = check_version(store, error);
-    if (status == FW_OK)
-        status = store_quick_check(store->db, store->file, error);
+        status = check_and_bring_on(store, error);
     if (status == FW_OK)
         status = run_pragmas(store, write_pragmas, error);
     if (status == FW_OK)

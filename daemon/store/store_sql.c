@@ -18,8 +18,8 @@ static const char *const statement_text[STORE_STATEMENT_COUNT] = {
     [STORE_ADD_LEDGER] = "INSERT INTO ledger VALUES (?, ?, ?, ?, ?, ?)",
     [STORE_ADD_LEDGER_PAYLOAD] = "INSERT INTO ledger_payload VALUES (?, ?)",
     [STORE_ADD_READING] = "INSERT INTO reading VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
-    [STORE_ADD_JUDGEMENT] = "INSERT INTO judgement VALUES (?, ?, ?, ?, ?)",
-    [STORE_ADD_WORD] = "INSERT INTO word VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
+    [STORE_ADD_JUDGEMENT] = "INSERT INTO judgement (entry, reading, flag, use, reasons) VALUES (?, ?, ?, ?, ?)",
+    [STORE_ADD_WORD] = "INSERT INTO word (" WORD_COLUMNS ") VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
     [STORE_ADD_RAW] = "INSERT INTO raw_payload VALUES (NULL, ?, ?, ?, ?, ?, ?)",
     [STORE_PRUNE_RAW_ROWS] = "DELETE FROM raw_payload WHERE number <= "
                              "(SELECT number FROM raw_payload ORDER BY number DESC LIMIT 1 OFFSET ?)",

@@ -128,7 +128,8 @@ static void words_that_are_none_are_damage(void **state)
     static const struct {
         const char *sql, *says;
     } cases[] = {
-        {"INSERT INTO word VALUES (99, 'x', 'road', 'tallowick-ford', NULL, NULL, NULL, 'AJAR', '', 'crew', 1, 1)",
+        {"INSERT INTO word VALUES (99, 'x', 'road', 'tallowick-ford', NULL, NULL, NULL, 'AJAR', '', 'crew', 1, 1, "
+         "NULL)",
          "word 'x'"},
         {"DELETE FROM word; INSERT INTO advice VALUES ('tallowick-ford', (SELECT max(entry) FROM ledger), 'PANIC', "
          "0, 0, 0, NULL, 1, NULL, NULL, NULL)",

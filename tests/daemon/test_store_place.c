@@ -112,7 +112,7 @@ static void a_whole_database_of_another_program_in_our_place_is_still_not_ours(v
 static void a_store_of_another_version_is_refused_naming_both(void **state)
 {
     struct scene *scene = *state;
-    static const int versions[] = {2, 17, 0};
+    static const int versions[] = {STORE_VERSION + 1, 17, 0};
     picture_destroy(scene_fill(scene, 1));
     for (size_t index = 0; index < sizeof versions / sizeof versions[0]; index++) {
         char sql[128];
@@ -126,7 +126,7 @@ static void a_store_of_another_version_is_refused_naming_both(void **state)
         char *before = scene_read_file(scene->file, &size_before);
         assert_int_equal(scene_try_open(scene, STORE_WRITE), FW_FOREIGN);
         scene_assert_says(scene, named);
-        scene_assert_says(scene, "knows version 1");
+        scene_assert_says(scene, "knows version 2");
         assert_int_equal(scene_try_open(scene, STORE_READ), FW_FOREIGN);
         assert_int_equal(store_rescue(scene->file, SCENE_NOW_S, moved_to, &scene->error), FW_FOREIGN);
         char *after = scene_read_file(scene->file, &size_after);
@@ -145,7 +145,7 @@ static void a_newer_version_that_is_only_in_the_log_is_seen_too(void **state)
     if (child == 0) { /* a newer program that was cut off */
         sqlite3 *db = NULL;
         bool is_done = sqlite3_open(scene->file, &db) == SQLITE_OK &&
-                       sqlite3_exec(db, "PRAGMA user_version = 2", NULL, NULL, NULL) == SQLITE_OK;
+                       sqlite3_exec(db, "PRAGMA user_version = 3", NULL, NULL, NULL) == SQLITE_OK;
         _exit(is_done ? 0 : 1);
     }
     int how = 0;
@@ -155,7 +155,7 @@ static void a_newer_version_that_is_only_in_the_log_is_seen_too(void **state)
     assert_int_equal(how, 0);
     char *before = scene_read_file(scene->file, &size_before);
     assert_int_equal(scene_try_open(scene, STORE_WRITE), FW_FOREIGN);
-    scene_assert_says(scene, "of version 2");
+    scene_assert_says(scene, "of version 3");
     char *after = scene_read_file(scene->file, &size_after);
     assert_int_equal(size_after, size_before);
     assert_memory_equal(after, before, size_before);
