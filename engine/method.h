@@ -1,33 +1,108 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * What the methods are called, and whether the storage form is fit for a reach and a flood.
- * Two numbers without units decide, taken at the flood's peak:
+ * Which method a reach is computed with: what the methods are called, and which is fit for a reach and a flood.
+ * Two numbers without units decide, at the flows from the flood's base to its peak:
  *     eps = D / (c^2 T)   the time a wave needs to spread by itself, against its rise
  *     lam = L / (c T)     how long the reach is, against the rise
  * with the celerity c, the hydraulic diffusivity D, the reach length L and the rise time T = (Qpeak - Qbase) / max(dQ/dt). The
  * storage form's peak stays within 1 % of the full equations' while eps^1.5 lam < METHOD_STORAGE_LIMIT; beyond, it
- * comes out late and low.
- * The published applicability limits of simplified waves are of the same kind: Ponce, Li and Simons, Applicability of
- * kinematic and diffusion models (1978). The number is the project's own, found on random reaches.
+ * comes out late and low. The number is the project's own, found on random reaches.
+ * The published applicability limits of simplified waves are of the same kind and are given beside it: Ponce, Li and
+ * Simons, Applicability of kinematic and diffusion models (1978).
  */
 #ifndef FOREWATER_ENGINE_METHOD_H
 #define FOREWATER_ENGINE_METHOD_H
 
 #include <stdbool.h>
 
+#include "engine/flow_curve.h"
 #include "engine/network.h"
 
 #define METHOD_STORAGE_LIMIT 0.007
+#define METHOD_KINEMATIC_LIMIT 85.0 /* rise S0 u / h: from here on a kinematic wave is within 5 % */
+#define METHOD_DIFFUSION_LIMIT 15.0 /* rise S0 sqrt(g / h): from here on a diffusion wave is */
+#define METHOD_RAISE_LIMIT 0.10     /* of normal depth: a level raised by more from below is backwater */
+#define METHOD_FROUDE_LIMIT 0.9     /* at the peak: faster flow is not for the full equations here */
+enum { METHOD_MOST_FULL_CELLS = 400 };
 
-/* The words people write and read: "muskingum-cunge". */
+/* The words people write and read: "muskingum-cunge"; "auto" for NETWORK_AUTO. */
 const char *method_name(enum network_method method);
-/* False, and nothing written, for any other word; "auto" is a choice, not a method. */
+/* False, and nothing written, for any other word. */
 bool method_from_name(const char *name, enum network_method *method_out);
+
+struct method_flood { /* the severest flood that the choice must be right for; peak_m3s 0: none is known */
+    double base_m3s, peak_m3s;
+    double rise_s; /* (peak - base) / steepest rise */
+};
+
+struct method_reach {
+    const struct flow_curve *curve;
+    double length_m, slope_m_per_m;
+    bool is_level_held; /* at its foot: an outlet's level */
+    bool has_control;   /* what raises the level at its foot is computed by the full equations */
+    double raise_share; /* of the depth at its foot above normal, by normal depth, at the flow where it is most */
+};
+
+enum method_reason {
+    METHOD_STATED,       /* not chosen: the configuration names it */
+    METHOD_NO_FLOOD,     /* storage form, as no flood is known to choose by */
+    METHOD_WITHIN_LIMIT, /* storage form */
+    METHOD_BEYOND_LIMIT, /* full equations: the storage form's peak would come late and low */
+    METHOD_HELD_LEVEL,   /* full equations: a level is held at the foot */
+    METHOD_BACKWATER,    /* full equations: a control below raises the level */
+    METHOD_TOO_STEEP,    /* full equations wanted; their cells would be too many: storage form */
+    METHOD_TOO_FAST,     /* full equations wanted; too near critical flow: storage form */
+    METHOD_REASON_COUNT
+};
+
+struct method_choice {
+    enum network_method method;
+    enum method_reason reason;
+    enum network_method advised; /* by the rule; another than method only where that is stated */
+    struct method_flood flood;   /* at this reach */
+    /* the worst of the flood's range; all NAN where no flood is known */
+    double storage_number; /* eps^1.5 lam, against METHOD_STORAGE_LIMIT */
+    double spread_number;  /* eps there */
+    double length_number;  /* lam there */
+    double at_discharge_m3s;
+    /* at the peak */
+    double froude;
+    double diffusion_length_m; /* D/c; cells of the full equations are at most twice as long */
+    double kinematic_number;   /* rise S0 u / h */
+    double diffusion_number;   /* rise S0 sqrt(g / h) */
+    double raise_share;        /* as given */
+};
+
+void method_choose(const struct method_reach *reach, const struct method_flood *flood,
+                   struct method_choice *choice_out);
+
+/* "the wave spreads too much for the storage form": one line, no closing stop. */
+const char *method_reason_text(enum method_reason reason);
 
 /* eps^1.5 lam. All arguments positive, SI. */
 double method_storage_number(double length_m, double celerity_m_s, double diffusivity_m2_s, double rise_s);
 
 /* The quickest rise for which the storage form is fit: where the number is the limit. */
 double method_storage_least_rise_s(double length_m, double celerity_m_s, double diffusivity_m2_s);
+
+/*
+ * The published numbers, with the time of rise; in terms of the wave's period, twice the rise, their limits are twice as
+ * high (171 and 30). Source: Ponce, Li and Simons (1978).
+ */
+double method_kinematic_number(double rise_s, double slope_m_per_m, double velocity_m_s, double depth_m);
+double method_diffusion_number(double rise_s, double slope_m_per_m, double depth_m);
+
+/*
+ * The longest time step, in whole seconds, of which data_interval_s is a multiple and which is neither above a minute
+ * nor a fortieth of the flood's rise; at least 1 s. No flood known: as for a slow one.
+ */
+double method_time_step_s(const struct method_flood *flood, double data_interval_s);
+
+/*
+ * Depth at the head of a reach of steady flow whose depth at the foot is foot_depth_m; the normal depth where that is not
+ * raised, or no longer felt. Direct step method, Chow (1959), section 10-3.
+ */
+double method_backwater_depth_m(const struct section *section, double slope_m_per_m, double length_m,
+                                double discharge_m3s, double normal_depth_m, double foot_depth_m);
 
 #endif

@@ -19,6 +19,8 @@ static enum fw_status allocate_parts(struct network *network)
 {
     const struct network_river *river = &network->river;
     network->reaches = room_for(river->reach_count, sizeof *network->reaches);
+    network->river_reaches = room_for(river->reach_count, sizeof *network->river_reaches);
+    network->choices = room_for(river->reach_count, sizeof *network->choices);
     network->order = room_for(river->reach_count, sizeof *network->order);
     network->gauge_of_head = room_for(river->reach_count, sizeof *network->gauge_of_head);
     network->first_above = room_for(river->reach_count, sizeof *network->first_above);
@@ -31,11 +33,11 @@ static enum fw_status allocate_parts(struct network *network)
     network->points = room_for(river->point_count, sizeof *network->points);
     network->delays = room_for(river->side_inflow_count, sizeof *network->delays);
     network->roughness_factors = room_for(network->group_count, sizeof *network->roughness_factors);
-    bool is_short = network->reaches == NULL || network->order == NULL || network->gauge_of_head == NULL ||
-                    network->first_above == NULL || network->next_above == NULL || network->first_point == NULL ||
-                    network->next_point == NULL || network->state_offset == NULL || network->tree_of_reach == NULL ||
-                    network->trees == NULL || network->points == NULL || network->delays == NULL ||
-                    network->roughness_factors == NULL;
+    bool is_short = network->reaches == NULL || network->river_reaches == NULL || network->choices == NULL ||
+                    network->order == NULL || network->gauge_of_head == NULL || network->first_above == NULL ||
+                    network->next_above == NULL || network->first_point == NULL || network->next_point == NULL ||
+                    network->state_offset == NULL || network->tree_of_reach == NULL || network->trees == NULL ||
+                    network->points == NULL || network->delays == NULL || network->roughness_factors == NULL;
     return is_short ? FW_NO_MEMORY : FW_OK;
 }
 
@@ -74,12 +76,12 @@ static void make_lists(struct network *network)
     }
 }
 
-static enum fw_status make_reaches(struct network *network, const struct network_options *options,
-                                   struct network_fault *fault_out)
+static enum fw_status make_curves(struct network *network, const struct network_options *options,
+                                  struct network_fault *fault_out)
 {
     const struct network_river *river = &network->river;
     for (size_t i = 0; i < river->reach_count; i++) {
-        enum fw_status status = routed_reach_init(&network->reaches[i], river, i, options);
+        enum fw_status status = routed_reach_init_curve(&network->reaches[i], &river->reaches[i], options);
         if (status == FW_BAD_INPUT)
             snprintf(fault_out->text, sizeof fault_out->text,
                      "reach '%s': section: no depth at which it carries %g m3/s (with head-room) and widens upwards",
@@ -88,6 +90,18 @@ static enum fw_status make_reaches(struct network *network, const struct network
             return status;
     }
     return FW_OK;
+}
+
+static enum fw_status make_cells(struct network *network, const struct network_options *options)
+{
+    double typical_m3s = options->typical_peak_m3s > 0.0 ? options->typical_peak_m3s : options->largest_discharge_m3s;
+    enum fw_status status = FW_OK;
+    for (size_t i = 0; i < network->river.reach_count && status == FW_OK; i++) {
+        double peak_m3s = network->choices[i].flood.peak_m3s;
+        status = routed_reach_init_cells(&network->reaches[i], &network->river, i,
+                                         peak_m3s > 0.0 ? peak_m3s : typical_m3s, options);
+    }
+    return status;
 }
 
 /* Neighbours by the same full equations make one tree, known by its outlet, which comes last of them in the order. */
@@ -217,9 +231,15 @@ enum fw_status network_create(const struct network_river *river, const struct ne
         goto cleanup;
     memcpy(network->roughness_factors, options->roughness_factors,
            options->group_count * sizeof *options->roughness_factors);
+    memcpy(network->river_reaches, river->reaches, river->reach_count * sizeof *river->reaches);
+    network->river.reaches = network->river_reaches;
     status = make_order(network, fault_out);
     if (status == FW_OK)
-        status = make_reaches(network, options, fault_out);
+        status = make_curves(network, options, fault_out);
+    if (status == FW_OK)
+        status = network_choose_methods(network, options);
+    if (status == FW_OK)
+        status = make_cells(network, options);
     if (status != FW_OK)
         goto cleanup;
     status = make_trees(network, options);
@@ -250,6 +270,8 @@ void network_destroy(struct network *network)
         for (size_t i = 0; i < network->tree_count; i++)
             routed_tree_clear(&network->trees[i]);
     free(network->reaches);
+    free(network->river_reaches);
+    free(network->choices);
     free(network->tree_of_reach);
     free(network->trees);
     free(network->stop_depth_m);

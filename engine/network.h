@@ -26,7 +26,8 @@ enum network_method {
     NETWORK_KINEMATIC,           /* the same with no diffusion of its own */
     NETWORK_KINEMATIC_LINEAR,    /* the published linear scheme: rival and check */
     NETWORK_DYNAMIC,             /* the full equations; neighbouring reaches are solved as one */
-    NETWORK_DIFFUSIVE            /* the same without inertia */
+    NETWORK_DIFFUSIVE,           /* the same without inertia */
+    NETWORK_AUTO                 /* chosen reach by reach (engine/method.h): storage form or full equations */
 };
 
 static inline bool network_method_is_full(enum network_method method)
@@ -114,6 +115,9 @@ static inline bool network_leads_to(const struct network_river *river, size_t fr
     return node == to_node;
 }
 
+struct method_flood; /* engine/method.h */
+struct method_choice;
+
 struct network_options {
     double time_step_s;
     size_t fixed_cell_count; /* per reach; 0: chosen */
@@ -121,7 +125,13 @@ struct network_options {
     const double *roughness_factors; /* group_count */
     size_t members_per_group;
     double largest_discharge_m3s; /* the tables reach several octaves above it */
-    double typical_peak_m3s;      /* cells are sized by the celerity at this flow; 0: largest */
+    double typical_peak_m3s; /* where no flood is known cells are sized by the celerity at this flow; 0: largest */
+    /*
+     * Per gauge, the flood that NETWORK_AUTO must be right for; NULL, or one with a peak of 0: none is known, AUTO is
+     * then the storage form (the full equations where a level is held). A reach's flood is the sum of those above it, side
+     * inflow shares included, with the shortest of their rises.
+     */
+    const struct method_flood *gauge_floods;
 };
 
 struct network_fault {
@@ -131,9 +141,10 @@ struct network_fault {
 struct network;
 
 /*
- * A new network is dry (by the full equations: but for a film of a millimetre, and a held level). Cells: the
- * celerity at typical_peak_m3s times the time step, 3 to 400 of them to a reach; by the full equations at least 10,
- * and no longer than 2 D/c at that flow if 400 are enough.
+ * A new network is dry (by the full equations: but for a film of a millimetre, and a held level). NETWORK_AUTO is
+ * resolved for good. Cells: the celerity at the peak of the reach's flood (typical_peak_m3s where none is known) times
+ * the time step, 3 to 400 of them to a reach; by the full equations at least 10, and no longer than 2 D/c at that flow
+ * if 400 are enough.
  *
  * FW_BAD_INPUT  a loop, an orphan, a node without inflow, a gauge in mid-river, a fork, an index outside, a shape or
  *               number refused; fault_out (written only then) says which, by the reach's or point's id.
@@ -146,6 +157,9 @@ void network_destroy(struct network *network); /* NULL is fine */
 
 size_t network_member_count(const struct network *network);
 size_t network_cell_count(const struct network *network, size_t reach_index);
+
+/* How a reach is computed, and why. */
+void network_reach_choice(const struct network *network, size_t reach_index, struct method_choice *choice_out);
 
 /*
  * Steady flow everywhere, from one inflow per gauge and member: inflow_m3s[gauge][member]. Delay lines are filled

@@ -7,6 +7,7 @@
 
 #include <stdbool.h>
 
+#include "engine/method.h"
 #include "engine/network.h"
 #include "engine/routed_reach.h"
 #include "engine/routed_tree.h"
@@ -33,7 +34,9 @@ struct block_layout {
 };
 
 struct network {
-    struct network_river river;
+    struct network_river river; /* with reaches of our own, no method of which is NETWORK_AUTO */
+    struct network_reach *river_reaches;
+    struct method_choice *choices; /* per reach */
     double time_step_s;
     size_t group_count;
     size_t members_per_group;
@@ -68,6 +71,9 @@ struct network {
     size_t steps_above_tables;
     size_t steps_below_zero;
 };
+
+/* Puts a method into every reach that asks for one. Order and curves must be there. FW_NO_MEMORY. */
+FW_MUST_CHECK enum fw_status network_choose_methods(struct network *network, const struct network_options *options);
 
 static inline double *network_block_of(const struct network *network, size_t group)
 {

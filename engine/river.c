@@ -6,6 +6,8 @@
 #include <stdbool.h>
 #include <stdio.h>
 
+#include "engine/method.h"
+
 static const double longest_delay_s = 10.0 * 86400.0;
 static const double most_cells = 10000.0;
 
@@ -53,13 +55,13 @@ static enum fw_status check_reach(const struct network_river *river, size_t reac
     if (reach->cell_m > 0.0 && reach->length_m / reach->cell_m > most_cells)
         return fault(fault_out, "reach '%s': cell_m %g makes %.0f cells, more than %.0f", reach->id, reach->cell_m,
                      reach->length_m / reach->cell_m, most_cells);
-    if ((unsigned)reach->method > NETWORK_DIFFUSIVE)
+    if ((unsigned)reach->method > NETWORK_AUTO)
         return fault(fault_out, "reach '%s': method %d is none that is known", reach->id, (int)reach->method);
     if (!is_not_negative(reach->outlet_depth_m) || reach->outlet_depth_m > 1e3)
         return fault(fault_out, "reach '%s': outlet_depth_m %g: expected 0 (none) to 1000", reach->id,
                      reach->outlet_depth_m);
-    if (reach->outlet_depth_m > 0.0 && !network_method_is_full(reach->method))
-        return fault(fault_out, "reach '%s': outlet_depth_m %g: a held level needs method dynamic or diffusive",
+    if (reach->outlet_depth_m > 0.0 && !network_method_is_full(reach->method) && reach->method != NETWORK_AUTO)
+        return fault(fault_out, "reach '%s': outlet_depth_m %g: a held level needs method auto, dynamic or diffusive",
                      reach->id, reach->outlet_depth_m);
     if (reach->outlet_depth_m > 0.0 && network_reach_from(river, reach->to_node) != NETWORK_NONE)
         return fault(fault_out, "reach '%s': outlet_depth_m %g: a level is held at the foot of a last reach only",
@@ -136,6 +138,27 @@ static enum fw_status check_point(const struct network_river *river, size_t poin
     return check_stage_rating(point, fault_out);
 }
 
+/* Every gauge's flood, where any is stated; a peak of 0 says that this one's is not known. */
+static enum fw_status check_floods(const struct network_river *river, const struct network_options *options,
+                                   struct network_fault *fault_out)
+{
+    for (size_t i = 0; options->gauge_floods != NULL && i < river->gauge_count; i++) {
+        const struct method_flood *flood = &options->gauge_floods[i];
+        if (flood->peak_m3s == 0.0)
+            continue;
+        if (!is_positive(flood->peak_m3s) || flood->peak_m3s > options->largest_discharge_m3s)
+            return fault(fault_out,
+                         "gauge_floods[%zu]: peak_m3s %g: expected 0 (not known) to largest_discharge_m3s %g", i,
+                         flood->peak_m3s, options->largest_discharge_m3s);
+        if (!is_not_negative(flood->base_m3s) || flood->base_m3s >= flood->peak_m3s)
+            return fault(fault_out, "gauge_floods[%zu]: base_m3s %g: expected 0 or more, below the peak %g", i,
+                         flood->base_m3s, flood->peak_m3s);
+        if (!is_positive(flood->rise_s))
+            return fault(fault_out, "gauge_floods[%zu]: rise_s %g: expected more than 0", i, flood->rise_s);
+    }
+    return FW_OK;
+}
+
 static enum fw_status check_options(const struct network_options *options, struct network_fault *fault_out)
 {
     if (!is_positive(options->time_step_s) || options->time_step_s > 86400.0)
@@ -167,6 +190,8 @@ enum fw_status river_check_values(const struct network_river *river, const struc
                                   struct network_fault *fault_out)
 {
     enum fw_status status = check_options(options, fault_out);
+    if (status == FW_OK)
+        status = check_floods(river, options, fault_out);
     if (status == FW_OK && river->reach_count == 0)
         status = fault(fault_out, "the river has no reach");
     for (size_t i = 0; i < river->reach_count && status == FW_OK; i++)

@@ -4,6 +4,8 @@
 #include <math.h>
 #include <stdlib.h>
 
+#include "engine/method.h"
+
 enum { FEWEST_CELLS = 3, FEWEST_CELLS_FULL = 10, MOST_CELLS = 400, FIT_POINTS = 64 };
 
 static const double table_headroom = 32.0; /* tables end this many times above the largest flow: five octaves */
@@ -14,11 +16,6 @@ static const double on_a_node = 1e-9; /* of a cell: nearer than that is the node
 static double smallest_discharge_m3s(const struct network_options *options)
 {
     return fmin(1e-3, 1e-4 * options->largest_discharge_m3s);
-}
-
-static double peak_discharge_m3s(const struct network_options *options)
-{
-    return options->typical_peak_m3s > 0.0 ? options->typical_peak_m3s : options->largest_discharge_m3s;
 }
 
 static enum fw_status make_curve(struct routed_reach *reach, const struct network_options *options)
@@ -37,11 +34,10 @@ static enum fw_status make_curve(struct routed_reach *reach, const struct networ
                            table_headroom * options->largest_discharge_m3s * most / root_slope);
 }
 
-static size_t choose_cell_count(struct routed_reach *reach, const struct network_options *options)
+static size_t choose_cell_count(struct routed_reach *reach, double peak, const struct network_options *options)
 {
     const struct network_reach *source = reach->source;
     double root_slope = sqrt(source->slope_m_per_m);
-    double peak = peak_discharge_m3s(options);
     bool is_full = network_method_is_full(source->method);
     struct flow_curve_place place;
     flow_curve_at(&reach->curve, peak / root_slope, &place);
@@ -57,7 +53,7 @@ static size_t choose_cell_count(struct routed_reach *reach, const struct network
     if (!is_full)
         return (size_t)fmin(MOST_CELLS, fmax(FEWEST_CELLS, round(source->length_m / wanted_m)));
     wanted_m = fmin(wanted_m, 2.0 * reach->diffusion_length_m); /* longer ones make a front's areas negative */
-    return (size_t)fmin(MOST_CELLS, fmax(FEWEST_CELLS_FULL, ceil(source->length_m / wanted_m)));
+    return (size_t)fmin(METHOD_MOST_FULL_CELLS, fmax(FEWEST_CELLS_FULL, ceil(source->length_m / wanted_m)));
 }
 
 static enum fw_status make_tables(struct routed_reach *reach, const struct network_options *options)
@@ -111,14 +107,15 @@ static void fit_power_law(const struct routed_reach *reach, double roughness_fac
     channel->alpha = exp((sum_a - channel->beta * sum_q) / FIT_POINTS);
 }
 
-static enum fw_status make_channels(struct routed_reach *reach, const struct network_options *options)
+static enum fw_status make_channels(struct routed_reach *reach, double peak_m3s,
+                                    const struct network_options *options)
 {
     reach->channels = calloc(options->group_count, sizeof *reach->channels);
     if (reach->channels == NULL)
         return FW_NO_MEMORY;
     for (size_t group = 0; group < options->group_count; group++) {
         struct kinematic_channel *channel = &reach->channels[group];
-        fit_power_law(reach, options->roughness_factors[group], peak_discharge_m3s(options), channel);
+        fit_power_law(reach, options->roughness_factors[group], peak_m3s, channel);
         channel->cell_length = reach->cell_m;
         channel->time_step = reach->time_step_s;
     }
@@ -182,28 +179,28 @@ static enum fw_status place_stops(struct routed_reach *reach, const struct netwo
     return FW_OK;
 }
 
-enum fw_status routed_reach_init(struct routed_reach *reach, const struct network_river *river, size_t reach_index,
-                                 const struct network_options *options)
+enum fw_status routed_reach_init_curve(struct routed_reach *reach, const struct network_reach *source,
+                                       const struct network_options *options)
 {
     memset(reach, 0, sizeof *reach);
-    reach->source = &river->reaches[reach_index];
+    reach->source = source;
     reach->group_count = options->group_count;
     reach->time_step_s = options->time_step_s;
-    enum fw_status status = make_curve(reach, options);
-    if (status != FW_OK)
-        goto cleanup;
-    reach->cell_count = choose_cell_count(reach, options);
+    return make_curve(reach, options);
+}
+
+enum fw_status routed_reach_init_cells(struct routed_reach *reach, const struct network_river *river,
+                                       size_t reach_index, double peak_m3s, const struct network_options *options)
+{
+    reach->cell_count = choose_cell_count(reach, peak_m3s, options);
     reach->cell_m = reach->source->length_m / (double)reach->cell_count;
-    status = place_sides(reach, river, reach_index);
+    enum fw_status status = place_sides(reach, river, reach_index);
     if (status == FW_OK)
         status = place_stops(reach, river, reach_index);
     if (status == FW_OK && reach->source->method == NETWORK_KINEMATIC_LINEAR)
-        status = make_channels(reach, options);
+        status = make_channels(reach, peak_m3s, options);
     else if (status == FW_OK && !network_method_is_full(reach->source->method))
         status = make_tables(reach, options);
-cleanup:
-    if (status != FW_OK)
-        routed_reach_clear(reach);
     return status;
 }
 

@@ -48,9 +48,16 @@ struct routed_flows { /* arrays of one group of members, and what a step reads a
     double *lateral_m3;    /* cell_count, scratch */
 };
 
-/* FW_BAD_INPUT  the section cannot carry the flows; FW_NO_MEMORY. The values must have passed river_check_values. */
-FW_MUST_CHECK enum fw_status routed_reach_init(struct routed_reach *reach, const struct network_river *river,
-                                               size_t reach_index, const struct network_options *options);
+/*
+ * In two steps, as the method is chosen by the curve. The values must have passed river_check_values.
+ * FW_BAD_INPUT  the section cannot carry the flows; FW_NO_MEMORY. The caller clears in any case.
+ */
+FW_MUST_CHECK enum fw_status routed_reach_init_curve(struct routed_reach *reach, const struct network_reach *source,
+                                                     const struct network_options *options);
+/* Cells for the celerity at peak_m3s, tables, sides and stops. The source's method must be one by now. FW_NO_MEMORY. */
+FW_MUST_CHECK enum fw_status routed_reach_init_cells(struct routed_reach *reach, const struct network_river *river,
+                                                     size_t reach_index, double peak_m3s,
+                                                     const struct network_options *options);
 void routed_reach_clear(struct routed_reach *reach); /* an all-zero one is fine */
 
 size_t routed_reach_state_count(const struct routed_reach *reach); /* doubles per member */

@@ -80,8 +80,10 @@ enum fw_status check_facts_reach(const struct check_facts *facts, size_t index, 
                                  struct fw_error *error)
 {
     const struct network_reach *reach = &facts->settings->river.reaches[index];
+    struct method_choice choice;
+    network_reach_choice(facts->network, index, &choice);
     struct check_reach found = {.reach = reach,
-                                .method = method_name(reach->method),
+                                .method = method_name(choice.method),
                                 .bank_full_m3s = bank_full_m3s(reach),
                                 .peak_m3s = facts->flows_m3s[FLOW_COUNT - 2]};
     double flows_m3s[FLOW_COUNT + 1];
@@ -93,7 +95,7 @@ enum fw_status check_facts_reach(const struct check_facts *facts, size_t index, 
         status = network_reach_summary(facts->network, index, 1.0, 1, &found.peak_m3s, &found.steps, &peak);
     if (status != FW_OK)
         return fw_error_set(error, status, "reach '%s': its flows cannot be computed", reach->id);
-    found.least_rise_s = network_method_is_full(reach->method)
+    found.least_rise_s = network_method_is_full(choice.method)
                              ? NAN
                              : method_storage_least_rise_s(reach->length_m, peak.celerity_m_s, peak.diffusivity_m2_s);
     found.diffusion_length_m = peak.diffusivity_m2_s / peak.celerity_m_s;

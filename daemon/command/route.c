@@ -167,7 +167,7 @@ static enum fw_status read_inflows(struct route_plan *plan, const struct option_
 
 static enum fw_status choose_method(struct route_plan *plan, const char *name, struct fw_error *error)
 {
-    enum network_method method = NETWORK_MUSKINGUM_CUNGE;
+    enum network_method method = NETWORK_AUTO;
     plan->river = plan->settings->river;
     plan->reaches = calloc(plan->river.reach_count + 1, sizeof *plan->reaches);
     if (plan->reaches == NULL)
@@ -176,14 +176,13 @@ static enum fw_status choose_method(struct route_plan *plan, const char *name, s
     plan->river.reaches = plan->reaches;
     if (name == NULL)
         return FW_OK;
-    bool is_auto = strcmp(name, "auto") == 0;
-    if (!is_auto && !method_from_name(name, &method))
+    if (!method_from_name(name, &method))
         return fw_error_set(error, FW_USAGE,
                             "--method: '%s' is not one of kinematic-linear, kinematic, muskingum-cunge, "
                             "diffusive, dynamic, auto",
                             name);
     for (size_t reach = 0; reach < plan->river.reach_count; reach++)
-        plan->reaches[reach].method = is_auto && plan->reaches[reach].outlet_depth_m > 0.0 ? NETWORK_DYNAMIC : method;
+        plan->reaches[reach].method = method;
     return FW_OK;
 }
 
@@ -288,8 +287,9 @@ static double between(const double values[], double steps)
 static double point_stage_at(const struct route_plan *plan, const struct network *network, size_t point,
                              double flow_m3s, const double stage_m[], double steps)
 {
-    enum network_method method = plan->reaches[plan->river.points[point].reach_index].method;
-    return network_method_is_full(method) ? between(stage_m, steps)
+    struct method_choice choice;
+    network_reach_choice(network, plan->river.points[point].reach_index, &choice);
+    return network_method_is_full(choice.method) ? between(stage_m, steps)
                                           : network_point_stage_m(network, point, 0, flow_m3s);
 }
 

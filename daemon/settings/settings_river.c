@@ -170,8 +170,8 @@ static size_t node_of(struct settings *settings, const char *name)
 static enum network_method method_of(const struct json_value *object)
 {
     const char *word = settings_work_string(object, "reaches[].method");
-    enum network_method method = NETWORK_MUSKINGUM_CUNGE; /* auto, or not stated */
-    return word != NULL && method_from_name(word, &method) ? method : NETWORK_MUSKINGUM_CUNGE;
+    enum network_method method = NETWORK_AUTO;
+    return word != NULL && method_from_name(word, &method) ? method : NETWORK_AUTO;
 }
 
 static void build_reach(struct settings_work *work, struct network_reach *reach, const struct json_value *object)
@@ -191,10 +191,7 @@ static void build_reach(struct settings_work *work, struct network_reach *reach,
         if (settings->section_ids[i] != NULL && strcmp(settings->section_ids[i], section) == 0)
             reach->section = &settings->sections[i];
     struct json_value *outlet = settings_work_member(object, "reaches[].outlet");
-    const char *method = settings_work_string(object, "reaches[].method");
-    if (outlet != NULL && (method == NULL || strcmp(method, "auto") == 0))
-        reach->method = NETWORK_DYNAMIC;
-    if (outlet != NULL && !network_method_is_full(reach->method))
+    if (outlet != NULL && reach->method != NETWORK_AUTO && !network_method_is_full(reach->method))
         json_tree_fault(work->report, outlet,
                         "holds a level: expected \"method\" \"auto\", \"dynamic\" or \"diffusive\" with it");
     else if (outlet != NULL)

@@ -32,8 +32,8 @@ static void the_least_rise_is_where_the_number_is_the_limit(void **state)
 static void every_method_is_found_by_its_name_and_no_other_word_is(void **state)
 {
     (void)state;
-    static const char *const others[] = {"", "auto", "Dynamic", "kinematic-", "muskingum"};
-    for (int method = NETWORK_MUSKINGUM_CUNGE; method <= NETWORK_DIFFUSIVE; method++) {
+    static const char *const others[] = {"", "Auto", "Dynamic", "kinematic-", "muskingum"};
+    for (int method = NETWORK_MUSKINGUM_CUNGE; method <= NETWORK_AUTO; method++) {
         enum network_method found = NETWORK_MUSKINGUM_CUNGE;
         assert_true(method_from_name(method_name((enum network_method)method), &found));
         assert_int_equal(found, method);

@@ -163,7 +163,7 @@ static const struct {
     {negative_cell, "reach 'middle'", "cell_m -1"},
     {tiny_cell, "reach 'middle'", "cell_m 0.001"},
     {no_method, "reach 'middle'", "method 9"},
-    {held_level_by_storage, "reach 'lower'", "needs method dynamic or diffusive"},
+    {held_level_by_storage, "reach 'lower'", "needs method auto, dynamic or diffusive"},
     {negative_held_level, "reach 'lower'", "outlet_depth_m -0.1"},
     {nan_held_level, "reach 'lower'", "outlet_depth_m nan"},
     {held_level_in_mid_river, "reach 'middle'", "a last reach only"},

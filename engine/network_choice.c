@@ -1,0 +1,150 @@
+/* SPDX-License-Identifier: MIT */
+/*
+ * Which method each reach of a network gets. Floods are gathered downstream; levels that something below holds up are
+ * followed upstream, from reach to reach, as long as they are felt.
+ */
+#include <math.h>
+#include <stdlib.h>
+
+#include "engine/network_internal.h"
+
+enum { LEVELS = 3 }; /* flows of a flood at which backwater is looked at: its base, its middle, its peak */
+
+struct head_levels { /* depths at the head of a reach, steady flow */
+    double depth_m[LEVELS];
+};
+
+/* --- floods, from the gauges down --------------------------------------------------------------------------------- */
+
+static void add_flood(struct method_flood *sum, const struct method_flood *more, double share)
+{
+    sum->base_m3s += share * more->base_m3s;
+    sum->peak_m3s += share * more->peak_m3s;
+    sum->rise_s = fmin(sum->rise_s, more->rise_s);
+}
+
+static size_t gauge_at(const struct network_river *river, size_t node)
+{
+    for (size_t gauge = 0; gauge < river->gauge_count; gauge++)
+        if (river->gauge_node[gauge] == node)
+            return gauge;
+    return NETWORK_NONE;
+}
+
+static void add_sides(const struct network_river *river, const struct network_options *options, size_t reach_index,
+                      struct method_flood *flood)
+{
+    for (size_t i = 0; i < river->side_inflow_count; i++) {
+        const struct network_side_inflow *side = &river->side_inflows[i];
+        if (side->reach_index != reach_index)
+            continue;
+        flood->base_m3s += side->constant_m3s;
+        flood->peak_m3s += side->constant_m3s;
+        if (side->share_of_gauge != NETWORK_NONE && options->gauge_floods[side->share_of_gauge].peak_m3s > 0.0)
+            add_flood(flood, &options->gauge_floods[side->share_of_gauge], side->share);
+    }
+}
+
+/* Of all reaches, in their order; a reach below a gauge whose flood is not known gets none. */
+static void gather_floods(struct network *network, const struct network_options *options)
+{
+    const struct network_river *river = &network->river;
+    for (size_t i = 0; i < river->reach_count; i++)
+        network->choices[i].flood = (struct method_flood){0.0, 0.0, INFINITY};
+    if (options->gauge_floods == NULL)
+        return;
+    for (size_t i = 0; i < river->reach_count; i++) {
+        size_t reach = network->order[i];
+        struct method_flood *flood = &network->choices[reach].flood;
+        size_t gauge = gauge_at(river, river->reaches[reach].from_node);
+        bool is_known = gauge == NETWORK_NONE || options->gauge_floods[gauge].peak_m3s > 0.0;
+        if (gauge != NETWORK_NONE) /* a gauge in mid-river knows the water from above */
+            *flood = options->gauge_floods[gauge];
+        for (size_t above = 0; gauge == NETWORK_NONE && above < river->reach_count; above++)
+            if (river->reaches[above].to_node == river->reaches[reach].from_node) {
+                is_known = is_known && network->choices[above].flood.peak_m3s > 0.0;
+                add_flood(flood, &network->choices[above].flood, 1.0);
+            }
+        if (is_known)
+            add_sides(river, options, reach, flood);
+        else
+            *flood = (struct method_flood){0.0, 0.0, INFINITY};
+    }
+}
+
+/* --- levels, from the outlets up ---------------------------------------------------------------------------------- */
+
+static double level_flow_m3s(const struct method_flood *flood, int level)
+{
+    double share = (double)level / (LEVELS - 1);
+    return fmax((1.0 - share) * flood->base_m3s + share * flood->peak_m3s, 1e-3 * flood->peak_m3s);
+}
+
+/* Depth at the foot at one of the flows; NAN: nothing says. */
+static double foot_depth_m(const struct network *network, size_t reach_index, int level,
+                           const struct head_levels levels[])
+{
+    const struct network_reach *reach = &network->river.reaches[reach_index];
+    size_t below = network_reach_from(&network->river, reach->to_node);
+    if (reach->outlet_depth_m > 0.0)
+        return reach->outlet_depth_m;
+    return below == NETWORK_NONE ? (double)NAN : levels[below].depth_m[level];
+}
+
+/* How far the foot is raised above normal, at worst, and the levels at the head that follow. */
+static double follow_levels(const struct network *network, size_t reach_index, struct head_levels levels[])
+{
+    const struct network_reach *reach = &network->river.reaches[reach_index];
+    const struct method_flood *flood = &network->choices[reach_index].flood;
+    double worst_share = 0.0;
+    for (int level = 0; level < LEVELS; level++) {
+        double flow_m3s = level_flow_m3s(flood, level);
+        double foot_m = foot_depth_m(network, reach_index, level, levels);
+        double normal_m =
+            flow_curve_depth_m(&network->reaches[reach_index].curve, flow_m3s / sqrt(reach->slope_m_per_m));
+        levels[reach_index].depth_m[level] = normal_m;
+        if (!(flow_m3s > 0.0) || !(foot_m > normal_m))
+            continue;
+        worst_share = fmax(worst_share, foot_m / normal_m - 1.0);
+        levels[reach_index].depth_m[level] = method_backwater_depth_m(reach->section, reach->slope_m_per_m,
+                                                                      reach->length_m, flow_m3s, normal_m, foot_m);
+    }
+    return worst_share;
+}
+
+enum fw_status network_choose_methods(struct network *network, const struct network_options *options)
+{
+    const struct network_river *river = &network->river;
+    struct head_levels *levels = calloc(river->reach_count, sizeof *levels);
+    if (levels == NULL)
+        return FW_NO_MEMORY;
+    gather_floods(network, options);
+    for (size_t i = river->reach_count; i-- > 0;) {
+        size_t reach = network->order[i];
+        struct network_reach *source = &network->river_reaches[reach];
+        struct method_flood flood = network->choices[reach].flood;
+        size_t below = network_reach_from(river, source->to_node);
+        const struct method_reach described = {
+            .curve = &network->reaches[reach].curve,
+            .length_m = source->length_m,
+            .slope_m_per_m = source->slope_m_per_m,
+            .is_level_held = source->outlet_depth_m > 0.0,
+            .has_control = below != NETWORK_NONE && network_method_is_full(river->reaches[below].method),
+            .raise_share = follow_levels(network, reach, levels),
+        };
+        struct method_choice *choice = &network->choices[reach];
+        method_choose(&described, &flood, choice);
+        if (source->method != NETWORK_AUTO) {
+            choice->method = source->method;
+            choice->reason = METHOD_STATED;
+        }
+        source->method = choice->method;
+    }
+    free(levels);
+    return FW_OK;
+}
+
+void network_reach_choice(const struct network *network, size_t reach_index, struct method_choice *choice_out)
+{
+    *choice_out = network->choices[reach_index];
+}
