@@ -11,8 +11,9 @@
 #include <stdlib.h>
 #include <string.h>
 
-static const double extension_lengths = 5.0; /* times D/c at the peak */
-static const double most_given_back = 0.02;  /* of the water in the last cell, in one step */
+static const double extension_lengths = 5.0;     /* times D/c at the peak */
+static const double extension_lengthening = 1.2; /* cell by cell: where their length jumps, waves are thrown back */
+static const double most_given_back = 0.02;      /* of the water in the last cell, in one step */
 
 /* --- making ------------------------------------------------------------------------------------------------------- */
 
@@ -26,13 +27,23 @@ static bool ends_at_a_given_depth(const struct network_reach *reach)
     return reach->outlet_depth_m > 0.0;
 }
 
-static size_t outlet_interval_count(const struct routed_reach *reach, double *extension_cell_m_out)
+/* The next cell below one, beyond the foot. */
+static double extension_cell_m(const struct routed_reach *reach, double above_m)
 {
-    double extension_m = extension_lengths * reach->diffusion_length_m;
-    *extension_cell_m_out = fmax(reach->cell_m, 0.5 * reach->diffusion_length_m);
+    return fmin(extension_lengthening * above_m, fmax(reach->cell_m, 0.5 * reach->diffusion_length_m));
+}
+
+static size_t outlet_interval_count(const struct routed_reach *reach)
+{
+    size_t count = 0;
+    double extension_m = 0.0, cell_m = reach->cell_m;
     if (ends_at_a_given_depth(reach->source))
         return reach->cell_count;
-    return reach->cell_count + (size_t)fmax(3.0, ceil(extension_m / *extension_cell_m_out));
+    for (; count < 3 || extension_m < extension_lengths * reach->diffusion_length_m; count++) {
+        cell_m = extension_cell_m(reach, cell_m);
+        extension_m += cell_m;
+    }
+    return reach->cell_count + count;
 }
 
 static size_t count_sides(const struct network_river *river, const struct routed_tree *tree)
@@ -97,7 +108,7 @@ static size_t branch_of_reach(const struct routed_tree *tree, size_t reach_index
 }
 
 static void place_branches(struct routed_tree *tree, const struct network_river *river,
-                           const struct routed_reach reaches[], double extension_cell_m)
+                           const struct routed_reach reaches[])
 {
     size_t at = 0;
     for (size_t branch = 0; branch < tree->branch_count; branch++) {
@@ -106,7 +117,8 @@ static void place_branches(struct routed_tree *tree, const struct network_river 
         bool is_outlet = branch + 1 == tree->branch_count;
         size_t count = is_outlet ? tree->interval_count - at : reach->cell_count;
         for (size_t k = 0; k < count; k++) {
-            tree->interval_m[at + k] = k < reach->cell_count ? reach->cell_m : extension_cell_m;
+            tree->interval_m[at + k] =
+                k < reach->cell_count ? reach->cell_m : extension_cell_m(reach, tree->interval_m[at + k - 1]);
             tree->slope_m_per_m[at + k] = source->slope_m_per_m;
         }
         for (size_t group = 0; group < tree->group_count; group++)
@@ -144,7 +156,6 @@ enum fw_status routed_tree_init(struct routed_tree *tree, const struct network_r
                                 const struct routed_reach reaches[], size_t branch_count, const size_t reach_index[],
                                 const struct network_options *options)
 {
-    double extension_cell_m = 0.0;
     const struct routed_reach *outlet = &reaches[reach_index[branch_count - 1]];
     *tree = (struct routed_tree){.branch_count = branch_count,
                                  .member_count = options->members_per_group,
@@ -155,7 +166,7 @@ enum fw_status routed_tree_init(struct routed_tree *tree, const struct network_r
     if (tree->reach_index == NULL)
         return FW_NO_MEMORY;
     memcpy(tree->reach_index, reach_index, branch_count * sizeof *reach_index);
-    tree->interval_count = outlet_interval_count(outlet, &extension_cell_m);
+    tree->interval_count = outlet_interval_count(outlet);
     for (size_t branch = 0; branch + 1 < branch_count; branch++)
         tree->interval_count += reaches[reach_index[branch]].cell_count;
     tree->node_count = tree->interval_count + branch_count;
@@ -169,7 +180,7 @@ enum fw_status routed_tree_init(struct routed_tree *tree, const struct network_r
                                                    .branches = tree->branches + group * branch_count,
                                                    .momentum_factor = 1.0,
                                                    .is_diffusive = outlet->source->method == NETWORK_DIFFUSIVE};
-    place_branches(tree, river, reaches, extension_cell_m);
+    place_branches(tree, river, reaches);
     place_sides(tree, reaches);
     status = dynamic_work_create(&tree->work, &tree->trees[0], tree->member_count);
 cleanup:
