@@ -23,6 +23,7 @@ static enum fw_status allocate_parts(struct network *network)
     network->choices = room_for(river->reach_count, sizeof *network->choices);
     network->order = room_for(river->reach_count, sizeof *network->order);
     network->gauge_of_head = room_for(river->reach_count, sizeof *network->gauge_of_head);
+    network->first_above_gauge = room_for(river->gauge_count, sizeof *network->first_above_gauge);
     network->first_above = room_for(river->reach_count, sizeof *network->first_above);
     network->next_above = room_for(river->reach_count, sizeof *network->next_above);
     network->first_point = room_for(river->reach_count, sizeof *network->first_point);
@@ -37,7 +38,8 @@ static enum fw_status allocate_parts(struct network *network)
                     network->order == NULL || network->gauge_of_head == NULL || network->first_above == NULL ||
                     network->next_above == NULL || network->first_point == NULL || network->next_point == NULL ||
                     network->state_offset == NULL || network->tree_of_reach == NULL || network->trees == NULL ||
-                    network->points == NULL || network->delays == NULL || network->roughness_factors == NULL;
+                    network->first_above_gauge == NULL || network->points == NULL || network->delays == NULL ||
+                    network->roughness_factors == NULL;
     return is_short ? FW_NO_MEMORY : FW_OK;
 }
 
@@ -58,17 +60,17 @@ static void make_lists(struct network *network)
     const struct network_river *river = &network->river;
     for (size_t i = 0; i < river->reach_count; i++) {
         network->gauge_of_head[i] = NETWORK_NONE;
-        network->first_above[i] = NETWORK_NONE;
         network->first_point[i] = NETWORK_NONE;
-        for (size_t gauge = 0; gauge < river->gauge_count; gauge++)
-            if (river->gauge_node[gauge] == river->reaches[i].from_node)
-                network->gauge_of_head[i] = gauge;
-        for (size_t above = river->reach_count; above-- > 0;)
-            if (river->reaches[above].to_node == river->reaches[i].from_node) {
-                network->next_above[above] = network->first_above[i];
-                network->first_above[i] = above;
-            }
+        network->gauge_of_head[i] = network_gauge_at(river, river->reaches[i].from_node);
+        network->first_above[i] = network_reach_into(river, river->reaches[i].from_node);
+        network->next_above[i] = NETWORK_NONE;
+        for (size_t other = i + 1; other < river->reach_count && network->next_above[i] == NETWORK_NONE; other++)
+            if (river->reaches[other].to_node == river->reaches[i].to_node)
+                network->next_above[i] = other;
     }
+    for (size_t gauge = 0; gauge < river->gauge_count; gauge++)
+        network->first_above_gauge[gauge] =
+            network_gauge_is_inner(river, gauge) ? network_reach_into(river, river->gauge_node[gauge]) : NETWORK_NONE;
     for (size_t i = river->point_count; i-- > 0;) {
         size_t *first = &network->first_point[river->points[i].reach_index];
         network->next_point[i] = *first;
@@ -148,6 +150,7 @@ static void place_delays(struct network *network)
         if (river->side_inflows[i].share_of_gauge == NETWORK_NONE)
             continue;
         double steps = river->side_inflows[i].delay_s / network->time_step_s;
+        network->inner_share_count += network_has_inner_gauge(network, river->side_inflows[i].share_of_gauge);
         struct delayed_share *delay = &network->delays[i];
         delay->whole = (size_t)floor(steps);
         delay->part = steps - floor(steps);
@@ -183,6 +186,10 @@ static enum fw_status allocate_values(struct network *network)
     layout->head_m3 = take(layout, river->reach_count, members);
     layout->foot_m3 = take(layout, river->reach_count, members);
     layout->gauge = take(layout, river->gauge_count * network->ring_count, members);
+    layout->given = take(layout, river->gauge_count, members);
+    layout->brought_m3s = take(layout, river->gauge_count, members);
+    layout->brought_m3 = take(layout, river->gauge_count, members);
+    layout->level = take(layout, river->level_count, members);
     layout->side = take(layout, river->side_inflow_count, members);
     layout->point = take(layout, river->point_count, members);
     layout->depth = take(layout, river->point_count, members);
@@ -277,6 +284,7 @@ void network_destroy(struct network *network)
     free(network->stop_depth_m);
     free(network->order);
     free(network->gauge_of_head);
+    free(network->first_above_gauge);
     free(network->first_above);
     free(network->next_above);
     free(network->first_point);

@@ -4,6 +4,9 @@
  *
  * A river is a set of nodes joined by reaches that run downstream. A node where no reach ends must be a gauge: its
  * inflow is given. Where several reaches end, their outflows add (a confluence). At most one reach leaves a node.
+ * A gauge may also stand in mid-river, where reaches end: what it measured goes on downstream in place of what was
+ * routed there, step by step and member by member; where it measured nothing (not a number) the routed flow goes on.
+ * What that brings or takes away is accounted (network_brought_m3).
  * Side inflow enters a reach at a stated place, as a constant or as a share of a gauge's flow some time later. A
  * point lies on a reach, anywhere from its head (at_m 0) to its foot (at_m = length).
  *
@@ -46,8 +49,16 @@ struct network_reach {
     const struct section *section;
     double cell_m; /* wanted cell length; 0: chosen from celerity and time step */
     enum network_method method;
-    double outlet_depth_m; /* held at the foot of a last reach, by the full equations; 0: the river goes on */
+    /* A level at the foot of a last reach, by the full equations: held for good (0: none), or given step by step. */
+    double outlet_depth_m;
+    bool has_outlet_level;
+    size_t outlet_level; /* which of the river's levels */
 };
+
+static inline bool network_reach_has_held_foot(const struct network_reach *reach)
+{
+    return reach->outlet_depth_m > 0.0 || reach->has_outlet_level;
+}
 
 struct network_side_inflow { /* enters the cell that holds at_m, at the mean of its flows at both ends of a step */
     size_t reach_index;
@@ -75,7 +86,8 @@ struct network_point {
 struct network_river { /* the caller's; must outlive the network */
     size_t node_count;
     size_t gauge_count;
-    const size_t *gauge_node;
+    const size_t *gauge_node; /* NETWORK_NONE: apart from the river; only shares know its flow */
+    size_t level_count;       /* given step by step: lakes, tides, weir pools; several outlets may share one */
     size_t reach_count;
     const struct network_reach *reaches;
     size_t side_inflow_count;
@@ -100,6 +112,22 @@ static inline size_t network_reach_into(const struct network_river *river, size_
         if (river->reaches[reach].to_node == node)
             return reach;
     return NETWORK_NONE;
+}
+
+/* The gauge at a node, or NETWORK_NONE. */
+static inline size_t network_gauge_at(const struct network_river *river, size_t node)
+{
+    for (size_t gauge = 0; gauge < river->gauge_count; gauge++)
+        if (river->gauge_node[gauge] == node)
+            return gauge;
+    return NETWORK_NONE;
+}
+
+/* In mid-river: reaches end there. */
+static inline bool network_gauge_is_inner(const struct network_river *river, size_t gauge)
+{
+    size_t node = river->gauge_node[gauge];
+    return node != NETWORK_NONE && network_reach_into(river, node) != NETWORK_NONE;
 }
 
 /* Does the water at one node come past the other? Steps are counted, so that a river not yet checked for rings can be asked. */
@@ -146,8 +174,8 @@ struct network;
  * the time step, 3 to 400 of them to a reach; by the full equations at least 10, and no longer than 2 D/c at that flow
  * if 400 are enough.
  *
- * FW_BAD_INPUT  a loop, an orphan, a node without inflow, a gauge in mid-river, a fork, an index outside, a shape or
- *               number refused; fault_out (written only then) says which, by the reach's or point's id.
+ * FW_BAD_INPUT  a loop, an orphan, a node without inflow, a fork, an index outside, a shape or number refused, a
+ *               share of a gauge that its own water reaches; fault_out (written only then) says which, by the reach's or point's id.
  * FW_NO_MEMORY.
  * The only allocations of this room are here. The caller destroys.
  */
@@ -162,20 +190,28 @@ size_t network_cell_count(const struct network *network, size_t reach_index);
 void network_reach_choice(const struct network *network, size_t reach_index, struct method_choice *choice_out);
 
 /*
- * Steady flow everywhere, from one inflow per gauge and member: inflow_m3s[gauge][member]. Delay lines are filled
- * with it. FW_BAD_INPUT: an inflow negative, not finite or above NETWORK_LARGEST_INFLOW_M3S; the state is unchanged
- * then.
+ * Steady flow everywhere, from one inflow per gauge and member: inflow_m3s[gauge][member]; at a gauge in mid-river not
+ * a number where nothing was measured. Delay lines are filled with it.
+ *
+ *   level_m  [level][member], depths above the bed at the foot; NULL: as they are (0 in a new network). A level under the
+ *            critical depth of the flow cannot act upstream: the critical depth stands there then.
+ * FW_BAD_INPUT: an inflow negative, not finite (but see above) or above NETWORK_LARGEST_INFLOW_M3S, a level not
+ * finite or 1e4 m from the bed; the state is unchanged then.
  */
+FW_MUST_CHECK enum fw_status network_start_steady_at(struct network *network, const double inflow_m3s[],
+                                                     const double level_m[]);
 FW_MUST_CHECK enum fw_status network_start_steady(struct network *network, const double inflow_m3s[]);
 
 /*
  * Routes step_count steps on from the present state.
  *
- *   inflow_m3s           [gauge][step_count + 1][member]; step 0 is the present and must equal the last inflow given
+ *   inflow_m3s           [gauge][step_count + 1][member]; step 0 is the present and must equal the last inflow given,
+ *                        but in mid-river, where it is not looked at; there a value that is not a number leaves the
+ *                        routed flow as it is
  *   point_discharge_m3s  [point][step_count + 1][member]; step 0 is the present
  * Several calls one after another give what one call gives, bit for bit. Allocates nothing.
- * FW_BAD_INPUT: an inflow negative, not finite or above NETWORK_LARGEST_INFLOW_M3S, or step 0 is not the present;
- * the state is unchanged then.
+ * FW_BAD_INPUT: an inflow negative, not finite (but see above) or above NETWORK_LARGEST_INFLOW_M3S, or step 0 is not
+ * the present; the state is unchanged then.
  */
 FW_MUST_CHECK enum fw_status network_advance(struct network *network, size_t step_count, const double inflow_m3s[],
                                              double point_discharge_m3s[]);
@@ -185,7 +221,13 @@ FW_MUST_CHECK enum fw_status network_advance(struct network *network, size_t ste
  * where the full equations rule; else the normal stage of its flow.
  *
  *   point_stage_m  as point_discharge_m3s
+ *   level_m        [level][step_count + 1][member], depths above the bed at the foot of the reaches that end there; NULL: held as
+ *                  they are
+ * Beside the causes above, FW_BAD_INPUT: a level not finite or 1e4 m from the bed.
  */
+FW_MUST_CHECK enum fw_status network_advance_at(struct network *network, size_t step_count, const double inflow_m3s[],
+                                                const double level_m[], double point_discharge_m3s[],
+                                                double point_stage_m[]);
 FW_MUST_CHECK enum fw_status network_advance_with_stage(struct network *network, size_t step_count,
                                                         const double inflow_m3s[], double point_discharge_m3s[],
                                                         double point_stage_m[]);
@@ -199,10 +241,16 @@ double network_point_stage_m(const struct network *network, size_t point_index, 
 
 /*
  * Water held between the gauges and the last nodes (all reaches), one member, m3. It balances to rounding with
- * inflows, side inflows and outflows summed by the trapezoidal rule (but not with NETWORK_KINEMATIC_LINEAR, which
+ * inflows, side inflows, what gauges in mid-river brought, and outflows, all summed by the trapezoidal rule (but not with NETWORK_KINEMATIC_LINEAR, which
  * conserves nothing).
  */
 double network_volume_m3(const struct network *network, size_t member_index);
+
+/*
+ * What a gauge in mid-river brought since the steady start (or creation), measured less routed, m3, one member: negative where it
+ * took away. 0 at a head.
+ */
+double network_brought_m3(const struct network *network, size_t gauge_index, size_t member_index);
 
 /*
  * Steps so far in which a member's flow at some reach's head or foot lay above the tables (32 times

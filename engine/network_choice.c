@@ -23,14 +23,6 @@ static void add_flood(struct method_flood *sum, const struct method_flood *more,
     sum->rise_s = fmin(sum->rise_s, more->rise_s);
 }
 
-static size_t gauge_at(const struct network_river *river, size_t node)
-{
-    for (size_t gauge = 0; gauge < river->gauge_count; gauge++)
-        if (river->gauge_node[gauge] == node)
-            return gauge;
-    return NETWORK_NONE;
-}
-
 static void add_sides(const struct network_river *river, const struct network_options *options, size_t reach_index,
                       struct method_flood *flood)
 {
@@ -56,7 +48,10 @@ static void gather_floods(struct network *network, const struct network_options 
     for (size_t i = 0; i < river->reach_count; i++) {
         size_t reach = network->order[i];
         struct method_flood *flood = &network->choices[reach].flood;
-        size_t gauge = gauge_at(river, river->reaches[reach].from_node);
+        size_t gauge = network_gauge_at(river, river->reaches[reach].from_node);
+        if (gauge != NETWORK_NONE && network_gauge_is_inner(river, gauge) &&
+            !(options->gauge_floods[gauge].peak_m3s > 0.0))
+            gauge = NETWORK_NONE; /* its own flood is not known: what comes from above */
         bool is_known = gauge == NETWORK_NONE || options->gauge_floods[gauge].peak_m3s > 0.0;
         if (gauge != NETWORK_NONE) /* a gauge in mid-river knows the water from above */
             *flood = options->gauge_floods[gauge];
@@ -128,7 +123,7 @@ enum fw_status network_choose_methods(struct network *network, const struct netw
             .curve = &network->reaches[reach].curve,
             .length_m = source->length_m,
             .slope_m_per_m = source->slope_m_per_m,
-            .is_level_held = source->outlet_depth_m > 0.0,
+            .is_level_held = network_reach_has_held_foot(source),
             .has_control = below != NETWORK_NONE && network_method_is_full(river->reaches[below].method),
             .raise_share = follow_levels(network, reach, levels),
         };

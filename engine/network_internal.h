@@ -27,9 +27,13 @@ struct block_layout {
     size_t head_m3; /* [reach] passing volumes now */
     size_t foot_m3; /* [reach] */
     size_t gauge; /* [gauge][slot] flows, the newest in slot ring_at, older ones in the slots before it, cyclically */
-    size_t side;  /* [side inflow] flows now */
-    size_t point; /* [point] flows now */
-    size_t depth; /* [point] depths now, not a number where only normal stage is known */
+    size_t given; /* [gauge] flows as given for this step, not a number where nothing was measured */
+    size_t brought_m3s; /* [gauge] measured less routed, now */
+    size_t brought_m3;  /* [gauge] summed */
+    size_t level;       /* [level] now, above the bed */
+    size_t side;        /* [side inflow] flows now */
+    size_t point;       /* [point] flows now */
+    size_t depth;       /* [point] depths now, not a number where only normal stage is known */
     size_t count;
 };
 
@@ -44,13 +48,15 @@ struct network {
 
     struct routed_reach *reaches;
     size_t *order;
-    size_t *gauge_of_head; /* per reach, NETWORK_NONE where reaches flow in */
-    size_t *first_above;   /* per reach, the first that ends at its head, or NETWORK_NONE */
-    size_t *next_above;    /* per reach, the next that ends where it does */
-    size_t *first_point;   /* per reach, the first on it */
-    size_t *next_point;    /* per point, the next on the same reach */
-    size_t *state_offset;  /* per reach, within a group's block; a tree's at its outlet */
-    size_t *tree_of_reach; /* NETWORK_NONE where the full equations do not rule */
+    size_t *gauge_of_head;     /* per reach, or NETWORK_NONE */
+    size_t *first_above_gauge; /* per gauge, the first that ends there; NETWORK_NONE: it is not in mid-river */
+    size_t inner_share_count;  /* side inflows that follow a gauge in mid-river */
+    size_t *first_above;       /* per reach, the first that ends at its head, or NETWORK_NONE */
+    size_t *next_above;        /* per reach, the next that ends where it does */
+    size_t *first_point;       /* per reach, the first on it */
+    size_t *next_point;        /* per point, the next on the same reach */
+    size_t *state_offset;      /* per reach, within a group's block; a tree's at its outlet */
+    size_t *tree_of_reach;     /* NETWORK_NONE where the full equations do not rule */
     size_t tree_count;
     struct routed_tree *trees;
     struct placed_point *points;
@@ -74,6 +80,11 @@ struct network {
 
 /* Puts a method into every reach that asks for one. Order and curves must be there. FW_NO_MEMORY. */
 FW_MUST_CHECK enum fw_status network_choose_methods(struct network *network, const struct network_options *options);
+
+static inline bool network_has_inner_gauge(const struct network *network, size_t gauge)
+{
+    return network->first_above_gauge[gauge] != NETWORK_NONE;
+}
 
 static inline double *network_block_of(const struct network *network, size_t group)
 {

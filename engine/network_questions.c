@@ -75,6 +75,13 @@ double network_volume_m3(const struct network *network, size_t member_index)
     return volume;
 }
 
+double network_brought_m3(const struct network *network, size_t gauge_index, size_t member_index)
+{
+    size_t members = network->members_per_group;
+    const double *block = network_block_of(network, member_index / members);
+    return block[network->layout.brought_m3 + gauge_index * members + member_index % members];
+}
+
 static void summarise_flow(const struct routed_reach *reach, double roughness_factor, double discharge_m3s,
                            struct network_reach_flow *flow_out)
 {

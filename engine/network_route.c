@@ -5,6 +5,8 @@
 #include <stdbool.h>
 #include <string.h>
 
+static const double farthest_level_m = 1e4;
+
 static struct routed_flows flows_of(const struct network *network)
 {
     return (struct routed_flows){
@@ -34,16 +36,23 @@ static double side_flow_m3s(const struct network *network, double *block, size_t
     return side->constant_m3s + side->share * gauge_flow;
 }
 
-/* Into the head of a reach, as passing volume; what comes from its own tree left out. */
+static bool is_gauged_at_head(const struct network *network, size_t reach_index)
+{
+    size_t gauge = network->gauge_of_head[reach_index];
+    return gauge != NETWORK_NONE && network_has_inner_gauge(network, gauge);
+}
+
+/* Comes to the head of a reach, as passing volume; what comes from its own tree left out. */
 static void gather_head(const struct network *network, double *block, size_t reach_index, size_t newest_slot)
 {
     size_t members = network->members_per_group;
     double *head = network->stop_m3;
     size_t gauge = network->gauge_of_head[reach_index];
+    bool is_fed_from_outside = gauge != NETWORK_NONE && !network_has_inner_gauge(network, gauge);
     for (size_t member = 0; member < members; member++)
-        head[member] = gauge == NETWORK_NONE
-                           ? 0.0
-                           : network->time_step_s * network_gauge_slot(network, block, gauge, newest_slot)[member];
+        head[member] = is_fed_from_outside
+                           ? network->time_step_s * network_gauge_slot(network, block, gauge, newest_slot)[member]
+                           : 0.0;
     for (size_t above = network->first_above[reach_index]; above != NETWORK_NONE;
          above = network->next_above[above]) {
         if (network->tree_of_reach[above] != NETWORK_NONE &&
@@ -53,6 +62,18 @@ static void gather_head(const struct network *network, double *block, size_t rea
         for (size_t member = 0; member < members; member++)
             head[member] += foot[member];
     }
+}
+
+/* What was measured at the head goes on in place of what came. */
+static void replace_head(const struct network *network, const double *block, size_t reach_index)
+{
+    if (!is_gauged_at_head(network, reach_index))
+        return;
+    size_t members = network->members_per_group;
+    const double *given = block + network->layout.given + network->gauge_of_head[reach_index] * members;
+    for (size_t member = 0; member < members; member++)
+        if (!isnan(given[member]))
+            network->stop_m3[member] = network->time_step_s * given[member];
 }
 
 /* Takes what a step left at the stops of a reach to its head, foot and points. */
@@ -110,12 +131,22 @@ static void move_tree(struct network *network, size_t group, double *block, stru
                       size_t newest_slot, bool is_start)
 {
     size_t members = network->members_per_group;
-    double *state = block + network->state_offset[tree->reach_index[tree->branch_count - 1]];
+    size_t outlet = tree->reach_index[tree->branch_count - 1];
+    double *state = block + network->state_offset[outlet];
     for (size_t branch = 0; branch < tree->branch_count; branch++) {
-        gather_head(network, block, tree->reach_index[branch], newest_slot);
+        size_t reach_index = tree->reach_index[branch];
+        gather_head(network, block, reach_index, newest_slot);
         for (size_t member = 0; member < members; member++)
             tree->inflow_m3s[branch * members + member] = network->stop_m3[member] / network->time_step_s;
+        if (is_gauged_at_head(network, reach_index))
+            memcpy(tree->gauged_m3s + branch * members,
+                   block + network->layout.given + network->gauge_of_head[reach_index] * members,
+                   members * sizeof *block);
     }
+    const struct network_reach *last = &network->river.reaches[outlet];
+    if (last->has_outlet_level)
+        memcpy(tree->given_depth_m, block + network->layout.level + last->outlet_level * members,
+               members * sizeof *block);
     if (is_start)
         routed_tree_start_steady(tree, group, network->side_m3, state);
     else
@@ -130,54 +161,163 @@ static void move_tree(struct network *network, size_t group, double *block, stru
     }
 }
 
-static bool is_inflow(double value)
-{
-    return value >= 0.0 && value <= NETWORK_LARGEST_INFLOW_M3S;
-}
-
-static void start_group(struct network *network, size_t group, const double inflow_m3s[])
+/* What gauges in mid-river measured, against what was routed there; and what they are now for those who follow them. */
+static void keep_gauges(const struct network *network, double *block, size_t newest_slot, bool is_start)
 {
     const struct network_river *river = &network->river;
     size_t members = network->members_per_group;
-    double *block = network_block_of(network, group);
-    struct routed_flows flows = flows_of(network);
-    for (size_t gauge = 0; gauge < river->gauge_count; gauge++)
-        for (size_t slot = 0; slot < network->ring_count; slot++)
-            memcpy(network_gauge_slot(network, block, gauge, slot),
-                   inflow_m3s + gauge * network->group_count * members + group * members, members * sizeof *block);
-    for (size_t side = 0; side < river->side_inflow_count; side++)
-        for (size_t member = 0; member < members; member++) {
-            double flow = side_flow_m3s(network, block, side, 0, member);
-            block[network->layout.side + side * members + member] = flow;
-            network->side_m3[side * members + member] = network->time_step_s * flow;
-        }
-    for (size_t i = 0; i < river->reach_count; i++) {
-        size_t reach_index = network->order[i];
-        struct routed_tree *tree = network_tree_of(network, reach_index);
-        if (tree != NULL) {
-            if (network_is_outlet_of(tree, reach_index))
-                move_tree(network, group, block, tree, 0, true);
+    for (size_t gauge = 0; gauge < river->gauge_count; gauge++) {
+        if (!network_has_inner_gauge(network, gauge))
             continue;
+        bool goes_on = network_reach_from(river, river->gauge_node[gauge]) != NETWORK_NONE;
+        const double *given = block + network->layout.given + gauge * members;
+        double *slot = network_gauge_slot(network, block, gauge, newest_slot);
+        double *brought_m3s = block + network->layout.brought_m3s + gauge * members;
+        double *brought_m3 = block + network->layout.brought_m3 + gauge * members;
+        for (size_t member = 0; member < members; member++) {
+            double routed_m3 = 0.0;
+            for (size_t i = network->first_above_gauge[gauge]; i != NETWORK_NONE; i = network->next_above[i])
+                routed_m3 += block[network->layout.foot_m3 + i * members + member];
+            double routed = routed_m3 / network->time_step_s;
+            double brought = isnan(given[member]) || !goes_on ? 0.0 : given[member] - routed;
+            slot[member] = isnan(given[member]) ? fmax(routed, 0.0) : given[member];
+            brought_m3[member] =
+                is_start ? 0.0 : brought_m3[member] + 0.5 * network->time_step_s * (brought_m3s[member] + brought);
+            brought_m3s[member] = brought;
         }
-        gather_head(network, block, reach_index, 0);
-        routed_reach_start_steady(&network->reaches[reach_index], group, &flows,
-                                  block + network->state_offset[reach_index]);
-        keep_flows(network, block, reach_index);
     }
 }
 
-enum fw_status network_start_steady(struct network *network, const double inflow_m3s[])
+/* A gauge's flow as it is given; where nothing was measured, until it is routed, what it was in `last_m3s`. */
+static void take_gauge(const struct network *network, double *block, size_t gauge, size_t slot,
+                       const double inflow_m3s[], const double last_m3s[])
 {
-    size_t count = network->river.gauge_count * network_member_count(network);
-    for (size_t i = 0; i < count; i++)
-        if (!is_inflow(inflow_m3s[i]))
+    size_t members = network->members_per_group;
+    double *newest = network_gauge_slot(network, block, gauge, slot);
+    memcpy(block + network->layout.given + gauge * members, inflow_m3s, members * sizeof *block);
+    for (size_t member = 0; member < members; member++)
+        newest[member] = isnan(inflow_m3s[member]) ? last_m3s[member] : inflow_m3s[member];
+}
+
+static bool is_inflow(const struct network *network, size_t gauge, double value)
+{
+    return (value >= 0.0 && value <= NETWORK_LARGEST_INFLOW_M3S) ||
+           (isnan(value) && network_has_inner_gauge(network, gauge));
+}
+
+static bool are_levels(const struct network *network, size_t count, const double level_m[])
+{
+    for (size_t i = 0; level_m != NULL && i < network->river.level_count * count; i++)
+        if (!(fabs(level_m[i]) < farthest_level_m))
+            return false;
+    return true;
+}
+
+static void take_levels(const struct network *network, double *block, const double level_m[], size_t level_stride)
+{
+    size_t members = network->members_per_group;
+    for (size_t level = 0; level_m != NULL && level < network->river.level_count; level++)
+        memcpy(block + network->layout.level + level * members, level_m + level * level_stride,
+               members * sizeof *block);
+}
+
+static void take_sides(struct network *network, double *block, size_t newest_slot, bool is_start)
+{
+    size_t members = network->members_per_group;
+    for (size_t side = 0; side < network->river.side_inflow_count; side++)
+        for (size_t member = 0; member < members; member++) {
+            double *flow = block + network->layout.side + side * members + member;
+            double flow_new = side_flow_m3s(network, block, side, newest_slot, member);
+            double flow_before = is_start ? flow_new : *flow;
+            network->side_m3[side * members + member] = 0.5 * network->time_step_s * (flow_before + flow_new);
+            *flow = flow_new;
+        }
+}
+
+/* All reaches of one group, each after those that flow into it. */
+static enum fw_status move_reaches(struct network *network, size_t group, double *block, size_t newest_slot,
+                                   bool is_start)
+{
+    const struct network_river *river = &network->river;
+    struct routed_flows flows = flows_of(network);
+    for (size_t i = 0; i < river->reach_count; i++) {
+        size_t reach_index = network->order[i];
+        const struct routed_reach *reach = &network->reaches[reach_index];
+        struct routed_tree *tree = network_tree_of(network, reach_index);
+        double *state = block + network->state_offset[reach_index];
+        enum fw_status status = FW_OK;
+        if (tree != NULL) {
+            if (network_is_outlet_of(tree, reach_index))
+                move_tree(network, group, block, tree, newest_slot, is_start);
+            continue;
+        }
+        gather_head(network, block, reach_index, newest_slot);
+        replace_head(network, block, reach_index);
+        if (is_start)
+            routed_reach_start_steady(reach, group, &flows, state);
+        else
+            status = routed_reach_step(reach, group, &flows, state);
+        if (status != FW_OK)
+            return status;
+        keep_flows(network, block, reach_index);
+        if (!is_start)
+            count_flows_outside(network, block, group, reach_index);
+    }
+    keep_gauges(network, block, newest_slot, is_start);
+    return FW_OK;
+}
+
+/* In every slot, until what follows a gauge in mid-river knows what is routed there. */
+static enum fw_status start_group(struct network *network, size_t group, const double inflow_m3s[],
+                                  const double level_m[])
+{
+    size_t members = network->members_per_group, all_members = network_member_count(network);
+    double *block = network_block_of(network, group);
+    enum fw_status status = FW_OK;
+    for (size_t gauge = 0; gauge < network->river.gauge_count; gauge++) {
+        memset(network_gauge_slot(network, block, gauge, 0), 0, members * sizeof *block);
+        take_gauge(network, block, gauge, 0, inflow_m3s + gauge * all_members + group * members,
+                   network_gauge_slot(network, block, gauge, 0));
+    }
+    if (level_m != NULL)
+        take_levels(network, block, level_m + group * members, all_members);
+    for (size_t pass = 0; pass <= network->inner_share_count && status == FW_OK; pass++) {
+        for (size_t gauge = 0; gauge < network->river.gauge_count; gauge++)
+            for (size_t slot = 1; slot < network->ring_count; slot++)
+                memcpy(network_gauge_slot(network, block, gauge, slot), network_gauge_slot(network, block, gauge, 0),
+                       members * sizeof *block);
+        take_sides(network, block, 0, true);
+        status = move_reaches(network, group, block, 0, true);
+    }
+    for (size_t gauge = 0; gauge < network->river.gauge_count; gauge++)
+        for (size_t slot = 1; slot < network->ring_count; slot++)
+            memcpy(network_gauge_slot(network, block, gauge, slot), network_gauge_slot(network, block, gauge, 0),
+                   members * sizeof *block);
+    return status;
+}
+
+enum fw_status network_start_steady_at(struct network *network, const double inflow_m3s[], const double level_m[])
+{
+    size_t members = network_member_count(network);
+    for (size_t i = 0; i < network->river.gauge_count * members; i++)
+        if (!is_inflow(network, i / members, inflow_m3s[i]))
             return FW_BAD_INPUT;
-    for (size_t group = 0; group < network->group_count; group++)
-        start_group(network, group, inflow_m3s);
+    if (!are_levels(network, members, level_m))
+        return FW_BAD_INPUT;
+    for (size_t group = 0; group < network->group_count; group++) {
+        enum fw_status status = start_group(network, group, inflow_m3s, level_m);
+        if (status != FW_OK)
+            return status;
+    }
     network->ring_at = 0;
     network->steps_above_tables = 0;
     network->steps_below_zero = 0;
     return FW_OK;
+}
+
+enum fw_status network_start_steady(struct network *network, const double inflow_m3s[])
+{
+    return network_start_steady_at(network, inflow_m3s, NULL);
 }
 
 static bool are_inflows_in_order(const struct network *network, size_t step_count, const double inflow_m3s[])
@@ -186,9 +326,9 @@ static bool are_inflows_in_order(const struct network *network, size_t step_coun
     for (size_t gauge = 0; gauge < network->river.gauge_count; gauge++) {
         const double *series = inflow_m3s + gauge * (step_count + 1) * members;
         for (size_t i = 0; i < (step_count + 1) * members; i++)
-            if (!is_inflow(series[i]))
+            if (!is_inflow(network, gauge, series[i]))
                 return false;
-        for (size_t group = 0; group < network->group_count; group++) {
+        for (size_t group = 0; group < network->group_count && !network_has_inner_gauge(network, gauge); group++) {
             const double *present =
                 network_gauge_slot(network, network_block_of(network, group), gauge, network->ring_at);
             for (size_t member = 0; member < network->members_per_group; member++)
@@ -199,41 +339,22 @@ static bool are_inflows_in_order(const struct network *network, size_t step_coun
     return true;
 }
 
-/* One step of one group. `inflow_m3s` points at the new inflows of the group's first member at gauge 0. */
-static enum fw_status step_group(struct network *network, size_t group, size_t newest_slot, const double inflow_m3s[],
-                                 size_t gauge_stride)
+struct step_input { /* of the group's first member at gauge and level 0, at the new time */
+    const double *inflow_m3s, *level_m;
+    size_t stride; /* to the next gauge or level */
+};
+
+static enum fw_status step_group(struct network *network, size_t group, size_t newest_slot,
+                                 const struct step_input *input)
 {
-    const struct network_river *river = &network->river;
-    size_t members = network->members_per_group;
+    size_t slot_before = newest_slot > 0 ? newest_slot - 1 : network->ring_count - 1;
     double *block = network_block_of(network, group);
-    struct routed_flows flows = flows_of(network);
-    for (size_t gauge = 0; gauge < river->gauge_count; gauge++)
-        memcpy(network_gauge_slot(network, block, gauge, newest_slot), inflow_m3s + gauge * gauge_stride,
-               members * sizeof *block);
-    for (size_t side = 0; side < river->side_inflow_count; side++)
-        for (size_t member = 0; member < members; member++) {
-            double *flow = block + network->layout.side + side * members + member;
-            double flow_new = side_flow_m3s(network, block, side, newest_slot, member);
-            network->side_m3[side * members + member] = 0.5 * network->time_step_s * (*flow + flow_new);
-            *flow = flow_new;
-        }
-    for (size_t i = 0; i < river->reach_count; i++) {
-        size_t reach_index = network->order[i];
-        struct routed_tree *tree = network_tree_of(network, reach_index);
-        if (tree != NULL) {
-            if (network_is_outlet_of(tree, reach_index))
-                move_tree(network, group, block, tree, newest_slot, false);
-            continue;
-        }
-        gather_head(network, block, reach_index, newest_slot);
-        enum fw_status status = routed_reach_step(&network->reaches[reach_index], group, &flows,
-                                                  block + network->state_offset[reach_index]);
-        if (status != FW_OK)
-            return status;
-        keep_flows(network, block, reach_index);
-        count_flows_outside(network, block, group, reach_index);
-    }
-    return FW_OK;
+    for (size_t gauge = 0; gauge < network->river.gauge_count; gauge++)
+        take_gauge(network, block, gauge, newest_slot, input->inflow_m3s + gauge * input->stride,
+                   network_gauge_slot(network, block, gauge, slot_before));
+    take_levels(network, block, input->level_m, input->stride);
+    take_sides(network, block, newest_slot, false);
+    return move_reaches(network, group, block, newest_slot, false);
 }
 
 /* [point][step][member] of one group, from the present. Stages may be NULL. */
@@ -257,22 +378,26 @@ static void give_points(const struct network *network, size_t group, size_t step
     }
 }
 
-enum fw_status network_advance_with_stage(struct network *network, size_t step_count, const double inflow_m3s[],
-                                          double point_discharge_m3s[], double point_stage_m[])
+enum fw_status network_advance_at(struct network *network, size_t step_count, const double inflow_m3s[],
+                                  const double level_m[], double point_discharge_m3s[], double point_stage_m[])
 {
     size_t all_members = network_member_count(network);
-    if (!are_inflows_in_order(network, step_count, inflow_m3s))
+    if (!are_inflows_in_order(network, step_count, inflow_m3s) ||
+        !are_levels(network, (step_count + 1) * all_members, level_m))
         return FW_BAD_INPUT;
     size_t slot = network->ring_at;
     /* groups outermost: one group's cells and tables stay in the nearest cache over all steps */
     for (size_t group = 0; group < network->group_count; group++) {
-        const double *group_inflow = inflow_m3s + group * network->members_per_group;
+        size_t first_member = group * network->members_per_group;
         give_points(network, group, 0, step_count, point_discharge_m3s, point_stage_m);
         slot = network->ring_at;
         for (size_t step = 1; step <= step_count; step++) {
+            size_t at = step * all_members + first_member;
+            const struct step_input input = {.inflow_m3s = inflow_m3s + at,
+                                             .level_m = level_m == NULL ? NULL : level_m + at,
+                                             .stride = (step_count + 1) * all_members};
             slot = slot + 1 < network->ring_count ? slot + 1 : 0;
-            enum fw_status status =
-                step_group(network, group, slot, group_inflow + step * all_members, (step_count + 1) * all_members);
+            enum fw_status status = step_group(network, group, slot, &input);
             if (status != FW_OK)
                 return status;
             give_points(network, group, step, step_count, point_discharge_m3s, point_stage_m);
@@ -282,8 +407,14 @@ enum fw_status network_advance_with_stage(struct network *network, size_t step_c
     return FW_OK;
 }
 
+enum fw_status network_advance_with_stage(struct network *network, size_t step_count, const double inflow_m3s[],
+                                          double point_discharge_m3s[], double point_stage_m[])
+{
+    return network_advance_at(network, step_count, inflow_m3s, NULL, point_discharge_m3s, point_stage_m);
+}
+
 enum fw_status network_advance(struct network *network, size_t step_count, const double inflow_m3s[],
                                double point_discharge_m3s[])
 {
-    return network_advance_with_stage(network, step_count, inflow_m3s, point_discharge_m3s, NULL);
+    return network_advance_at(network, step_count, inflow_m3s, NULL, point_discharge_m3s, NULL);
 }

@@ -31,6 +31,11 @@ static bool is_not_negative(double value)
     return value >= 0.0 && isfinite(value);
 }
 
+static const char *held_foot(const struct network_reach *reach)
+{
+    return reach->has_outlet_level ? "outlet_level" : "outlet_depth_m";
+}
+
 static enum fw_status check_reach(const struct network_river *river, size_t reach_index,
                                   struct network_fault *fault_out)
 {
@@ -60,12 +65,18 @@ static enum fw_status check_reach(const struct network_river *river, size_t reac
     if (!is_not_negative(reach->outlet_depth_m) || reach->outlet_depth_m > 1e3)
         return fault(fault_out, "reach '%s': outlet_depth_m %g: expected 0 (none) to 1000", reach->id,
                      reach->outlet_depth_m);
-    if (reach->outlet_depth_m > 0.0 && !network_method_is_full(reach->method) && reach->method != NETWORK_AUTO)
-        return fault(fault_out, "reach '%s': outlet_depth_m %g: a held level needs method auto, dynamic or diffusive",
-                     reach->id, reach->outlet_depth_m);
-    if (reach->outlet_depth_m > 0.0 && network_reach_from(river, reach->to_node) != NETWORK_NONE)
-        return fault(fault_out, "reach '%s': outlet_depth_m %g: a level is held at the foot of a last reach only",
-                     reach->id, reach->outlet_depth_m);
+    if (reach->has_outlet_level && reach->outlet_level >= river->level_count)
+        return fault(fault_out, "reach '%s': outlet_level %zu, but there are %zu levels", reach->id,
+                     reach->outlet_level, river->level_count);
+    if (reach->has_outlet_level && reach->outlet_depth_m > 0.0)
+        return fault(fault_out, "reach '%s': outlet_depth_m %g: is held, but outlet_level %zu is given too",
+                     reach->id, reach->outlet_depth_m, reach->outlet_level);
+    if (network_reach_has_held_foot(reach) && !network_method_is_full(reach->method) && reach->method != NETWORK_AUTO)
+        return fault(fault_out, "reach '%s': %s: a held level needs method auto, dynamic or diffusive", reach->id,
+                     held_foot(reach));
+    if (network_reach_has_held_foot(reach) && network_reach_from(river, reach->to_node) != NETWORK_NONE)
+        return fault(fault_out, "reach '%s': %s: a level is held at the foot of a last reach only", reach->id,
+                     held_foot(reach));
     if (reach->section == NULL)
         return fault(fault_out, "reach '%s': has no section", reach->id);
     if (section_check(reach->section, &section_fault) != FW_OK)
@@ -92,6 +103,12 @@ static enum fw_status check_side_inflow(const struct network_river *river, size_
     if (side->share_of_gauge >= river->gauge_count)
         return fault(fault_out, "reach '%s': side_inflows[%zu]: share_of_gauge %zu, but there are %zu gauges",
                      reach->id, side_index, side->share_of_gauge, river->gauge_count);
+    if (network_gauge_is_inner(river, side->share_of_gauge) &&
+        network_leads_to(river, reach->to_node, river->gauge_node[side->share_of_gauge]))
+        return fault(
+            fault_out,
+            "reach '%s': side_inflows[%zu]: share_of_gauge %zu stands downstream: its flow would feed itself",
+            reach->id, side_index, side->share_of_gauge);
     if (!is_not_negative(side->share) || side->share > 1e3)
         return fault(fault_out, "reach '%s': side_inflows[%zu]: share %g: expected 0 to 1000", reach->id, side_index,
                      side->share);
@@ -197,7 +214,7 @@ enum fw_status river_check_values(const struct network_river *river, const struc
     for (size_t i = 0; i < river->reach_count && status == FW_OK; i++)
         status = check_reach(river, i, fault_out);
     for (size_t i = 0; i < river->gauge_count && status == FW_OK; i++)
-        if (river->gauge_node[i] >= river->node_count)
+        if (river->gauge_node[i] >= river->node_count && river->gauge_node[i] != NETWORK_NONE)
             status = fault(fault_out, "gauge_node[%zu]: node %zu, but there are %zu nodes", i, river->gauge_node[i],
                            river->node_count);
     for (size_t i = 0; i < river->side_inflow_count && status == FW_OK; i++)
@@ -207,27 +224,17 @@ enum fw_status river_check_values(const struct network_river *river, const struc
     return status;
 }
 
-static size_t gauge_at(const struct network_river *river, size_t node)
-{
-    for (size_t i = 0; i < river->gauge_count; i++)
-        if (river->gauge_node[i] == node)
-            return i;
-    return NETWORK_NONE;
-}
-
 static enum fw_status check_gauges(const struct network_river *river, struct network_fault *fault_out)
 {
     for (size_t i = 0; i < river->gauge_count; i++) {
         size_t node = river->gauge_node[i];
-        size_t above = network_reach_into(river, node);
-        if (gauge_at(river, node) != i)
+        if (node == NETWORK_NONE)
+            continue;
+        if (network_gauge_at(river, node) != i)
             return fault(fault_out, "gauge_node[%zu]: node %zu has gauge %zu already", i, node,
-                         gauge_at(river, node));
-        if (above != NETWORK_NONE)
-            return fault(fault_out, "reach '%s': ends at the gauge of node %zu; a gauge must stand at a head",
-                         river->reaches[above].id, node);
-        if (network_reach_from(river, node) == NETWORK_NONE)
-            return fault(fault_out, "gauge_node[%zu]: no reach leaves node %zu", i, node);
+                         network_gauge_at(river, node));
+        if (network_reach_from(river, node) == NETWORK_NONE && network_reach_into(river, node) == NETWORK_NONE)
+            return fault(fault_out, "gauge_node[%zu]: no reach begins or ends at node %zu", i, node);
     }
     return FW_OK;
 }
@@ -244,7 +251,7 @@ static enum fw_status check_nodes(const struct network_river *river, struct netw
             return fault(fault_out, "reach '%s': leaves node %zu, as reach '%s' does; a river does not fork",
                          reach->id, reach->from_node, river->reaches[leaving].id);
         if (network_reach_into(river, reach->from_node) == NETWORK_NONE &&
-            gauge_at(river, reach->from_node) == NETWORK_NONE)
+            network_gauge_at(river, reach->from_node) == NETWORK_NONE)
             return fault(fault_out,
                          "reach '%s': nothing flows into its head, node %zu: no gauge there, and no reach ends",
                          reach->id, reach->from_node);
@@ -267,7 +274,7 @@ enum fw_status river_order(const struct network_river *river, size_t order_out[]
     for (size_t i = 0; i < river->reach_count; i++)
         waiting[river->reaches[i].to_node]++;
     for (size_t i = 0; i < river->reach_count; i++)
-        if (gauge_at(river, river->reaches[i].from_node) != NETWORK_NONE)
+        if (network_reach_into(river, river->reaches[i].from_node) == NETWORK_NONE)
             order_out[count++] = i;
     for (size_t done = 0; done < count; done++) {
         size_t node = river->reaches[order_out[done]].to_node;

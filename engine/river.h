@@ -13,7 +13,7 @@ FW_MUST_CHECK enum fw_status river_check_values(const struct network_river *rive
                                                 struct network_fault *fault_out);
 
 /*
- * The tree itself: every head fed, no loop, no fork, no gauge in mid-river, nothing apart. The values must have been
+ * The tree itself: every head fed, no loop, no fork, nothing apart but gauges. The values must have been
  * checked.
  *
  *   order_out  reach_count; indices such that every reach comes after all that flow into it

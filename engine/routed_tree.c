@@ -11,6 +11,7 @@
 #include <stdlib.h>
 #include <string.h>
 
+static const double gravity_m_s2 = 9.80665;
 static const double extension_lengths = 5.0;     /* times D/c at the peak */
 static const double extension_lengthening = 1.2; /* cell by cell: where their length jumps, waves are thrown back */
 static const double most_given_back = 0.02;      /* of the water in the last cell, in one step */
@@ -20,11 +21,6 @@ static const double most_given_back = 0.02;      /* of the water in the last cel
 static void *room_for(size_t count, size_t size)
 {
     return calloc(count > 0 ? count : 1, size);
-}
-
-static bool ends_at_a_given_depth(const struct network_reach *reach)
-{
-    return reach->outlet_depth_m > 0.0;
 }
 
 /* The next cell below one, beyond the foot. */
@@ -37,7 +33,7 @@ static size_t outlet_interval_count(const struct routed_reach *reach)
 {
     size_t count = 0;
     double extension_m = 0.0, cell_m = reach->cell_m;
-    if (ends_at_a_given_depth(reach->source))
+    if (network_reach_has_held_foot(reach->source))
         return reach->cell_count;
     for (; count < 3 || extension_m < extension_lengths * reach->diffusion_length_m; count++) {
         cell_m = extension_cell_m(reach, cell_m);
@@ -66,12 +62,14 @@ static enum fw_status allocate_parts(struct routed_tree *tree, size_t side_count
     tree->branches = room_for(groups * branches, sizeof *tree->branches);
     tree->trees = room_for(groups, sizeof *tree->trees);
     tree->inflow_m3s = room_for(branches * tree->member_count, sizeof *tree->inflow_m3s);
+    tree->given_depth_m = room_for(tree->member_count, sizeof *tree->given_depth_m);
     tree->foot_depth_m = room_for(branches * tree->member_count, sizeof *tree->foot_depth_m);
+    tree->gauged_m3s = room_for(branches * tree->member_count, sizeof *tree->gauged_m3s);
     tree->side_m3 = room_for(side_count * tree->member_count, sizeof *tree->side_m3);
     bool is_short = tree->interval_m == NULL || tree->slope_m_per_m == NULL || tree->side_node == NULL ||
                     tree->side_index == NULL || tree->tables == NULL || tree->branches == NULL ||
-                    tree->trees == NULL || tree->inflow_m3s == NULL || tree->foot_depth_m == NULL ||
-                    tree->side_m3 == NULL;
+                    tree->trees == NULL || tree->inflow_m3s == NULL || tree->given_depth_m == NULL ||
+                    tree->gauged_m3s == NULL || tree->foot_depth_m == NULL || tree->side_m3 == NULL;
     return is_short ? FW_NO_MEMORY : FW_OK;
 }
 
@@ -127,15 +125,29 @@ static void place_branches(struct routed_tree *tree, const struct network_river 
                 .interval_count = count,
                 .interval_m = tree->interval_m + at,
                 .slope_m_per_m = tree->slope_m_per_m + at,
-                .foot = !is_outlet                      ? DYNAMIC_FOOT_JOINS
-                        : ends_at_a_given_depth(source) ? DYNAMIC_FOOT_STAGE
-                                                        : DYNAMIC_FOOT_NORMAL,
+                .foot = !is_outlet                            ? DYNAMIC_FOOT_JOINS
+                        : network_reach_has_held_foot(source) ? DYNAMIC_FOOT_STAGE
+                                                              : DYNAMIC_FOOT_NORMAL,
                 .below =
                     is_outlet ? DYNAMIC_NOWHERE : branch_of_reach(tree, network_reach_from(river, source->to_node))};
-        for (size_t member = 0; member < tree->member_count; member++)
-            tree->foot_depth_m[branch * tree->member_count + member] = source->outlet_depth_m;
         at += count;
     }
+    double outlet_depth_m = reaches[tree->reach_index[tree->branch_count - 1]].source->outlet_depth_m;
+    for (size_t member = 0; member < tree->member_count; member++)
+        tree->given_depth_m[member] = outlet_depth_m;
+}
+
+static void place_gauges(struct routed_tree *tree, const struct network_river *river,
+                         const struct routed_reach reaches[])
+{
+    for (size_t i = 0; i < tree->branch_count * tree->member_count; i++)
+        tree->gauged_m3s[i] = (double)NAN;
+    for (size_t branch = 0; branch < tree->branch_count; branch++) {
+        size_t gauge = network_gauge_at(river, reaches[tree->reach_index[branch]].source->from_node);
+        tree->has_gauges = tree->has_gauges || (gauge != NETWORK_NONE && network_gauge_is_inner(river, gauge));
+    }
+    for (size_t group = 0; group < tree->group_count && tree->has_gauges; group++)
+        tree->trees[group].gauged_m3s = tree->gauged_m3s;
 }
 
 static enum fw_status make_tables(struct routed_tree *tree, const struct routed_reach reaches[],
@@ -182,6 +194,7 @@ enum fw_status routed_tree_init(struct routed_tree *tree, const struct network_r
                                                    .is_diffusive = outlet->source->method == NETWORK_DIFFUSIVE};
     place_branches(tree, river, reaches);
     place_sides(tree, reaches);
+    place_gauges(tree, river, reaches);
     status = dynamic_work_create(&tree->work, &tree->trees[0], tree->member_count);
 cleanup:
     if (status != FW_OK)
@@ -204,7 +217,9 @@ void routed_tree_clear(struct routed_tree *tree)
     free(tree->branches);
     free(tree->trees);
     free(tree->inflow_m3s);
+    free(tree->given_depth_m);
     free(tree->foot_depth_m);
+    free(tree->gauged_m3s);
     free(tree->side_m3);
     memset(tree, 0, sizeof *tree);
 }
@@ -213,7 +228,7 @@ void routed_tree_clear(struct routed_tree *tree)
 
 size_t routed_tree_state_count(const struct routed_tree *tree)
 {
-    return 3 * tree->node_count + tree->branch_count + 1;
+    return 3 * tree->node_count + 2 * tree->branch_count + 1;
 }
 
 static struct dynamic_state state_of(const struct routed_tree *tree, double state[])
@@ -223,10 +238,16 @@ static struct dynamic_state state_of(const struct routed_tree *tree, double stat
         .area_m2 = state, .discharge_m3s = state + row, .passed_m3 = state + 2 * row, .inflow_m3s = state + 3 * row};
 }
 
+/* [branch][member]: what gauges bring into the heads, measured less what comes, now. */
+static double *brought_of(const struct routed_tree *tree, double state[])
+{
+    return state + (3 * tree->node_count + tree->branch_count) * tree->member_count;
+}
+
 /* [member]: volume that the flows say left or did not enter, and that is still there. */
 static double *owed_of(const struct routed_tree *tree, double state[])
 {
-    return state + (3 * tree->node_count + tree->branch_count) * tree->member_count;
+    return state + (3 * tree->node_count + 2 * tree->branch_count) * tree->member_count;
 }
 
 static size_t foot_node(const struct routed_tree *tree)
@@ -260,6 +281,72 @@ static void gather_sides(struct routed_tree *tree, const double side_m3[], const
     }
 }
 
+static double froude_squared(const struct area_table *table, double area_m2, double discharge_m3s)
+{
+    double speed = discharge_m3s / area_m2;
+    return speed * speed / (gravity_m_s2 * area_m2 * area_table_row_at(table, area_m2)->depth_1);
+}
+
+/* The given depth, or the flow's critical one where that is higher: what lies below it does not act upstream. */
+static double acting_depth_m(const struct area_table *table, double given_depth_m, double discharge_m3s)
+{
+    double low = fmax(area_table_area_at_depth_m2(table, given_depth_m), table->smallest_area_m2);
+    if (froude_squared(table, low, discharge_m3s) <= 1.0)
+        return fmax(given_depth_m, area_table_depth_m(table, table->smallest_area_m2));
+    double high = 2.0 * low;
+    while (froude_squared(table, high, discharge_m3s) > 1.0)
+        high *= 2.0;
+    for (int i = 0; i < 100 && high - low > 1e-14 * high; i++) {
+        double middle = 0.5 * (low + high);
+        if (froude_squared(table, middle, discharge_m3s) > 1.0)
+            low = middle;
+        else
+            high = middle;
+    }
+    return area_table_depth_m(table, high);
+}
+
+/* Did any depth at the outlet change? */
+static bool hold_foot(struct routed_tree *tree, size_t group, const struct dynamic_state *now)
+{
+    size_t members = tree->member_count, foot = foot_node(tree), last = tree->branch_count - 1;
+    bool has_changed = false;
+    if (tree->trees[group].branches[last].foot != DYNAMIC_FOOT_STAGE)
+        return false;
+    for (size_t member = 0; member < members; member++) {
+        double *depth = &tree->foot_depth_m[last * members + member];
+        double acting = acting_depth_m(tree->trees[group].branches[last].table, tree->given_depth_m[member],
+                                       fmax(now->discharge_m3s[foot * members + member], 0.0));
+        has_changed = has_changed || acting != *depth;
+        *depth = acting;
+    }
+    return has_changed;
+}
+
+static void find_brought(const struct routed_tree *tree, size_t group, const struct dynamic_state *now,
+                         const double inflow_m3s[], double brought_m3s[])
+{
+    size_t members = tree->member_count, node = 0;
+    if (!tree->has_gauges)
+        return;
+    for (size_t branch = 0; branch < tree->branch_count; branch++) {
+        for (size_t member = 0; member < members; member++) {
+            size_t at = branch * members + member;
+            bool is_gauged = !isnan(tree->gauged_m3s[at]);
+            brought_m3s[at] = is_gauged ? now->discharge_m3s[node * members + member] - inflow_m3s[at] : 0.0;
+        }
+        node += tree->trees[group].branches[branch].interval_count + 1;
+    }
+    node = 0;
+    for (size_t above = 0; above + 1 < tree->branch_count; above++) {
+        size_t below = tree->trees[group].branches[above].below;
+        node += tree->trees[group].branches[above].interval_count + 1;
+        for (size_t member = 0; member < members; member++)
+            if (!isnan(tree->gauged_m3s[below * members + member]))
+                brought_m3s[below * members + member] -= now->discharge_m3s[(node - 1) * members + member];
+    }
+}
+
 void routed_tree_start_steady(struct routed_tree *tree, size_t group, const double side_m3[], double state[])
 {
     struct dynamic_state now = state_of(tree, state);
@@ -267,7 +354,12 @@ void routed_tree_start_steady(struct routed_tree *tree, size_t group, const doub
     for (size_t i = 0; i < tree->trees[group].side_count * tree->member_count; i++)
         tree->side_m3[i] /= tree->time_step_s; /* now flows */
     memcpy(now.inflow_m3s, tree->inflow_m3s, tree->branch_count * tree->member_count * sizeof *tree->inflow_m3s);
+    /* flows do not depend on levels: the second time the foot is where they put it */
+    hold_foot(tree, group, &now);
     dynamic_tree_start_steady(&tree->trees[group], tree->member_count, tree->side_m3, tree->foot_depth_m, &now);
+    if (hold_foot(tree, group, &now))
+        dynamic_tree_start_steady(&tree->trees[group], tree->member_count, tree->side_m3, tree->foot_depth_m, &now);
+    find_brought(tree, group, &now, tree->inflow_m3s, brought_of(tree, state));
     memset(owed_of(tree, state), 0, tree->member_count * sizeof *state);
     tree->counts = (struct dynamic_counts){0};
 }
@@ -281,22 +373,26 @@ static double said_m3(const struct routed_tree *tree, double before_m3s, double 
 void routed_tree_step(struct routed_tree *tree, size_t group, const double side_m3[], double state[])
 {
     struct dynamic_state now = state_of(tree, state);
-    double *owed = owed_of(tree, state);
+    double *owed = owed_of(tree, state), *brought = brought_of(tree, state);
     size_t members = tree->member_count, node = 0;
     size_t foot = foot_node(tree) * members;
     gather_sides(tree, side_m3, &now, owed);
+    hold_foot(tree, group, &now);
     /* said to have come and to have gone, less what did come and go: nothing but rounding in an ordinary step */
     for (size_t member = 0; member < members; member++) {
         owed[member] += (1.0 - DYNAMIC_TIME_WEIGHT) * tree->time_step_s * -now.discharge_m3s[foot + member];
         for (size_t branch = 0; branch < tree->branch_count; branch++)
             owed[member] +=
-                said_m3(tree, now.inflow_m3s[branch * members + member], tree->inflow_m3s[branch * members + member]);
+                said_m3(tree, now.inflow_m3s[branch * members + member] + brought[branch * members + member],
+                        tree->inflow_m3s[branch * members + member]);
     }
     dynamic_tree_step(&tree->trees[group], tree->time_step_s, members, tree->inflow_m3s, tree->foot_depth_m,
                       tree->side_m3, &now, tree->work, &tree->counts);
+    find_brought(tree, group, &now, tree->inflow_m3s, brought);
     for (size_t branch = 0; branch < tree->branch_count; branch++) {
         size_t last = node + tree->trees[group].branches[branch].interval_count;
         for (size_t member = 0; member < members; member++) {
+            owed[member] += said_m3(tree, 0.0, brought[branch * members + member]);
             owed[member] -= now.passed_m3[node * members + member];
             if (branch + 1 < tree->branch_count) /* passes into another head */
                 owed[member] += now.passed_m3[last * members + member];
@@ -335,7 +431,7 @@ double routed_tree_volume_m3(const struct routed_tree *tree, size_t group, size_
         size_t count = branch + 1 == tree->branch_count ? tree->outlet_cell_count
                                                         : tree->trees[group].branches[branch].interval_count;
         volume += dynamic_tree_volume_m3(&tree->trees[group], &now, members, member, branch, 0, count);
-        net_m3s += now.inflow_m3s[branch * members + member];
+        net_m3s += now.inflow_m3s[branch * members + member] + brought_of(tree, state)[branch * members + member];
     }
     return volume - (DYNAMIC_TIME_WEIGHT - 0.5) * tree->time_step_s * net_m3s;
 }

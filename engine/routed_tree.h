@@ -29,9 +29,12 @@ struct routed_tree {
     struct dynamic_tree *trees;      /* [group] */
     struct dynamic_work *work;
     struct dynamic_counts counts;
-    double *inflow_m3s;   /* [branch][member] */
-    double *foot_depth_m; /* [branch][member] */
-    double *side_m3;      /* [side][member] */
+    double *inflow_m3s;    /* [branch][member] */
+    double *given_depth_m; /* [member]: held at the outlet, where it ends so */
+    double *foot_depth_m;  /* [branch][member]: the same, or the critical depth where that is higher */
+    double *gauged_m3s;    /* [branch][member]: measured at the heads, not a number where nothing was */
+    bool has_gauges;       /* at a head, with a reach of the network above */
+    double *side_m3;       /* [side][member] */
 };
 
 /*
@@ -47,7 +50,8 @@ void routed_tree_clear(struct routed_tree *tree); /* an all-zero one is fine */
 size_t routed_tree_state_count(const struct routed_tree *tree); /* doubles per member */
 
 /*
- * Before both: tree->inflow_m3s holds what comes into each branch's head from outside the tree.
+ * Before both: tree->inflow_m3s holds what comes into each branch's head from outside the tree, gauged_m3s what was measured
+ * there, given_depth_m the level at the outlet.
  *   side_m3  [side inflow of the river][member], volume of the step (steady: of every step)
  */
 void routed_tree_start_steady(struct routed_tree *tree, size_t group, const double side_m3[], double state[]);
@@ -58,7 +62,8 @@ void routed_tree_read_stops(const struct routed_tree *tree, size_t group, size_t
                             const struct routed_reach *reach, double state[], double stop_m3[],
                             double stop_depth_m[]);
 
-/* Water held by one member, without the extension; balances with flows summed by the trapezoidal rule. */
+/* Water held by one member, without the extension; balances with flows summed by the trapezoidal rule, what gauges
+ * brought among them. */
 double routed_tree_volume_m3(const struct routed_tree *tree, size_t group, size_t member, double state[]);
 
 #endif

@@ -47,9 +47,10 @@ static void fork(struct try_river *try)
     try->reaches[LOWER].from_node = 1;
 }
 
-static void gauge_in_mid_river(struct try_river *try)
+static void gauge_in_mid_river_alone(struct try_river *try)
 {
     try->gauge_node[1] = 3;
+    try->river.side_inflow_count = 2; /* the third is a share of gauge 1 */
 }
 
 static void two_gauges_at_one_node(struct try_river *try)
@@ -90,6 +91,31 @@ static void held_level_in_mid_river(struct try_river *try)
 {
     try->reaches[MIDDLE].method = NETWORK_DYNAMIC;
     try->reaches[MIDDLE].outlet_depth_m = 2.3;
+}
+
+SPOIL(share_of_a_gauge_below, try->gauge_node[1] = 3)
+
+static void give_level(struct try_river *try, size_t reach, size_t level)
+{
+    try->river.level_count = 2;
+    try->reaches[reach].method = NETWORK_DYNAMIC;
+    try->reaches[reach].has_outlet_level = true;
+    try->reaches[reach].outlet_level = level;
+}
+
+SPOIL(level_outside, give_level(try, LOWER, 2))
+SPOIL(level_in_mid_river, give_level(try, MIDDLE, 1))
+
+static void level_by_storage(struct try_river *try)
+{
+    give_level(try, LOWER, 1);
+    try->reaches[LOWER].method = NETWORK_MUSKINGUM_CUNGE;
+}
+
+static void level_twice(struct try_river *try)
+{
+    give_level(try, LOWER, 1);
+    try->reaches[LOWER].outlet_depth_m = 2.3;
 }
 
 SPOIL(no_section, try->reaches[MIDDLE].section = NULL)
@@ -143,10 +169,15 @@ static const struct {
     {loop, "reach 'middle'", "part of a loop"},
     {own_loop, "reach 'lower'", "part of a loop"},
     {orphan_node, "node 5", "no reach begins or ends there"},
-    {orphan_gauge, "gauge_node[1]", "no reach leaves node 2"},
+    {orphan_gauge, "gauge_node[1]", "no reach begins or ends at node 2"},
     {dry_head, "reach 'beck'", "nothing flows into its head, node 2"},
     {fork, "reach 'lower'", "as reach 'middle' does"},
-    {gauge_in_mid_river, "reach 'beck'", "a gauge must stand at a head"},
+    {gauge_in_mid_river_alone, "reach 'beck'", "nothing flows into its head, node 2"},
+    {share_of_a_gauge_below, "reach 'beck': side_inflows[2]", "share_of_gauge 1 stands downstream"},
+    {level_outside, "reach 'lower'", "outlet_level 2, but there are 2 levels"},
+    {level_by_storage, "reach 'lower'", "outlet_level: a held level needs method"},
+    {level_in_mid_river, "reach 'middle'", "outlet_level: a level is held at the foot of a last reach only"},
+    {level_twice, "reach 'lower'", "outlet_depth_m 2.3: is held, but outlet_level 1 is given too"},
     {two_gauges_at_one_node, "gauge_node[1]", "has gauge 0 already"},
     {no_reach, "river", "no reach"},
     {no_id, "reaches[2]", "no id"},
