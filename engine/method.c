@@ -24,6 +24,7 @@ static const char *const reasons[METHOD_REASON_COUNT] = {
     [METHOD_NO_FLOOD] = "no flood is known to choose by",
     [METHOD_WITHIN_LIMIT] = "storage and celerity tell enough of the wave",
     [METHOD_BEYOND_LIMIT] = "the wave spreads too much for the storage form",
+    [METHOD_EARLY_LEVELS] = "levels would be reached too early by the storage form",
     [METHOD_HELD_LEVEL] = "a level is held at the foot",
     [METHOD_BACKWATER] = "a control below raises the level",
     [METHOD_TOO_STEEP] = "the full equations would be wanted, but so steep a reach needs too many cells",
@@ -100,6 +101,12 @@ static void number_of_part(const struct method_reach *reach, const struct method
     double width_m = (high.area_m2 - low.area_m2) / (high.depth_m - low.depth_m);
     double diffusivity =
         flow_curve_diffusivity_m2_s(middle_m3s, middle.area_m2, width_m, celerity, reach->slope_m_per_m);
+    double early_s = diffusivity / (celerity * celerity);
+    double early_number = early_s / fmax(METHOD_EARLY_LEAST_S, METHOD_EARLY_SHARE * reach->length_m / celerity);
+    if (early_number > choice->early_number) {
+        choice->early_number = early_number;
+        choice->early_s = early_s;
+    }
     double number = method_storage_number(reach->length_m, celerity, diffusivity, flood->rise_s);
     if (number <= choice->storage_number)
         return;
@@ -115,6 +122,7 @@ static void numbers_of_range(const struct method_reach *reach, const struct meth
     double from_m3s = fmax(flood->base_m3s, smallest_share * flood->peak_m3s);
     double part_m3s = (flood->peak_m3s - from_m3s) / RANGE_PARTS;
     choice->storage_number = 0.0;
+    choice->early_s = choice->early_number = 0.0;
     for (int part = 0; part < RANGE_PARTS; part++)
         number_of_part(reach, flood, from_m3s + part * part_m3s, from_m3s + (part + 1) * part_m3s, choice);
 }
@@ -146,13 +154,14 @@ static enum method_reason reason_for(const struct method_reach *reach, const str
         return METHOD_HELD_LEVEL;
     if (!(choice->flood.peak_m3s > 0.0))
         return METHOD_NO_FLOOD;
-    if (choice->storage_number < METHOD_STORAGE_LIMIT && !is_raised)
+    bool is_peak_right = choice->storage_number < METHOD_STORAGE_LIMIT;
+    if (is_peak_right && !(choice->early_number > 1.0) && !is_raised)
         return METHOD_WITHIN_LIMIT;
     if (choice->froude > METHOD_FROUDE_LIMIT)
         return METHOD_TOO_FAST;
     if (reach->length_m > 2.0 * choice->diffusion_length_m * METHOD_MOST_FULL_CELLS)
         return METHOD_TOO_STEEP;
-    return is_raised ? METHOD_BACKWATER : METHOD_BEYOND_LIMIT;
+    return is_raised ? METHOD_BACKWATER : is_peak_right ? METHOD_EARLY_LEVELS : METHOD_BEYOND_LIMIT;
 }
 
 void method_choose(const struct method_reach *reach, const struct method_flood *flood,
@@ -163,6 +172,8 @@ void method_choose(const struct method_reach *reach, const struct method_flood *
                                          .spread_number = NAN,
                                          .length_number = NAN,
                                          .at_discharge_m3s = NAN,
+                                         .early_s = NAN,
+                                         .early_number = NAN,
                                          .froude = NAN,
                                          .diffusion_length_m = NAN,
                                          .kinematic_number = NAN,
@@ -173,8 +184,8 @@ void method_choose(const struct method_reach *reach, const struct method_flood *
         numbers_at_peak(reach, flood, choice_out);
     }
     choice_out->reason = reason_for(reach, choice_out);
-    bool is_full = choice_out->reason == METHOD_BEYOND_LIMIT || choice_out->reason == METHOD_HELD_LEVEL ||
-                   choice_out->reason == METHOD_BACKWATER;
+    bool is_full = choice_out->reason == METHOD_BEYOND_LIMIT || choice_out->reason == METHOD_EARLY_LEVELS ||
+                   choice_out->reason == METHOD_HELD_LEVEL || choice_out->reason == METHOD_BACKWATER;
     choice_out->method = choice_out->advised = is_full ? NETWORK_DYNAMIC : NETWORK_MUSKINGUM_CUNGE;
 }
 

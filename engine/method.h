@@ -7,6 +7,8 @@
  * with the celerity c, the hydraulic diffusivity D, the reach length L and the rise time T = (Qpeak - Qbase) / max(dQ/dt). The
  * storage form's peak stays within 1 % of the full equations' while eps^1.5 lam < METHOD_STORAGE_LIMIT; beyond, it
  * comes out late and low. The number is the project's own, found on random reaches.
+ * On a rise water stands below the normal stage of its flow (Jones 1916): the storage form's levels, which are normal stages,
+ * are reached D/c^2 early. Where that is more than a minute and a hundredth of the travel time the full equations are chosen.
  * The published applicability limits of simplified waves are of the same kind and are given beside it: Ponce, Li and
  * Simons, Applicability of kinematic and diffusion models (1978).
  */
@@ -19,6 +21,8 @@
 #include "engine/network.h"
 
 #define METHOD_STORAGE_LIMIT 0.007
+#define METHOD_EARLY_LEAST_S 60.0   /* by so much a level may be early, or */
+#define METHOD_EARLY_SHARE 0.01     /* by so much of the travel time, if that is more */
 #define METHOD_KINEMATIC_LIMIT 85.0 /* rise S0 u / h: from here on a kinematic wave is within 5 % */
 #define METHOD_DIFFUSION_LIMIT 15.0 /* rise S0 sqrt(g / h): from here on a diffusion wave is */
 #define METHOD_RAISE_LIMIT 0.10     /* of normal depth: a level raised by more from below is backwater */
@@ -48,6 +52,7 @@ enum method_reason {
     METHOD_NO_FLOOD,     /* storage form, as no flood is known to choose by */
     METHOD_WITHIN_LIMIT, /* storage form */
     METHOD_BEYOND_LIMIT, /* full equations: the storage form's peak would come late and low */
+    METHOD_EARLY_LEVELS, /* full equations: the storage form's levels would come early */
     METHOD_HELD_LEVEL,   /* full equations: a level is held at the foot */
     METHOD_BACKWATER,    /* full equations: a control below raises the level */
     METHOD_TOO_STEEP,    /* full equations wanted; their cells would be too many: storage form */
@@ -65,6 +70,8 @@ struct method_choice {
     double spread_number;  /* eps there */
     double length_number;  /* lam there */
     double at_discharge_m3s;
+    double early_s;      /* D/c^2, where it is most against what is allowed: normal stages come so much early */
+    double early_number; /* against 1 */
     /* at the peak */
     double froude;
     double diffusion_length_m; /* D/c; cells of the full equations are at most twice as long */

@@ -9,6 +9,7 @@
 #include <math.h>
 #include <stdlib.h>
 
+#include "engine/method.h"
 #include "engine/network.h"
 #include "tests/independent/judged_flood.h"
 
@@ -19,6 +20,7 @@ struct reach_errors {
     double level_late_s[JUDGED_MARKS], flow_late_s[JUDGED_MARKS]; /* first passages; negative is early */
     double level_m;                                               /* of the highest level */
     size_t cell_count, replaced;
+    struct method_choice choice;
 };
 
 static inline double judged_at(const struct judged_flood *flood, double t_s)
@@ -45,7 +47,7 @@ static inline double efficiency_against(const struct judged_flood *flood, size_t
     return 1.0 - error / spread;
 }
 
-/* options: what is particular; time step, groups, members and the largest flow are set here. */
+/* By a method, or by the automatic choice, which knows the flood. */
 static inline struct reach_errors route_random_reach(const struct random_reach *reach,
                                                      const struct judged_flood *flood, enum network_method method,
                                                      double step_s)
@@ -67,7 +69,11 @@ static inline struct reach_errors route_random_reach(const struct random_reach *
                                         .reaches = &routed,
                                         .point_count = 1,
                                         .points = &foot};
-    const struct network_options options = {.time_step_s = step_s,
+    const struct method_flood gauge_flood = {.base_m3s = reach->flood.base_m3s,
+                                             .peak_m3s = reach->flood.base_m3s + reach->flood.rise_m3s,
+                                             .rise_s = reach->rise_s};
+    const struct network_options options = {.gauge_floods = &gauge_flood,
+                                            .time_step_s = step_s,
                                             .group_count = 1,
                                             .roughness_factors = &factor,
                                             .members_per_group = 1,
@@ -92,6 +98,7 @@ static inline struct reach_errors route_random_reach(const struct random_reach *
                                   .level_m = judged_peak_of(count, level, step_s).value - flood->level.value,
                                   .cell_count = network_cell_count(network, 0),
                                   .replaced = network_steps_replaced(network)};
+    network_reach_choice(network, 0, &errors.choice);
     for (size_t i = 0; i < JUDGED_MARKS; i++) {
         errors.level_late_s[i] =
             judged_passage_s(count, level, step_s, flood->level_mark_m[i]) - flood->level_passage_s[i];

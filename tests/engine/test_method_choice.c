@@ -75,11 +75,51 @@ static void the_time_step_divides_the_data_interval_and_is_a_fortieth_of_the_ris
     assert_true(method_time_step_s(&(struct method_flood){0.0, 0.0, 0.0}, 300.0) == 60.0);
 }
 
+/* --- the choice --------------------------------------------------------------------------------------------------- */
+
+/* A wide river: c = 5/3 V and D = Q / (2 B S0) nearly, so that normal stages come D/c^2 early, by hand. */
+static void levels_that_would_come_early_call_for_the_full_equations(void **state)
+{
+    (void)state;
+    static const struct section wide = {.shape = SECTION_WIDE, .bottom_m = 47.0, .roughness_n = 0.034};
+    static const struct {
+        double slope, length_m;
+        enum method_reason reason;
+    } rows[] = {
+        {0.004, 31e3, METHOD_WITHIN_LIMIT},   /* early by less than a minute */
+        {0.0011, 180e3, METHOD_WITHIN_LIMIT}, /* early by more, but by less than a hundredth of the travel time */
+        {0.0011, 31e3, METHOD_EARLY_LEVELS},
+        {0.0002, 180e3, METHOD_BEYOND_LIMIT},
+    };
+    const struct method_flood flood = {61.0, 420.0, 40000.0};
+    for (size_t i = 0; i < sizeof rows / sizeof *rows; i++) {
+        struct flow_curve curve;
+        double root_slope = sqrt(rows[i].slope), depth_m = 0.0;
+        assert_int_equal(flow_curve_init(&curve, &wide, 1e-3 / root_slope, 1e4 / root_slope), FW_OK);
+        const struct method_reach reach = {
+            .curve = &curve, .length_m = rows[i].length_m, .slope_m_per_m = rows[i].slope};
+        struct method_choice choice;
+        method_choose(&reach, &flood, &choice);
+        assert_int_equal(section_normal_depth_m(&wide, rows[i].slope, flood.peak_m3s, &depth_m), FW_OK);
+        double celerity = 5.0 / 3.0 * flood.peak_m3s / (wide.bottom_m * depth_m);
+        double early_s = flood.peak_m3s / (2.0 * wide.bottom_m * rows[i].slope * celerity * celerity);
+        print_message("S0 %g, %.0f km: %s; levels %.0f s early, %.2f of what is allowed, storage number %.5f\n",
+                      rows[i].slope, rows[i].length_m / 1000.0, method_reason_text(choice.reason), choice.early_s,
+                      choice.early_number, choice.storage_number);
+        assert_int_equal(choice.reason, rows[i].reason);
+        assert_true((choice.early_number > 1.0) == (rows[i].reason >= METHOD_BEYOND_LIMIT));
+        /* D has an inertia term, 1 - (4/9) Fr^2; the flow where it is most may lie below the peak */
+        assert_true(choice.early_s > 0.7 * early_s && choice.early_s < 1.01 * early_s);
+        flow_curve_clear(&curve);
+    }
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(the_published_numbers_are_met_by_the_worked_reaches),
         cmocka_unit_test(the_time_step_divides_the_data_interval_and_is_a_fortieth_of_the_rise_at_most),
+        cmocka_unit_test(levels_that_would_come_early_call_for_the_full_equations),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }
