@@ -176,6 +176,7 @@ static void void_water(const struct settings_point *known, struct point_picture 
         point->marks[mark].passage = unknown;
     point->level_now.low_m = point->level_now.likely_m = point->level_now.high_m = NAN;
     point->peak = (struct passage_peak){NAN, NAN, NAN, PASSAGE_NEVER};
+    point->deck = deck_picture_empty();
     point->chance_of_return = 1.0;
     point->measured_until_utc_s = 0;
     point->unmeasured_share = 0.0;
@@ -197,6 +198,8 @@ static enum fw_status assess_water(struct cycle *cycle, const struct picture *pi
     enum fw_status status = passage_peak_after(&curves, now_utc_s, &point->peak);
     for (size_t mark = 0; mark < known->mark_count && status == FW_OK; mark++)
         status = passage_of_mark(&curves, now_utc_s, known->marks[mark].depth_m, &point->marks[mark].passage);
+    if (status == FW_OK && known->has_deck)
+        status = cycle_assess_deck(cycle, index, now_step, now_utc_s, &point->deck);
     int64_t back_by_utc_s = now_utc_s + known->reopen_and_reclose_s;
     int64_t end_utc_s = cycle->start_utc_s + (int64_t)cycle->step_count * cycle->settings->time_step_s;
     if (status == FW_OK)

@@ -31,6 +31,8 @@ struct cycle {
     double *stage_m;       /* [point][step + 1][member], above the point's invert */
 
     /* scratch */
+    struct hazard_water *deck_water; /* [step + 1][member] of one point; of columns that are no forecast, dry */
+    double *deck_share;
     int64_t *sample_utc_s;
     double *sample_value;
     struct quality_sample *samples;
@@ -64,6 +66,9 @@ FW_MUST_CHECK enum fw_status cycle_route(struct cycle *cycle, int64_t now_utc_s,
                                          struct fw_error *error);
 /* 4 Assess: passages, horizon, advice; decisions that changed. */
 FW_MUST_CHECK enum fw_status cycle_assess(struct cycle *cycle, int64_t now_utc_s, struct delta *delta);
+/* Of 4: one point's deck. */
+FW_MUST_CHECK enum fw_status cycle_assess_deck(struct cycle *cycle, size_t point, size_t now_step, int64_t now_utc_s,
+                                               struct deck_picture *deck_out);
 /* 5 Record: messages, thinned forecast, ledger entry. */
 FW_MUST_CHECK enum fw_status cycle_record(struct cycle *cycle, int64_t now_utc_s, struct delta *delta);
 

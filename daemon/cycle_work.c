@@ -60,11 +60,14 @@ static enum fw_status allocate_work_space(struct cycle *cycle)
     cycle->inflow_m3s = calloc(settings->gauge_count * row + 1, sizeof(double));
     cycle->point_m3s = calloc(settings->point_count * row + 1, sizeof(double));
     cycle->stage_m = calloc(settings->point_count * row + 1, sizeof(double));
+    cycle->deck_water = calloc(row, sizeof *cycle->deck_water);
+    cycle->deck_share = calloc(row, sizeof(double));
     cycle->future_m3s = calloc(cycle->step_capacity + 1, sizeof(double));
     cycle->even_value = calloc(cycle->step_capacity + 1, sizeof(double));
     cycle->even_origin = calloc(cycle->step_capacity + 1, sizeof *cycle->even_origin);
     if (!cycle->forecast_columns || !cycle->has_inflow || !cycle->is_above || !cycle->inflow_m3s ||
-        !cycle->point_m3s || !cycle->stage_m || !cycle->future_m3s || !cycle->even_value || !cycle->even_origin)
+        !cycle->point_m3s || !cycle->stage_m || !cycle->deck_water || !cycle->deck_share || !cycle->future_m3s ||
+        !cycle->even_value || !cycle->even_origin)
         return FW_NO_MEMORY;
     size_t next = 0;
     for (size_t group = 0; group < groups; group++)
@@ -101,6 +104,8 @@ void cycle_destroy(struct cycle *cycle)
     free(cycle->inflow_m3s);
     free(cycle->point_m3s);
     free(cycle->stage_m);
+    free(cycle->deck_water);
+    free(cycle->deck_share);
     free(cycle->sample_utc_s);
     free(cycle->sample_value);
     free(cycle->samples);

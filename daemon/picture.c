@@ -40,6 +40,15 @@ static const struct passage never_passes = {.earliest_utc_s = PASSAGE_NEVER,
                                             .below_again_earliest_utc_s = PASSAGE_NEVER,
                                             .below_again_latest_utc_s = PASSAGE_NEVER};
 
+struct deck_picture deck_picture_empty(void)
+{
+    static const struct hazard_water none = {NAN, NAN, NAN};
+    struct deck_picture deck = {.low = none, .likely = none, .high = none, .likely_utc_s = PASSAGE_NEVER};
+    for (size_t whom = 0; whom < HAZARD_WHOM_COUNT; whom++)
+        deck.over[whom] = never_passes;
+    return deck;
+}
+
 static enum fw_status point_picture_init(struct point_picture *point, size_t mark_count)
 {
     *point = (struct point_picture){
@@ -49,6 +58,7 @@ static enum fw_status point_picture_init(struct point_picture *point, size_t mar
         .water.depth_cm = NAN,
         .peak = {NAN, NAN, NAN, PASSAGE_NEVER},
         .level_now = {NAN, NAN, NAN},
+        .deck = deck_picture_empty(),
         .road.state = ROAD_OPEN,
     };
     point->marks = calloc(mark_count + 1, sizeof *point->marks);

@@ -57,6 +57,14 @@ struct water_fact {
     char by[FACT_ROLE_SIZE];
 };
 
+struct deck_picture { /* estimates of the water on the deck, of a point whose settings have one; NAN: not known */
+    /* from now on the peak of depth times speed: of the lowest, middle and highest of the runs' peaks */
+    struct hazard_water low, likely, high;
+    int64_t likely_utc_s;                      /* PASSAGE_NEVER: the middle run stays dry */
+    struct passage over[HAZARD_WHOM_COUNT];    /* from when on a published limit is passed, */
+    enum hazard_measure by[HAZARD_WHOM_COUNT]; /* and by what, at the earliest */
+};
+
 struct point_picture {
     struct advice advice;
     struct mark_picture *marks; /* as many as the point has */
@@ -64,6 +72,7 @@ struct point_picture {
     struct {
         double low_m, likely_m, high_m;
     } level_now;
+    struct deck_picture deck;
     bool is_unknown; /* a gauge above it has given no reading that counts: there is no forecast, the rest is void */
     int64_t measured_until_utc_s; /* PASSAGE_NEVER: beyond the horizon */
     double unmeasured_share;      /* of the flow now, that no gauge on the path measures */
@@ -120,6 +129,7 @@ FW_MUST_CHECK enum fw_status picture_create(const struct settings *settings, str
 FW_MUST_CHECK enum fw_status picture_copy(const struct settings *settings, const struct picture *picture,
                                           struct picture **copy_out);
 void picture_destroy(struct picture *picture); /* NULL is fine */
+struct deck_picture deck_picture_empty(void);  /* nothing is known */
 
 /*
  * Puts a reading in its place. *was_new_out: false when the same source had the same value for that time.

@@ -7,6 +7,8 @@
 #include <stdio.h>
 #include <string.h>
 
+#include "daemon/deck.h"
+
 static void add_string(struct text *json, const char *bytes)
 {
     text_add_bytes(json, "\"", 1);
@@ -150,6 +152,47 @@ static void add_people(struct text *json, const struct point_picture *point)
     add_text(json, "accepted_by", point->accepted_by);
 }
 
+static void add_deck_run(struct text *json, const char *key, const struct hazard_water *water)
+{
+    add_key(json, key);
+    text_add(json, "{");
+    add_number(json, "depth_m", 3, water->depth_m);
+    add_number(json, "speed_m_s", 3, water->speed_m_s);
+    add_number(json, "depth_x_speed_m2_s", 3, water->product_m2_s);
+    text_add(json, "}");
+}
+
+/* Only limits that some run passes: what is not passed says nothing of the road. */
+static void add_deck(struct text *json, const struct deck_picture *deck)
+{
+    text_add(json, "{");
+    add_text(json, "note", DECK_CAUTION);
+    add_deck_run(json, "low", &deck->low);
+    add_deck_run(json, "likely", &deck->likely);
+    add_deck_run(json, "high", &deck->high);
+    add_time(json, "at", deck->likely_utc_s);
+    add_key(json, "limits_passed");
+    text_add(json, "[");
+    for (size_t whom = 0; whom < HAZARD_WHOM_COUNT; whom++) {
+        const struct hazard_limit *limit = hazard_limit_for((enum hazard_whom)whom);
+        const struct passage *passage = &deck->over[whom];
+        if (!(passage->chance > 0.0))
+            continue;
+        add_open(json, "{");
+        add_text(json, "for", deck_whom_name((enum hazard_whom)whom));
+        add_bool(json, "draft", limit->is_draft);
+        add_bool(json, "stationary", limit->is_draft);
+        add_number(json, "limit", 2, deck_measure_limit(limit, deck->by[whom]));
+        add_text(json, "unit", deck_measure_unit(deck->by[whom]));
+        add_number(json, "chance", 4, passage->chance);
+        add_time(json, "earliest", passage->earliest_utc_s);
+        add_time(json, "likely", passage->likely_utc_s);
+        add_time(json, "latest", passage->latest_utc_s);
+        text_add(json, "}");
+    }
+    text_add(json, "]}");
+}
+
 static void add_point(struct text *json, const struct settings_point *known, const struct point_picture *point)
 {
     add_open(json, "{");
@@ -178,6 +221,11 @@ static void add_point(struct text *json, const struct settings_point *known, con
     add_number(json, "high", 3, point->peak.highest_m);
     add_time(json, "at", point->peak.likely_utc_s);
     text_add(json, "}");
+    add_key(json, "deck_water");
+    if (known->has_deck)
+        add_deck(json, &point->deck);
+    else
+        text_add(json, "null");
     add_bool(json, "peak_beyond_highest_gauging", point->is_peak_beyond_gauging);
     add_number(json, "chance_of_return", 4, point->chance_of_return);
     add_whole(json, "closing_mark", (int64_t)known->closing_mark);

@@ -6,6 +6,7 @@
 #include <stdio.h>
 #include <stdlib.h>
 
+#include "daemon/command/check_deck.h"
 #include "daemon/command/check_facts.h"
 #include "daemon/command/check_json.h"
 #include "daemon/command/options.h"
@@ -141,6 +142,7 @@ static bool print_point(const struct check_facts *facts, size_t index, bool is_a
     if (!point->has_crew)
         printf("    watched only: no crew is stated, no one is sent\n");
     print_triggers(settings, point);
+    check_deck_print(facts, index, is_above);
     return is_protected;
 }
 

@@ -6,6 +6,7 @@
 #include <stdio.h>
 #include <stdlib.h>
 
+#include "daemon/command/check_deck.h"
 #include "daemon/tell/sentence.h"
 
 /* null for what is not known */
@@ -61,6 +62,36 @@ static void add_lead(cJSON *array, const char *gauge_id, const struct check_lead
     add(object, "lead_fastest_rise_s", lead->fastest_rise_s);
 }
 
+static void add_deck(cJSON *object, const struct check_facts *facts, size_t index, bool is_above[])
+{
+    const struct settings_point *point = &facts->settings->points[index];
+    struct check_deck found;
+    if (!point->has_deck) {
+        cJSON_AddNullToObject(object, "deck");
+        return;
+    }
+    check_deck_find(facts, index, is_above, &found);
+    cJSON *deck = cJSON_AddObjectToObject(object, "deck");
+    cJSON_AddStringToObject(deck, "kind", point->deck.kind == HAZARD_DECK_IS_WEIR ? "weir" : "section");
+    cJSON_AddStringToObject(deck, "note", DECK_CAUTION);
+    add(deck, "level_m", point->deck.level_m);
+    add(deck, "awash_m3s", found.awash_m3s);
+    cJSON *limits = cJSON_AddArrayToObject(deck, "limits_passed");
+    for (size_t i = 0; i < found.limit_count; i++) {
+        const struct check_deck_limit *passed = &found.limits[i];
+        const struct hazard_limit *limit = hazard_limit_for(passed->whom);
+        cJSON *item = add_object(limits);
+        cJSON_AddStringToObject(item, "for", deck_whom_name(passed->whom));
+        cJSON_AddBoolToObject(item, "draft", limit->is_draft);
+        cJSON_AddBoolToObject(item, "stationary", limit->is_draft);
+        add(item, "limit", deck_measure_limit(limit, passed->by));
+        cJSON_AddStringToObject(item, "unit", deck_measure_unit(passed->by));
+        add(item, "stage_m", passed->stage_m);
+        add(item, "discharge_m3s", passed->discharge_m3s);
+        add(item, "after_awash_in_fastest_rise_s", passed->after_awash_s);
+    }
+}
+
 static void add_point(cJSON *array, const struct check_facts *facts, size_t index, bool is_above[])
 {
     const struct settings *settings = facts->settings;
@@ -81,6 +112,7 @@ static void add_point(cJSON *array, const struct check_facts *facts, size_t inde
         check_facts_lead(facts, gauge, index, &lead);
         add_lead(leads, settings->gauges[gauge].id, &lead);
     }
+    add_deck(object, facts, index, is_above);
 }
 
 enum fw_status check_json_print(const struct check_facts *facts, struct fw_error *error)

@@ -10,6 +10,7 @@
 #include "daemon/clock.h"
 #include "daemon/command/known_at.h"
 #include "daemon/command/options.h"
+#include "daemon/deck.h"
 #include "daemon/store/store.h"
 
 static const char *text_of(const cJSON *object, const char *key)
@@ -82,6 +83,54 @@ static void print_point(const struct when_zone *zone, const cJSON *point)
            time_of(road, "at") == PASSAGE_NEVER ? "" : clock_of(zone, road, "at", times[5]));
 }
 
+static void print_limit(const struct when_zone *zone, const cJSON *limit)
+{
+    char times[2][WHEN_TEXT_SIZE];
+    printf("    over the %s limit of %g %s for %s%s: ", is_true(limit, "draft") ? "draft" : "guideline",
+           number_of(limit, "limit"), text_of(limit, "unit"), text_of(limit, "for"),
+           is_true(limit, "stationary") ? ", stationary" : "");
+    clock_of(zone, limit, "earliest", times[0]);
+    if (time_of(limit, "likely") == PASSAGE_NEVER)
+        printf("in some runs, earliest %s\n", times[0]);
+    else
+        printf("likely from %s, earliest %s\n", clock_of(zone, limit, "likely", times[1]), times[0]);
+}
+
+/* Only where some run wets the deck; true then. */
+static bool print_deck(const struct when_zone *zone, const cJSON *point)
+{
+    char text[WHEN_TEXT_SIZE];
+    const cJSON *deck = cJSON_GetObjectItemCaseSensitive(point, "deck_water");
+    const cJSON *low = cJSON_GetObjectItemCaseSensitive(deck, "low");
+    const cJSON *likely = cJSON_GetObjectItemCaseSensitive(deck, "likely");
+    const cJSON *high = cJSON_GetObjectItemCaseSensitive(deck, "high");
+    const cJSON *limits = cJSON_GetObjectItemCaseSensitive(deck, "limits_passed");
+    bool is_likely = number_of(likely, "depth_m") > 0.0;
+    const cJSON *shown = is_likely ? likely : high;
+    if (!(number_of(shown, "depth_m") > 0.0))
+        return false;
+    printf("%s, water on the deck, %s %.2f m deep, %.2f m/s, %.2f m2/s", text_of(point, "name"),
+           is_likely ? "likely peak" : "in the highest run", deck_rounded_up(number_of(shown, "depth_m")),
+           deck_rounded_up(number_of(shown, "speed_m_s")), deck_rounded_up(number_of(shown, "depth_x_speed_m2_s")));
+    if (is_likely)
+        printf(" (%.2f to %.2f) at %s", deck_rounded_up(number_of(low, "depth_x_speed_m2_s")),
+               deck_rounded_up(number_of(high, "depth_x_speed_m2_s")), clock_of(zone, deck, "at", text));
+    printf("\n");
+    for (const cJSON *limit = limits != NULL ? limits->child : NULL; limit != NULL; limit = limit->next)
+        print_limit(zone, limit);
+    return true;
+}
+
+static void print_decks(const struct when_zone *zone, const cJSON *const rows[], int count)
+{
+    bool has_any = false;
+    printf("\n");
+    for (int index = 0; index < count; index++)
+        has_any |= print_deck(zone, rows[index]);
+    if (has_any)
+        printf("%s\n\n", DECK_CAUTION);
+}
+
 static int compare_act_by(const void *left, const void *right)
 {
     int64_t a = time_of(*(const cJSON *const *)left, "act_by");
@@ -123,8 +172,9 @@ static enum fw_status print_picture(const struct settings *settings, const cJSON
     qsort(rows, (size_t)count, sizeof *rows, compare_act_by);
     for (int index = 0; index < count; index++)
         print_point(&settings->zone, rows[index]);
+    print_decks(&settings->zone, rows, count);
     free(rows);
-    printf("\nAfter the time under MEASURED the inflow is assumed: %s.\n", text_of(picture, "assumed"));
+    printf("After the time under MEASURED the inflow is assumed: %s.\n", text_of(picture, "assumed"));
     command_print_caution();
     printf("settings %.8s  record %.8s\n", text_of(picture, "settings"), link);
     return FW_OK;

@@ -18,6 +18,7 @@
 #include "daemon/when.h"
 #include "engine/advice.h"
 #include "engine/assumed_inflow.h"
+#include "engine/hazard.h"
 #include "engine/network.h"
 #include "engine/quality.h"
 #include "engine/rating.h"
@@ -82,7 +83,9 @@ struct settings_point {
     struct settings_mark *marks; /* rising depths */
     size_t closing_mark;         /* index; lowest trafficked unless signed otherwise */
     size_t deck_mark;            /* index: the first mark named as the deck ("deck": true), else the closing mark */
-    bool has_crew;               /* false: the point is watched, nobody closes it */
+    bool has_deck;               /* how the water moves over the deck is stated */
+    struct hazard_deck deck;
+    bool has_crew; /* false: the point is watched, nobody closes it */
     struct advice_policy policy;
     double reopen_below_m;        /* below the deck mark by this much */
     int64_t reopen_and_reclose_s; /* how long reopening and closing again takes */

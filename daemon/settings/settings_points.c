@@ -344,8 +344,11 @@ static bool build_point(struct settings_work *work, struct settings_point *point
     point->invert_m = settings_work_number(object, "points[].invert_m");
     place(work, point, object);
     build_policy(work, point, object);
-    return build_marks(work, point, object) && build_triggers(work, point, object) &&
-           build_stage_rating(work, point, object) && build_others(work, point, object);
+    if (!build_marks(work, point, object))
+        return false;
+    settings_build_deck(work, point, object);
+    return build_triggers(work, point, object) && build_stage_rating(work, point, object) &&
+           build_others(work, point, object);
 }
 
 static bool give_points_to_river(struct settings_work *work)

@@ -5,6 +5,7 @@
 #include <stdio.h>
 #include <string.h>
 
+#include "daemon/tell/bulletin_deck.h"
 #include "daemon/tell/bulletin_page.h"
 #include "daemon/tell/bulletin_table.h"
 #include "daemon/tell/sentence_view.h"
@@ -17,8 +18,7 @@ enum {
     ROLE_MOST = 24,
     ROLE_LEAST = 14,
     MARK_MOST = 24,
-    OWN_UNSEEN_MOST = 150, /* bytes of the point's own list, at full detail */
-    NUMBER_SIZE = 40
+    OWN_UNSEEN_MOST = 150 /* bytes of the point's own list, at full detail */
 };
 
 /*
@@ -72,29 +72,6 @@ static void say(struct bulletin *bulletin, enum sentence_id id, const struct sen
     struct text paragraph = {0};
     fill(&paragraph, bulletin, id, fields);
     end_paragraph(bulletin, &paragraph);
-}
-
-static const char *metres(double value, char text[NUMBER_SIZE])
-{
-    if (isfinite(value) && fabs(value) < 1e6)
-        snprintf(text, NUMBER_SIZE, "%.2f", value);
-    else
-        snprintf(text, NUMBER_SIZE, "-");
-    return text;
-}
-
-/* "0.12 m below deck" */
-static const char *to_deck(const struct sentence_view *view, double level_m, char text[SENTENCE_WORDS_SIZE])
-{
-    char difference[NUMBER_SIZE];
-    double over_m = level_m - sentence_deck_m(view, view->point);
-    if (!isfinite(over_m)) {
-        snprintf(text, SENTENCE_WORDS_SIZE, "-");
-        return text;
-    }
-    enum sentence_id id = over_m >= 0.005 ? WORD_OVER_DECK : over_m <= -0.005 ? WORD_BELOW_DECK : WORD_AT_DECK;
-    return sentence_words(view, id, (struct sentence_field[]){{"difference", metres(fabs(over_m), difference)}, {0}},
-                          text, SENTENCE_WORDS_SIZE);
 }
 
 /* --- the head --- */
@@ -177,13 +154,13 @@ static void describe_trigger(struct bulletin *bulletin, struct text *out)
     const struct settings_gauge *gauge = &view->settings->gauges[trigger->gauge];
     char name[SENTENCE_WORDS_SIZE];
     char by[SENTENCE_WORDS_SIZE];
-    char value[NUMBER_SIZE];
+    char value[SENTENCE_NUMBER_SIZE];
     char since[SENTENCE_MOMENT_SIZE];
     sentence_name(gauge->name, ROLE_MOST, name, sizeof name);
     sentence_name(trigger->signed_by, ROLE_MOST, by, sizeof by);
     fill(out, bulletin, DO_TRIGGER,
          (struct sentence_field[]){{"gauge", name},
-                                   {"value", metres(trigger->value, value)},
+                                   {"value", sentence_metres(trigger->value, value)},
                                    {"unit", gauge->measures == SETTINGS_STAGE ? "m" : "m3/s"},
                                    {"by", by},
                                    {"since", sentence_moment(view, view->state->trigger_since_utc_s, since)},
@@ -262,11 +239,11 @@ static void describe_gauge(struct bulletin *bulletin, struct text *out, size_t i
     const struct settings_gauge *known = &view->settings->gauges[index];
     const struct gauge_picture *gauge = &view->picture->gauges[index];
     char name[SENTENCE_WORDS_SIZE];
-    char value[NUMBER_SIZE];
-    char rate[NUMBER_SIZE];
-    char gauged[NUMBER_SIZE];
-    char held[NUMBER_SIZE];
-    char age[NUMBER_SIZE];
+    char value[SENTENCE_NUMBER_SIZE];
+    char rate[SENTENCE_NUMBER_SIZE];
+    char gauged[SENTENCE_NUMBER_SIZE];
+    char held[SENTENCE_NUMBER_SIZE];
+    char age[SENTENCE_NUMBER_SIZE];
     char limit[24];
     char movement[SENTENCE_WORDS_SIZE];
     char newest[SENTENCE_MOMENT_SIZE];
@@ -280,17 +257,17 @@ static void describe_gauge(struct bulletin *bulletin, struct text *out, size_t i
     sentence_age(view, gauge->silent_s, age, sizeof age);
     enum sentence_id word = !(fabs(rate_per_h) >= 0.005) ? WORD_STEADY : rate_per_h > 0 ? WORD_RISING : WORD_FALLING;
     sentence_words(view, word,
-                   (struct sentence_field[]){{"rate", metres(fabs(rate_per_h), rate)}, {"unit", unit}, {0}}, movement,
-                   sizeof movement);
+                   (struct sentence_field[]){{"rate", sentence_metres(fabs(rate_per_h), rate)}, {"unit", unit}, {0}},
+                   movement, sizeof movement);
     const struct sentence_field fields[] = {
         {"gauge", name},
-        {"value", metres(gauge->newest_value, value)},
+        {"value", sentence_metres(gauge->newest_value, value)},
         {"unit", unit},
         {"movement", movement},
         {"newest", sentence_moment(view, gauge->newest_utc_s, newest)},
         {"age", age},
-        {"gauged", metres(known->has_rating ? known->rating.highest_gauged_m : (double)NAN, gauged)},
-        {"held", metres(gauge->held_value, held)},
+        {"gauged", sentence_metres(known->has_rating ? known->rating.highest_gauged_m : (double)NAN, gauged)},
+        {"held", sentence_metres(gauge->held_value, held)},
         {"held_at", sentence_moment(view, gauge->held_utc_s, held_at)},
         {"blind", blind},
         {"limit", limit},
@@ -347,7 +324,7 @@ static void add_levels(struct bulletin *bulletin)
 {
     const struct sentence_view *view = bulletin->view;
     const struct point_picture *state = view->state;
-    char numbers[6][NUMBER_SIZE];
+    char numbers[6][SENTENCE_NUMBER_SIZE];
     char words[2][SENTENCE_WORDS_SIZE];
     char place[SENTENCE_WORDS_SIZE];
     char at[SENTENCE_MOMENT_SIZE];
@@ -355,17 +332,17 @@ static void add_levels(struct bulletin *bulletin)
     sentence_name(view->known->name, place_most(bulletin), place, sizeof place);
     fill(&paragraph, bulletin, RESTS_NOW,
          (struct sentence_field[]){{"place", place},
-                                   {"level", metres(state->level_now.likely_m, numbers[0])},
-                                   {"low", metres(state->level_now.low_m, numbers[1])},
-                                   {"high", metres(state->level_now.high_m, numbers[2])},
-                                   {"to_deck", to_deck(view, state->level_now.likely_m, words[0])},
+                                   {"level", sentence_metres(state->level_now.likely_m, numbers[0])},
+                                   {"low", sentence_metres(state->level_now.low_m, numbers[1])},
+                                   {"high", sentence_metres(state->level_now.high_m, numbers[2])},
+                                   {"to_deck", sentence_to_deck(view, state->level_now.likely_m, words[0])},
                                    {0}});
     fill(&paragraph, bulletin, RESTS_PEAK,
-         (struct sentence_field[]){{"peak", metres(state->peak.likely_m, numbers[3])},
-                                   {"low", metres(state->peak.lowest_m, numbers[4])},
-                                   {"high", metres(state->peak.highest_m, numbers[5])},
+         (struct sentence_field[]){{"peak", sentence_metres(state->peak.likely_m, numbers[3])},
+                                   {"low", sentence_metres(state->peak.lowest_m, numbers[4])},
+                                   {"high", sentence_metres(state->peak.highest_m, numbers[5])},
                                    {"at", sentence_moment(view, state->peak.likely_utc_s, at)},
-                                   {"to_deck", to_deck(view, state->peak.likely_m, words[1])},
+                                   {"to_deck", sentence_to_deck(view, state->peak.likely_m, words[1])},
                                    {0}});
     bool is_said = bulletin->detail == DETAIL_LEAST && sentence_any_above(view, is_beyond_gauging);
     if (state->is_peak_beyond_gauging && !is_said)
@@ -391,7 +368,7 @@ static void add_closing_mark(struct bulletin *bulletin)
         return;
     const struct settings_mark *known = &view->known->marks[view->known->closing_mark];
     char name[SENTENCE_WORDS_SIZE];
-    char depth[NUMBER_SIZE];
+    char depth[SENTENCE_NUMBER_SIZE];
     char runs[SENTENCE_WORDS_SIZE];
     char times[3][SENTENCE_WORDS_SIZE];
     sentence_name(known->name, MARK_MOST, name, sizeof name);
@@ -401,7 +378,7 @@ static void add_closing_mark(struct bulletin *bulletin)
     sentence_words(view, WORD_CLOSING, (struct sentence_field[]){{"mark", name}, {0}}, mark, sizeof mark);
     say(bulletin, passage->earliest_utc_s == PASSAGE_NEVER ? RESTS_MARK_NEVER : RESTS_MARK,
         (struct sentence_field[]){{"mark", mark},
-                                  {"depth", metres(known->depth_m, depth)},
+                                  {"depth", sentence_metres(known->depth_m, depth)},
                                   {"earliest", passage_moment(view, passage->earliest_utc_s, times[0])},
                                   {"likely", passage_moment(view, passage->likely_utc_s, times[1])},
                                   {"latest", passage_moment(view, passage->latest_utc_s, times[2])},
@@ -415,16 +392,30 @@ static int decimals_of(double factor)
     return fabs(factor * 10.0 - round(factor * 10.0)) < 1e-6 ? 1 : 2;
 }
 
+/* All of the factors, which rise; at the least detail of many the ends alone. */
+static void list_roughness(const struct bulletin *bulletin, struct text *out)
+{
+    const struct settings *settings = bulletin->view->settings;
+    size_t count = settings->roughness_factor_count;
+    bool is_cut = bulletin->detail == DETAIL_LEAST && count > 3;
+    for (size_t i = 0; i < count; i++) {
+        if (is_cut && i > 0 && i + 1 < count)
+            continue;
+        text_add(out, "%s%.*f",
+                 i == 0   ? ""
+                 : is_cut ? " .. "
+                          : " ",
+                 decimals_of(settings->roughness_factors[i]), settings->roughness_factors[i]);
+    }
+}
+
 static void add_measured(struct bulletin *bulletin)
 {
     const struct sentence_view *view = bulletin->view;
-    const struct settings *settings = view->settings;
     char until[SENTENCE_MOMENT_SIZE];
     char share[24];
     struct text roughness = {0};
-    for (size_t i = 0; i < settings->roughness_factor_count; i++)
-        text_add(&roughness, "%s%.*f", i > 0 ? " " : "", decimals_of(settings->roughness_factors[i]),
-                 settings->roughness_factors[i]);
+    list_roughness(bulletin, &roughness);
     snprintf(share, sizeof share, "%.0f", 100.0 * view->state->unmeasured_share);
     char replaced[24];
     snprintf(replaced, sizeof replaced, "%.1f", fmax(0.1, 100.0 * view->picture->replaced_share));
@@ -436,7 +427,10 @@ static void add_measured(struct bulletin *bulletin)
         {0}};
     struct text paragraph = {0};
     bool never_parts = view->state->measured_until_utc_s == PASSAGE_NEVER;
-    fill(&paragraph, bulletin, never_parts ? RESTS_ALL_MEASURED : RESTS_MEASURED, fields);
+    enum sentence_id id = never_parts                        ? RESTS_ALL_MEASURED
+                          : bulletin->detail == DETAIL_LEAST ? RESTS_MEASURED_BRIEF
+                                                             : RESTS_MEASURED;
+    fill(&paragraph, bulletin, id, fields);
     if (view->state->unmeasured_share >= 0.005)
         fill(&paragraph, bulletin, RESTS_SHARE, fields);
     if (view->picture->replaced_share > 0.0)
@@ -445,30 +439,20 @@ static void add_measured(struct bulletin *bulletin)
     end_paragraph(bulletin, &paragraph);
 }
 
-/* Straight lines between rows, both of them rising; the ends hold beyond the rows. */
-static double between_rows(size_t count, const double *from, const double *to, double value)
-{
-    for (size_t i = 1; i < count; i++)
-        if (value <= from[i] && from[i] > from[i - 1])
-            return to[i - 1] + (to[i] - to[i - 1]) * fmax(0.0, (value - from[i - 1]) / (from[i] - from[i - 1]));
-    return count > 0 ? to[count - 1] : (double)NAN;
-}
-
 static void add_stage_rating(struct bulletin *bulletin)
 {
-    const struct sentence_view *view = bulletin->view;
-    const struct settings_point *known = view->known;
-    if (known->stage_row_count == 0)
-        return;
-    char blocked[NUMBER_SIZE];
-    char words[SENTENCE_WORDS_SIZE];
-    double flow_m3s = between_rows(known->stage_row_count, known->stage_row_stage_m, known->stage_row_discharge_m3s,
-                                   view->state->peak.likely_m);
-    double blocked_m = between_rows(known->blocked_row_count, known->blocked_row_discharge_m3s,
-                                    known->blocked_row_stage_m, flow_m3s);
-    say(bulletin, known->blocked_row_count > 0 ? RESTS_PART_BLOCKED : RESTS_STAGE_RATING,
-        (struct sentence_field[]){
-            {"blocked", metres(blocked_m, blocked)}, {"to_deck", to_deck(view, blocked_m, words)}, {0}});
+    struct text paragraph = {0};
+    bulletin_deck_add_rating(bulletin->view, bulletin->detail == DETAIL_LEAST, &paragraph);
+    if (paragraph.length > 0 || paragraph.is_short)
+        end_paragraph(bulletin, &paragraph);
+}
+
+static void add_deck(struct bulletin *bulletin)
+{
+    struct text paragraph = {0};
+    bulletin_deck_add(bulletin->view, bulletin->detail < DETAIL_RUN_ON, &paragraph);
+    if (paragraph.length > 0 || paragraph.is_short)
+        end_paragraph(bulletin, &paragraph);
 }
 
 static void add_rests(struct bulletin *bulletin)
@@ -482,6 +466,7 @@ static void add_rests(struct bulletin *bulletin)
     }
     add_levels(bulletin);
     add_closing_mark(bulletin);
+    add_deck(bulletin);
     add_measured(bulletin);
     add_stage_rating(bulletin);
 }

@@ -163,6 +163,9 @@ static const struct sentence_catalogue english = {
             [RESTS_MEASURED] =
                 "Measured until {until}; after that assumed: last rise carried forward / held / recession, each at "
                 "roughness {roughness}; uncalibrated.",
+            [RESTS_MEASURED_BRIEF] =
+                "Measured until {until}; then assumed (rise carried on / held / recession; roughness {roughness}; "
+                "uncalibrated).",
             [RESTS_ALL_MEASURED] = "Measured beyond the hours looked ahead; roughness {roughness}, uncalibrated.",
             [RESTS_SHARE] = " No gauge measures {share} % of the flow there.",
             [RESTS_REPLACED] =
@@ -172,6 +175,21 @@ static const struct sentence_catalogue english = {
             [RESTS_PART_BLOCKED] =
                 "Level there is from a stage rating of its own; part-blocked by debris the peak would be "
                 "{blocked} m, {to_deck}.",
+            [DECK_LIKELY] =
+                "On the deck, estimated, likely peak {depth} m deep, {speed} m/s, {product} m2/s ({low} to {high})",
+            [DECK_LIKELY_BRIEF] = "On the deck, estimated, likely {depth} m, {speed} m/s, {product} m2/s",
+            [DECK_HIGHEST_BRIEF] = "On the deck, estimated, at most {depth} m, {speed} m/s, {product} m2/s",
+            [DECK_HIGHEST] = "On the deck, estimated, in the highest run {depth} m deep, {speed} m/s, {product} m2/s",
+            [DECK_OVER] = ", from {likely} (earliest {earliest}) over the {limit} of {number} {unit} for {whom}",
+            [DECK_OVER_PERHAPS] = ", in some runs from {earliest} over the {limit} of {number} {unit} for {whom}",
+            [DECK_DRAFT_LIMIT] = "draft limit",
+            [DECK_GUIDE_LIMIT] = "guideline limit",
+            [DECK_SMALL_CAR] = "a small stationary car",
+            [DECK_LARGE_CAR] = "a large stationary car",
+            [DECK_ANY_VEHICLE] = "any vehicle, child or old person",
+            [DECK_ANY_PERSON] = "any vehicle or person",
+            [DECK_CAUTION_WORDS] = ". No limit is a depth to drive in.",
+            [RESTS_PART_BLOCKED_BRIEF] = "Own stage rating; part-blocked, peak {blocked} m, {to_deck}.",
             [CHANGES_TITLE] = "(4) WHAT WOULD CHANGE THIS: ",
             [CHANGES_READING] = "a reading from {gauge}, also by hand",
             [CHANGES_NO_READING] = "no reading from {gauge} by {by}",

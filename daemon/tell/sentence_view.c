@@ -242,6 +242,29 @@ bool sentence_is_measured(const struct sentence_view *view)
     return closing->earliest_utc_s <= until_utc_s;
 }
 
+const char *sentence_metres(double value, char text[SENTENCE_NUMBER_SIZE])
+{
+    if (isfinite(value) && fabs(value) < 1e6)
+        snprintf(text, SENTENCE_NUMBER_SIZE, "%.2f", value);
+    else
+        snprintf(text, SENTENCE_NUMBER_SIZE, "-");
+    return text;
+}
+
+const char *sentence_to_deck(const struct sentence_view *view, double level_m, char text[SENTENCE_WORDS_SIZE])
+{
+    char difference[SENTENCE_NUMBER_SIZE];
+    double over_m = level_m - sentence_deck_m(view, view->point);
+    if (!isfinite(over_m)) {
+        snprintf(text, SENTENCE_WORDS_SIZE, "-");
+        return text;
+    }
+    enum sentence_id id = over_m >= 0.005 ? WORD_OVER_DECK : over_m <= -0.005 ? WORD_BELOW_DECK : WORD_AT_DECK;
+    return sentence_words(view, id,
+                          (struct sentence_field[]){{"difference", sentence_metres(fabs(over_m), difference)}, {0}},
+                          text, SENTENCE_WORDS_SIZE);
+}
+
 /* --- names --- */
 
 /* One good character at *from, which is moved past it; 0 for what is no character that can be printed. */

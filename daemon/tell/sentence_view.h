@@ -9,7 +9,7 @@
 #include "daemon/delta.h"
 #include "daemon/tell/sentence_catalogue.h"
 
-enum { SENTENCE_MOMENT_SIZE = 40, SENTENCE_WORDS_SIZE = 160, SENTENCE_DISTRICT_MOST = 24 };
+enum { SENTENCE_MOMENT_SIZE = 40, SENTENCE_NUMBER_SIZE = 40, SENTENCE_WORDS_SIZE = 160, SENTENCE_DISTRICT_MOST = 24 };
 
 struct sentence_view {
     const struct sentence_catalogue *words;
@@ -46,6 +46,11 @@ const char *sentence_age(const struct sentence_view *view, int64_t seconds, char
 /* "3 of 9 runs" in words and numbers */
 const char *sentence_runs(const struct sentence_view *view, double chance, char text[SENTENCE_WORDS_SIZE]);
 size_t sentence_reached(const struct sentence_view *view, double chance);
+
+/* "1.95"; "-" for what is not known. Of anything, not of metres alone. */
+const char *sentence_metres(double value, char text[SENTENCE_NUMBER_SIZE]);
+/* "0.12 m below deck" */
+const char *sentence_to_deck(const struct sentence_view *view, double level_m, char text[SENTENCE_WORDS_SIZE]);
 
 /* NULL: the point has no marks. */
 const struct passage *sentence_closing(const struct sentence_view *view);

@@ -958,6 +958,35 @@ static void with_blocked_rating(struct night *night)
     night->points[FORD].blocked_row_stage_m = blocked_m;
 }
 
+/* Likely 0.40 m deep; a small car's limit is passed by most runs, the last by a few. */
+static void with_water_on_deck(struct night *night)
+{
+    struct deck_picture *deck = &night->point_pictures[FORD].deck;
+    night->points[FORD].has_deck = true;
+    deck->low = (struct hazard_water){0.0, 0.0, 0.0};
+    deck->likely = (struct hazard_water){0.4, 1.7219, 0.68876};
+    deck->high = (struct hazard_water){0.66, 2.07, 1.3662};
+    deck->likely_utc_s = at(24, 53);
+    for (size_t whom = 0; whom < HAZARD_WHOM_COUNT; whom++)
+        deck->over[whom] = night->mark_pictures[CAUSEWAY][0].passage; /* never */
+    deck->over[HAZARD_SMALL_CAR].chance = 7.0 / 9.0;
+    deck->over[HAZARD_SMALL_CAR].earliest_utc_s = at(23, 41);
+    deck->over[HAZARD_SMALL_CAR].likely_utc_s = at(23, 52);
+    deck->by[HAZARD_SMALL_CAR] = HAZARD_PRODUCT;
+    deck->over[HAZARD_ANY_PERSON].chance = 3.0 / 9.0;
+    deck->over[HAZARD_ANY_PERSON].earliest_utc_s = at(24, 20);
+    deck->by[HAZARD_ANY_PERSON] = HAZARD_SPEED;
+}
+
+static void with_water_in_the_highest_run(struct night *night)
+{
+    with_water_on_deck(night);
+    night->point_pictures[FORD].deck.likely = night->point_pictures[FORD].deck.low;
+    night->point_pictures[FORD].deck.over[HAZARD_SMALL_CAR].likely_utc_s = PASSAGE_NEVER;
+    night->point_pictures[FORD].deck.over[HAZARD_SMALL_CAR].chance = 2.0 / 9.0;
+    night->point_pictures[FORD].deck.over[HAZARD_ANY_PERSON] = night->mark_pictures[CAUSEWAY][0].passage;
+}
+
 static const char *access_over[] = {"marren-causeway"};
 
 static void with_access(struct night *night)
@@ -1037,6 +1066,16 @@ static void what_is_special_tonight_is_said(void **state)
          with_all_measured},
         {"own rating", "Level there is from a stage rating of its own.", with_stage_rating},
         {"part-blocked", "part-blocked by debris the peak would be 2.50 m, 0.95 m over deck.", with_blocked_rating},
+        {"water on the deck",
+         "On the deck, estimated, likely peak 0.40 m deep, 1.73 m/s, 0.69 m2/s (0.00 to 1.37), from 23:52 (earliest "
+         "23:41) over the draft limit of 0.3 m2/s for a small stationary car, in some runs from 00:20 over the "
+         "guideline limit of 2 m/s for any vehicle or person. No limit is a depth to drive in.",
+         with_water_on_deck},
+        {"water on the deck in few runs",
+         "On the deck, estimated, in the highest run 0.66 m deep, 2.07 m/s, 1.37 m2/s, in some runs from 23:41 over "
+         "the "
+         "draft limit of 0.3 m2/s for a small stationary car. No limit is a depth to drive in.",
+         with_water_in_the_highest_run},
         {"access", "The crew's way runs over Marren Causeway: [..] QUIET, road SHUT.", with_access},
         {"deliveries", "GIVEN UP 21:59; log waits, 7 tries; page-duty sent 21:58. People:", with_deliveries},
         {"no roster", "(6) TOLD: no roster; every channel.", with_no_roster},
@@ -1059,6 +1098,37 @@ static void what_is_special_tonight_is_said(void **state)
     }
 }
 
+/* What is not passed must never read as if it were fit to drive through. */
+static void of_a_limit_that_is_not_passed_there_is_no_word(void **state)
+{
+    (void)state;
+    for (int is_dry = 0; is_dry < 2; is_dry++) {
+        struct night *night = make_night();
+        with_water_on_deck(night);
+        struct deck_picture *deck = &night->point_pictures[FORD].deck;
+        deck->likely = deck->high = (struct hazard_water){0.04, 1.31, 0.0524};
+        for (size_t whom = 0; whom < HAZARD_WHOM_COUNT; whom++)
+            deck->over[whom] = night->mark_pictures[CAUSEWAY][0].passage;
+        if (is_dry)
+            deck->likely = deck->high = (struct hazard_water){0.0, 0.0, 0.0};
+        char *bulletin = bulletin_of(night, &night->decision);
+        char *text = joined(bulletin);
+        static const char *const never[] = {"limit of", "below the limit", "under the limit",
+                                            "within",   "small",           "car"};
+        for (size_t i = 0; i < sizeof never / sizeof *never; i++)
+            if (has_word(text, never[i]))
+                fail_msg("'%s' in:\n%s", never[i], bulletin);
+        if (is_dry)
+            assert_null(strstr(text, "On the deck"));
+        else
+            expect_words(text, "likely peak 0.04 m deep, 1.31 m/s, 0.06 m2/s (0.00 to 0.06). No limit is a depth to "
+                               "drive in.");
+        free(text);
+        free(bulletin);
+        free(night);
+    }
+}
+
 /* Everything that can be said at once, long names everywhere, thirty crossings, five gauges. */
 static void make_worst(struct night *night)
 {
@@ -1073,6 +1143,11 @@ static void make_worst(struct night *night)
     with_frozen(night);
     with_wet(night);
     with_blocked_rating(night);
+    with_water_on_deck(night);
+    struct deck_picture *deck = &night->point_pictures[FORD].deck;
+    deck->over[HAZARD_ANY_VEHICLE] = deck->over[HAZARD_SMALL_CAR]; /* in the longest words */
+    deck->over[HAZARD_ANY_PERSON] = night->mark_pictures[CAUSEWAY][0].passage;
+    deck->by[HAZARD_ANY_VEHICLE] = HAZARD_PRODUCT;
     with_access(night);
     with_deliveries(night);
     with_even_chance(night);
@@ -1133,6 +1208,7 @@ static void the_worst_bulletin_still_fits_on_its_page(void **state)
                 "No gauge measures 42 % of the flow there.",
                 "beyond highest gauging 2.38 m",
                 "part-blocked",
+                "over the guideline limit of 0.6 m2/s for any vehicle, child or old person. No limit is a depth to drive",
                 "(4) ",
                 "not protected from local rain); debris; ice; announced releases not entered",
                 "(6) TOLD: ",
@@ -1370,6 +1446,7 @@ int main(void)
         cmocka_unit_test(moments_far_off_bear_their_day),
         cmocka_unit_test(the_bulletin_of_the_demonstration_has_all_seven_sections),
         cmocka_unit_test(what_is_special_tonight_is_said),
+        cmocka_unit_test(of_a_limit_that_is_not_passed_there_is_no_word),
         cmocka_unit_test(the_worst_bulletin_still_fits_on_its_page),
         cmocka_unit_test(every_number_of_crossings_fits_and_shows_the_one_it_is_about),
         cmocka_unit_test(crossings_stand_in_order_of_act_by),

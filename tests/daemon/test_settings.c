@@ -126,6 +126,13 @@ static void the_points_of_the_example_have_their_marks_and_policies(void **state
     assert_int_equal(bridge->closing_mark, 1); /* the soffit is not trafficked */
     assert_false(bridge->marks[0].is_trafficked);
     assert_int_equal(bridge->deck_mark, 1);
+    assert_true(ford->has_deck && ford->deck.kind == HAZARD_DECK_IN_SECTION);
+    assert_true(ford->deck.level_m == 1.55 && ford->deck.roughness_n == 0.016 && ford->deck.panel == 0);
+    assert_ptr_equal(ford->deck.section, &settings->sections[0]);
+    const struct settings_point *causeway = &settings->points[1];
+    assert_true(causeway->has_deck && causeway->deck.kind == HAZARD_DECK_IS_WEIR);
+    assert_true(causeway->deck.level_m == 1.95 && causeway->deck.weir_coefficient == 1.6);
+    assert_false(bridge->has_deck);
     assert_true(bridge->stage_row_count > 10 && bridge->blocked_row_count > 10);
     settings_destroy(settings);
 }
@@ -229,7 +236,9 @@ static void a_point_stands_at_its_node_or_where_it_is_put(void **state)
     assert_int_equal(settings->points[1].reach, 2);
     assert_true(settings->points[1].at_m == 4700);
     assert_int_equal(settings->points[1].closing_mark, 1);
-    assert_int_equal(settings->points[1].deck_mark, 1); /* no deck: the closing mark */
+    assert_int_equal(settings->points[1].deck_mark, 1);                               /* no deck: the closing mark */
+    assert_true(settings->points[2].has_deck && settings->points[2].deck.panel == 1); /* right of 9.7 m */
+    assert_true(settings->points[2].deck.roughness_n == 0.013);
     assert_int_equal(settings->sections[0].shape, SECTION_POINTS);
     assert_int_equal(settings->sections[0].point_count, 5);
     assert_int_equal(settings->sections[0].panel_count, 2);

@@ -96,6 +96,41 @@ static void marks_must_rise_and_one_must_close_the_road(void **state)
     DEMAND_ALL(SETTINGS_EXAMPLE, changes);
 }
 
+static void a_deck_must_fit_its_marks_and_its_section(void **state)
+{
+    (void)state;
+    static const struct change changes[] = {
+        {"a deck without a level", "\"name\": \"deck awash\", \"depth_m\": 1.55, \"deck\": true",
+         "\"name\": \"road awash\", \"depth_m\": 1.55", "\"deck\": { \"kind\": \"section\"",
+         "points[0].deck: an object has no level: expected a mark with \"deck\": true, or with deck in its name"},
+        {"a deck of no kind", "\"kind\": \"section\", \"n\": 0.016", "\"n\": 0.016", NULL,
+         "points[0].deck.kind: missing: expected "},
+        {"a weir in the section", "\"kind\": \"section\"", "\"kind\": \"weir\"", NULL,
+         "points[0].deck.n: 0.016 does nothing here: expected none, because the water runs over the road as over a"},
+        {"a weir on the channel", "\"kind\": \"section\", \"n\": 0.016", "\"kind\": \"weir\"", NULL,
+         "points[0].deck.on: \"channel\" does nothing here"},
+        {"a weir at an offset", "\"coefficient\": 1.6", "\"offset_m\": 3", NULL,
+         "points[1].deck.offset_m: 3 does nothing here"},
+        {"a coefficient of no weir", "\"n\": 0.016", "\"coefficient\": 1.6", NULL,
+         "points[0].deck.coefficient: 1.6 does nothing here: expected none, because the deck is no weir"},
+        {"a deck below its plain", "\"on\": \"channel\"", "\"on\": \"plain\"", NULL,
+         "points[0].deck.on: \"plain\" lies above the deck, which is 1.55 m above the invert"},
+        {"an offset without a survey", "\"on\": \"channel\"", "\"offset_m\": 3", NULL,
+         "points[0].deck.offset_m: 3 does nothing here: expected none, because the section is not surveyed"},
+        {"a deck as rough as none", "\"n\": 0.016", "\"n\": 0.001", NULL, "points[0].deck.n: 0.001 is too small"},
+    };
+    DEMAND_ALL(SETTINGS_EXAMPLE, changes);
+    static const struct change others[] = {
+        {"a part without a plain", "\"offset_m\": 10.3", "\"on\": \"channel\"", NULL,
+         "points[2].deck.on: \"channel\" does nothing here: expected none, because the section has no plain"},
+        {"a deck beyond the survey", "\"offset_m\": 10.3", "\"offset_m\": 13.4", NULL,
+         "points[2].deck.offset_m: 13.4 lies outside the survey: expected 0 to 13.3"},
+        {"a deck before the survey", "\"offset_m\": 10.3", "\"offset_m\": -0.1", NULL,
+         "points[2].deck.offset_m: -0.1 lies outside the survey"},
+    };
+    DEMAND_ALL(SETTINGS_EVERY_OTHER_KEY, others);
+}
+
 static void limits_must_not_contradict_each_other(void **state)
 {
     (void)state;
@@ -414,6 +449,7 @@ int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(marks_must_rise_and_one_must_close_the_road),
+        cmocka_unit_test(a_deck_must_fit_its_marks_and_its_section),
         cmocka_unit_test(limits_must_not_contradict_each_other),
         cmocka_unit_test(names_must_lead_somewhere_and_to_one_thing),
         cmocka_unit_test(the_river_must_be_a_tree_fed_by_gauges),

@@ -39,6 +39,7 @@ static const char scene_config[] =
     "    { \"id\": \"tallowick-ford\", \"name\": \"Tallowick Ford\", \"invert_m\": 104.20,\n"
     "      \"marks\": [ { \"name\": \"approach wet\", \"depth_m\": 1.45 },\n"
     "                 { \"name\": \"deck awash\", \"depth_m\": 1.55, \"deck\": true } ],\n"
+    "      \"deck\": { \"kind\": \"section\" },\n"
     "      \"crew\": { \"day_min\": 40, \"night_min\": 55, \"margin_min\": 15 } },\n"
     "    { \"id\": \"marren-causeway\", \"name\": \"Marren Causeway\", \"invert_m\": 84.04,\n"
     "      \"marks\": [ { \"name\": \"approach wet\", \"depth_m\": 1.80 },\n"

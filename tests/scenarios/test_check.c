@@ -257,6 +257,66 @@ static void the_ford_cannot_be_protected_at_night_by_its_gauge_alone(void **stat
     run_clear(&run);
 }
 
+/*
+ * The ford's deck at 1.55 m: V by hand from the section's mean, and the product passes 0.3 m2/s where (h - 1.55) V = 0.3.
+ * The causeway's weir: the depth passes 0.3 m first, and 1.6 H^1.5 the last limit, 0.6 m2/s.
+ */
+static void the_limits_that_a_deck_passes_are_told_by_level_flow_and_time(void **state)
+{
+    (void)state;
+    struct run run = RUN(NULL, "check", "--config", DEMO);
+    assert_run(&run, EX_OK);
+    char *block = block_of(run.output, "Tallowick Ford (tallowick-ford):");
+    assert_says(block,
+                "deck at 1.55 m, part of the section; depth and speed there are estimates, no limit is a depth to "
+                "drive in\n");
+    const char *line = strstr(block, "      from ");
+    double stage_m = 0.0, flow_m3s = 0.0, after_min = 0.0;
+    assert_non_null(line);
+    assert_int_equal(
+        sscanf(line,
+               " from %lf m, %lf m3/s: over the draft limit of 0.3 m2/s for a small car, stationary; in the "
+               "fastest stated rise %lf min after the deck is awash",
+               &stage_m, &flow_m3s, &after_min),
+        3);
+    double area_m2 = (14 + 2 * stage_m) * stage_m;
+    assert_near((stage_m - 1.55) * manning_m3s(stage_m) / area_m2, 0.3, 0.01); /* a centimetre of stage is 0.017 */
+    assert_near(flow_m3s, manning_m3s(stage_m), 0.4);
+    /* 4 m/h at the gauge, whose rating is Q = 11.8 (h - 0.42)^1.72: between the two flows, whole minutes */
+    double rise_m = pow(flow_m3s / 11.8, 1 / 1.72) - pow(manning_m3s(1.55) / 11.8, 1 / 1.72);
+    assert_near(after_min, rise_m / 4 * 60, 1.0);
+    assert_says(block, "over the guideline limit of 0.6 m2/s for any vehicle or person;");
+    free(block);
+    block = block_of(run.output, "Marren Causeway (");
+    assert_says(block, "deck at 1.95 m, a weir over the road;");
+    assert_says(block, "      from 2.25 m, ");
+    assert_says(block, ": over the draft limit of 0.3 m for a small car, stationary;");
+    char last[100];
+    snprintf(last, sizeof last, "      from %.2f m, ", 1.95 + pow(0.6 / 1.6, 2.0 / 3));
+    assert_says(block, last);
+    free(block);
+    block = block_of(run.output, "Low Pintle Bridge (");
+    assert_null(strstr(block, "deck at"));
+    free(block);
+    assert_null(strstr(run.output, "H1"));
+    run_clear(&run);
+}
+
+static void a_deck_that_nothing_wets_has_no_word_of_limits(void **state)
+{
+    char *text = changed(read_whole(DEMO), "\"depth_m\": 1.55, \"deck\": true }", "\"depth_m\": 1.55 }");
+    text = changed(text, "\"name\": \"over limit\", \"depth_m\": 1.70",
+                   "\"name\": \"hill\", \"depth_m\": 45, \"deck\": true");
+    struct run run = RUN(NULL, "check", "--config", scratch_file(*state, "x.json", text));
+    assert_run(&run, EX_OK);
+    char *block = block_of(run.output, "Tallowick Ford (tallowick-ford):");
+    assert_says(block, "deck at 45.00 m, part of the section;");
+    assert_null(strstr(block, "limit of"));
+    free(block);
+    free(text);
+    run_clear(&run);
+}
+
 static void a_longer_way_to_the_station_takes_the_day_away_too(void **state)
 {
     (void)state;
@@ -450,6 +510,13 @@ static void the_same_facts_come_as_json(void **state)
     assert_near(number_of(lead, "lead_slow_rise_s"),
                 number_of(lead, "closing_mark_travel_s") - number_of(lead, "reading_and_delivery_s"), 1e-6);
     assert_near(number_of(lead, "lead_slow_rise_s"), 57.0 * 60.0, 60.0); /* as the text says */
+    const cJSON *deck = cJSON_GetObjectItemCaseSensitive(ford, "deck");
+    assert_near(number_of(deck, "level_m"), 1.55, 1e-12);
+    assert_near(number_of(deck, "awash_m3s"), manning_m3s(1.55), 0.01);
+    const cJSON *limits = cJSON_GetObjectItemCaseSensitive(deck, "limits_passed");
+    assert_int_equal(cJSON_GetArraySize(limits), 4);
+    assert_near(number_of(cJSON_GetArrayItem(limits, 1), "limit"), 0.45, 1e-12);
+    assert_string_equal(cJSON_GetObjectItemCaseSensitive(cJSON_GetArrayItem(limits, 1), "unit")->valuestring, "m2/s");
     cJSON_Delete(object);
     run_clear(&run);
 }
@@ -463,6 +530,8 @@ int main(void)
         TEST(method_cells_and_steps_are_told_per_reach),
         TEST(full_equations_are_told_with_their_own_limit),
         TEST(the_ford_cannot_be_protected_at_night_by_its_gauge_alone),
+        TEST(the_limits_that_a_deck_passes_are_told_by_level_flow_and_time),
+        TEST(a_deck_that_nothing_wets_has_no_word_of_limits),
         TEST(a_longer_way_to_the_station_takes_the_day_away_too),
         TEST(without_a_trigger_the_engineer_is_asked_for_one),
         TEST(a_point_without_crew_is_watched_only),
