@@ -112,7 +112,7 @@ static bool solve(const struct random_reach *reach, struct judged_flood *flood_o
 {
     double duration_s = 1.3 * reach->flood.top_s + 1.3 * reach->length_m / reach->slowest_m_s + reach->rise_s;
     duration_s = output_step_s * ceil(duration_s / output_step_s);
-    double cell_m = fmin(reach->length_m / 80.0, reach->celerity_m_s * reach->rise_s / 30.0);
+    double cell_m = fmin(reach->length_m / 32.0, reach->celerity_m_s * reach->rise_s / 30.0);
     size_t cells = (size_t)ceil(reach->length_m / cell_m);
     if (cells > MOST_CELLS / 8)
         cells = MOST_CELLS / 8;
@@ -125,7 +125,7 @@ static bool solve(const struct random_reach *reach, struct judged_flood *flood_o
             break;
         compare(&coarse, &fine);
         judged_flood_clear(&coarse);
-        if (fmax(fine.flow.time_s, fine.level.time_s) > 0.9 * duration_s) /* cut off before its peak was past: once more, longer */
+        if (fmax(fine.flow.time_s, fine.level.time_s) > 0.9 * duration_s) /* cut off before its peak was past */
             duration_s = output_step_s * ceil(1.5 * duration_s / output_step_s);
         else if (is_sure(&fine) || 2 * cells > MOST_CELLS)
             break;
