@@ -15,22 +15,26 @@
 
 enum {
     STEPS_MOST = 4000000,
+    HIGHEST_STAGE_M = 1000,
     LARGEST_M3S = 100000 /* the whole flow of all gauges must stay under the 1e6 that a network takes */
 };
 
-struct hydrograph { /* discharge at a gauge, at uneven times */
+struct hydrograph { /* at a gauge, at uneven times */
     size_t count;
     double *time_s;
     double *discharge_m3s;
+    double *stage_m; /* NULL: the file has no such column */
 };
 
 struct route_plan {
     const struct settings *settings;
     struct network_reach *reaches; /* a copy, with the method asked for */
+    struct network_point *points;  /* likewise, with one more for every gauge in mid-river */
     struct network_river river;
     struct hydrograph *inflow; /* [gauge] */
-    bool is_in_seconds;        /* times came as plain numbers */
-    struct when_zone zone;     /* else: the offset they came with */
+    size_t *gauge_point;   /* [gauge]: where the flow that goes on from it is read; NETWORK_NONE: it is the inflow */
+    bool is_in_seconds;    /* times came as plain numbers */
+    struct when_zone zone; /* else: the offset they came with */
     double start_s, until_s, every_s, step_s;
     size_t fixed_cell_count;
 };
@@ -80,6 +84,10 @@ static enum fw_status read_value(const struct settings_gauge *gauge, const struc
     enum fw_status status = table_number(table, row, column, &value, error);
     if (status != FW_OK)
         return status;
+    if (gauge->gives_level_only) {
+        *discharge_out_m3s = 0.0;
+        return FW_OK;
+    }
     double discharge_m3s = is_discharge ? value : rating_discharge_m3s(&gauge->rating, value, NULL);
     if (!(discharge_m3s >= 0.0 && discharge_m3s <= LARGEST_M3S))
         return fw_error_set(error, FW_BAD_INPUT, "%s:%zu: %s: '%s' is a flow of %g m3/s: expected 0 to %d",
@@ -87,6 +95,16 @@ static enum fw_status read_value(const struct settings_gauge *gauge, const struc
                             table_cell(table, row, column), discharge_m3s, LARGEST_M3S);
     *discharge_out_m3s = discharge_m3s;
     return FW_OK;
+}
+
+static enum fw_status read_stage(const struct table *table, size_t row, size_t column, double *stage_out_m,
+                                 struct fw_error *error)
+{
+    enum fw_status status = table_number(table, row, column, stage_out_m, error);
+    if (status == FW_OK && !(fabs(*stage_out_m) <= HIGHEST_STAGE_M))
+        status = fw_error_set(error, FW_BAD_INPUT, "%s:%zu: stage_m: '%s': expected -%d to %d m", table->file,
+                              table->line[row + 1], table_cell(table, row, column), HIGHEST_STAGE_M, HIGHEST_STAGE_M);
+    return status;
 }
 
 static enum fw_status read_rows(struct route_plan *plan, const struct settings_gauge *gauge,
@@ -102,7 +120,11 @@ static enum fw_status read_rows(struct route_plan *plan, const struct settings_g
             "%s:%zu: the header has no column '%s': expected time, and discharge_m3s or stage_m, with "
             "commas between",
             table->file, table->line[0], time_column == TABLE_NO_COLUMN ? "time" : "discharge_m3s' or 'stage_m");
-    if (discharge_column == TABLE_NO_COLUMN && !gauge->has_rating)
+    if (gauge->gives_level_only && stage_column == TABLE_NO_COLUMN)
+        return fw_error_set(error, FW_BAD_INPUT,
+                            "%s:%zu: the header has no column 'stage_m', but gauge '%s' gives the level of an outlet",
+                            table->file, table->line[0], gauge->id);
+    if (discharge_column == TABLE_NO_COLUMN && !gauge->has_rating && !gauge->gives_level_only)
         return fw_error_set(error, FW_BAD_INPUT,
                             "%s:%zu: stage_m: gauge '%s' has no rating: expected discharge_m3s, or a rating in the "
                             "configuration",
@@ -117,7 +139,9 @@ static enum fw_status read_rows(struct route_plan *plan, const struct settings_g
     }
     inflow->time_s = calloc(table->row_count, sizeof(double));
     inflow->discharge_m3s = calloc(table->row_count, sizeof(double));
-    if (inflow->time_s == NULL || inflow->discharge_m3s == NULL)
+    inflow->stage_m = stage_column != TABLE_NO_COLUMN ? calloc(table->row_count, sizeof(double)) : NULL;
+    if (inflow->time_s == NULL || inflow->discharge_m3s == NULL ||
+        (stage_column != TABLE_NO_COLUMN && inflow->stage_m == NULL))
         return fw_error_set(error, FW_NO_MEMORY, "%s: no memory", table->file);
     enum fw_status status = FW_OK;
     for (size_t row = 0; row < table->row_count && status == FW_OK; row++) {
@@ -125,6 +149,8 @@ static enum fw_status read_rows(struct route_plan *plan, const struct settings_g
         if (status == FW_OK)
             status =
                 read_value(gauge, table, row, discharge_column, stage_column, &inflow->discharge_m3s[row], error);
+        if (status == FW_OK && inflow->stage_m != NULL)
+            status = read_stage(table, row, stage_column, &inflow->stage_m[row], error);
         if (status == FW_OK && row > 0 && inflow->time_s[row] <= inflow->time_s[row - 1])
             status = fw_error_set(
                 error, FW_BAD_INPUT,
@@ -134,6 +160,30 @@ static enum fw_status read_rows(struct route_plan *plan, const struct settings_g
         inflow->count = row + 1;
     }
     return status;
+}
+
+static bool is_inner(const struct route_plan *plan, size_t gauge)
+{
+    return network_gauge_is_inner(&plan->settings->river, gauge);
+}
+
+/* A gauge that gives a level must have told one; a series must tell time as the input does. */
+static enum fw_status check_levels(const struct route_plan *plan, struct fw_error *error)
+{
+    for (size_t i = 0; i < plan->settings->level_count; i++) {
+        const struct settings_level *level = &plan->settings->levels[i];
+        const char *reach = plan->settings->river.reaches[level->reach].id;
+        if (level->gauge != SETTINGS_NONE && plan->inflow[level->gauge].stage_m == NULL)
+            return fw_error_set(error, FW_BAD_INPUT,
+                                "--inflow: gauge '%s' gives the level at the foot of reach '%s': expected a column "
+                                "stage_m in its file",
+                                plan->settings->gauges[level->gauge].id, reach);
+        if (level->gauge == SETTINGS_NONE && level->is_in_seconds != plan->is_in_seconds)
+            return fw_error_set(error, FW_BAD_INPUT,
+                                "%s: reach '%s': outlet.stage_series: its times are %s, those of the inflow are not",
+                                plan->settings->file, reach, level->is_in_seconds ? "seconds" : "RFC 3339");
+    }
+    return FW_OK;
 }
 
 static enum fw_status read_inflows(struct route_plan *plan, const struct option_values *given, struct fw_error *error)
@@ -157,10 +207,10 @@ static enum fw_status read_inflows(struct route_plan *plan, const struct option_
         table_clear(&table);
     }
     for (size_t gauge = 0; gauge < plan->settings->gauge_count && status == FW_OK; gauge++)
-        if (plan->inflow[gauge].count == 0)
+        if (plan->inflow[gauge].count == 0 && !is_inner(plan, gauge)) /* what is routed there goes on */
             status = fw_error_set(error, FW_USAGE, "--inflow: gauge '%s' has no file: expected --inflow %s=FILE.csv",
                                   plan->settings->gauges[gauge].id, plan->settings->gauges[gauge].id);
-    return status;
+    return status == FW_OK ? check_levels(plan, error) : status;
 }
 
 /* --- plan --------------------------------------------------------------------------------------------------------- */
@@ -186,6 +236,33 @@ static enum fw_status choose_method(struct route_plan *plan, const char *name, s
     return FW_OK;
 }
 
+/* What goes on from a gauge in mid-river is read at the head of the reach below it, or at the end of the river. */
+static enum fw_status place_gauge_points(struct route_plan *plan, struct fw_error *error)
+{
+    size_t gauges = plan->settings->gauge_count;
+    plan->points = calloc(plan->river.point_count + gauges + 1, sizeof *plan->points);
+    plan->gauge_point = calloc(gauges + 1, sizeof *plan->gauge_point);
+    if (plan->points == NULL || plan->gauge_point == NULL)
+        return fw_error_set(error, FW_NO_MEMORY, "no memory");
+    if (plan->river.point_count > 0)
+        memcpy(plan->points, plan->river.points, plan->river.point_count * sizeof *plan->points);
+    plan->river.points = plan->points;
+    for (size_t gauge = 0; gauge < gauges; gauge++) {
+        size_t node = plan->settings->gauges[gauge].node;
+        plan->gauge_point[gauge] = NETWORK_NONE;
+        if (!is_inner(plan, gauge))
+            continue;
+        size_t below = network_reach_from(&plan->river, node), above = network_reach_into(&plan->river, node);
+        size_t reach = below != NETWORK_NONE ? below : above;
+        plan->gauge_point[gauge] = plan->river.point_count;
+        plan->points[plan->river.point_count++] =
+            (struct network_point){.id = plan->settings->gauges[gauge].id,
+                                   .reach_index = reach,
+                                   .at_m = below != NETWORK_NONE ? 0.0 : plan->reaches[reach].length_m};
+    }
+    return FW_OK;
+}
+
 static enum fw_status plan_times(struct route_plan *plan, const char *until, long every_s, long step_s,
                                  struct fw_error *error)
 {
@@ -194,6 +271,8 @@ static enum fw_status plan_times(struct route_plan *plan, const char *until, lon
     plan->until_s = -INFINITY;
     for (size_t gauge = 0; gauge < plan->settings->gauge_count; gauge++) {
         const struct hydrograph *inflow = &plan->inflow[gauge];
+        if (inflow->count == 0)
+            continue;
         plan->start_s = fmin(plan->start_s, inflow->time_s[0]);
         plan->until_s = fmax(plan->until_s, inflow->time_s[inflow->count - 1]);
         for (size_t row = 1; row < inflow->count; row++)
@@ -230,16 +309,36 @@ static enum fw_status plan_times(struct route_plan *plan, const char *until, lon
 
 /* --- routing and output ------------------------------------------------------------------------------------------- */
 
-static double inflow_at(const struct hydrograph *inflow, double time_s, size_t *hint)
+/* Straight lines between; held before the first and after the last. */
+static double value_at(size_t count, const double times_s[], const double values[], double time_s, size_t *hint)
 {
-    if (time_s <= inflow->time_s[0])
-        return inflow->discharge_m3s[0];
-    if (time_s >= inflow->time_s[inflow->count - 1])
-        return inflow->discharge_m3s[inflow->count - 1];
-    while (inflow->time_s[*hint + 1] < time_s)
+    if (time_s <= times_s[0])
+        return values[0];
+    if (time_s >= times_s[count - 1])
+        return values[count - 1];
+    while (times_s[*hint + 1] < time_s)
         (*hint)++;
-    double share = (time_s - inflow->time_s[*hint]) / (inflow->time_s[*hint + 1] - inflow->time_s[*hint]);
-    return inflow->discharge_m3s[*hint] + share * (inflow->discharge_m3s[*hint + 1] - inflow->discharge_m3s[*hint]);
+    double share = (time_s - times_s[*hint]) / (times_s[*hint + 1] - times_s[*hint]);
+    return values[*hint] + share * (values[*hint + 1] - values[*hint]);
+}
+
+/* In mid-river not a number where the file says nothing. */
+static double inflow_at(const struct route_plan *plan, size_t gauge, double time_s, size_t *hint)
+{
+    const struct hydrograph *inflow = &plan->inflow[gauge];
+    bool is_told = inflow->count > 0 && time_s >= inflow->time_s[0] && time_s <= inflow->time_s[inflow->count - 1];
+    if (!is_told && is_inner(plan, gauge))
+        return (double)NAN;
+    return value_at(inflow->count, inflow->time_s, inflow->discharge_m3s, time_s, hint);
+}
+
+static double level_at(const struct route_plan *plan, size_t level_index, double time_s, size_t *hint)
+{
+    const struct settings_level *level = &plan->settings->levels[level_index];
+    if (level->gauge == SETTINGS_NONE)
+        return value_at(level->row_count, level->time_s, level->stage_m, time_s, hint);
+    const struct hydrograph *measured = &plan->inflow[level->gauge];
+    return value_at(measured->count, measured->time_s, measured->stage_m, time_s, hint) - level->bed_at_m;
 }
 
 static double gauge_stage_m(const struct route_plan *plan, size_t gauge, double discharge_m3s)
@@ -290,7 +389,7 @@ static double point_stage_at(const struct route_plan *plan, const struct network
     struct method_choice choice;
     network_reach_choice(network, plan->river.points[point].reach_index, &choice);
     return network_method_is_full(choice.method) ? between(stage_m, steps)
-                                          : network_point_stage_m(network, point, 0, flow_m3s);
+                                                 : network_point_stage_m(network, point, 0, flow_m3s);
 }
 
 static void print_rows(const struct route_plan *plan, const struct network *network, size_t step_count,
@@ -299,10 +398,21 @@ static void print_rows(const struct route_plan *plan, const struct network *netw
     print_header(plan);
     for (size_t row = 0; (double)row * plan->every_s <= plan->until_s - plan->start_s + 1e-6; row++) {
         double steps = (double)row * plan->every_s / plan->step_s;
-        print_time(plan, plan->start_s + (double)row * plan->every_s);
+        double time_s = plan->start_s + (double)row * plan->every_s;
+        print_time(plan, time_s);
         for (size_t gauge = 0; gauge < plan->settings->gauge_count; gauge++) {
-            double flow = between(inflow_m3s + gauge * (step_count + 1), steps);
-            printf(",%.6f,%.4f", flow, gauge_stage_m(plan, gauge, flow));
+            size_t point = plan->gauge_point[gauge], hint = 0;
+            double flow = between(point == NETWORK_NONE ? inflow_m3s + gauge * (step_count + 1)
+                                                        : point_m3s + point * (step_count + 1),
+                                  steps);
+            const struct hydrograph *inflow = &plan->inflow[gauge];
+            if (plan->settings->gauges[gauge].gives_level_only)
+                printf(",nan,%.4f", value_at(inflow->count, inflow->time_s, inflow->stage_m, time_s, &hint));
+            else
+                printf(",%.6f,%.4f", flow,
+                       point == NETWORK_NONE || plan->settings->gauges[gauge].has_rating
+                           ? gauge_stage_m(plan, gauge, flow)
+                           : point_stage_at(plan, network, point, flow, stage_m + point * (step_count + 1), steps));
         }
         for (size_t point = 0; point < plan->settings->point_count; point++) {
             double flow = between(point_m3s + point * (step_count + 1), steps);
@@ -334,16 +444,19 @@ static enum fw_status build_network(const struct route_plan *plan, double larges
 static enum fw_status route(const struct route_plan *plan, struct fw_error *error)
 {
     size_t gauges = plan->settings->gauge_count;
-    size_t points = plan->settings->point_count;
+    size_t points = plan->river.point_count, levels = plan->river.level_count;
     size_t step_count = (size_t)ceil((plan->until_s - plan->start_s) / plan->step_s) + 1;
     struct network *network = NULL;
     double *inflow_m3s = calloc(gauges * (step_count + 1) + 1, sizeof(double));
     double *point_m3s = calloc(points * (step_count + 1) + 1, sizeof(double));
     double *stage_m = calloc(points * (step_count + 1) + 1, sizeof(double));
     double *start_m3s = calloc(gauges + 1, sizeof(double));
-    double largest_m3s = 0.0;
+    double *level_m = calloc(levels * (step_count + 1) + 1, sizeof(double));
+    double *start_level_m = calloc(levels + 1, sizeof(double));
+    double largest_m3s = 0.0, largest_inner_m3s = 0.0;
     enum fw_status status = FW_OK;
-    if (inflow_m3s == NULL || point_m3s == NULL || stage_m == NULL || start_m3s == NULL) {
+    if (inflow_m3s == NULL || point_m3s == NULL || stage_m == NULL || start_m3s == NULL || level_m == NULL ||
+        start_level_m == NULL) {
         status = fw_error_set(error, FW_NO_MEMORY, "no memory for %zu steps", step_count);
         goto cleanup;
     }
@@ -351,12 +464,21 @@ static enum fw_status route(const struct route_plan *plan, struct fw_error *erro
         size_t hint = 0;
         double peak_m3s = 0.0;
         for (size_t step = 0; step <= step_count; step++) {
-            double flow = inflow_at(&plan->inflow[gauge], plan->start_s + (double)step * plan->step_s, &hint);
+            double flow = inflow_at(plan, gauge, plan->start_s + (double)step * plan->step_s, &hint);
             inflow_m3s[gauge * (step_count + 1) + step] = flow;
-            peak_m3s = fmax(peak_m3s, flow);
+            peak_m3s = fmax(peak_m3s, flow); /* a number, where the other is none */
         }
         start_m3s[gauge] = inflow_m3s[gauge * (step_count + 1)];
-        largest_m3s += peak_m3s;
+        largest_m3s += is_inner(plan, gauge) ? 0.0 : peak_m3s;
+        largest_inner_m3s = fmax(largest_inner_m3s, is_inner(plan, gauge) ? peak_m3s : 0.0);
+    }
+    largest_m3s = fmax(largest_m3s, largest_inner_m3s);
+    for (size_t level = 0; level < levels; level++) {
+        size_t hint = 0;
+        for (size_t step = 0; step <= step_count; step++)
+            level_m[level * (step_count + 1) + step] =
+                level_at(plan, level, plan->start_s + (double)step * plan->step_s, &hint);
+        start_level_m[level] = level_m[level * (step_count + 1)];
     }
     for (size_t side = 0; side < plan->river.side_inflow_count; side++)
         largest_m3s += plan->river.side_inflows[side].share_of_gauge == NETWORK_NONE
@@ -364,9 +486,9 @@ static enum fw_status route(const struct route_plan *plan, struct fw_error *erro
                            : plan->river.side_inflows[side].share * largest_m3s;
     status = build_network(plan, fmax(largest_m3s, 0.001), &network, error);
     if (status == FW_OK)
-        status = network_start_steady(network, start_m3s);
+        status = network_start_steady_at(network, start_m3s, start_level_m);
     if (status == FW_OK)
-        status = network_advance_with_stage(network, step_count, inflow_m3s, point_m3s, stage_m);
+        status = network_advance_at(network, step_count, inflow_m3s, level_m, point_m3s, stage_m);
     if (status == FW_OK)
         print_rows(plan, network, step_count, inflow_m3s, point_m3s, stage_m);
     else if (error->text[0] == '\0')
@@ -384,6 +506,8 @@ cleanup:
     free(point_m3s);
     free(stage_m);
     free(start_m3s);
+    free(level_m);
+    free(start_level_m);
     return status;
 }
 
@@ -427,6 +551,8 @@ enum fw_status command_route(int argument_count, char *arguments[], struct fw_er
     status = plan.inflow != NULL ? choose_method(&plan, option_text(&method, NULL), error)
                                  : fw_error_set(error, FW_NO_MEMORY, "no memory");
     if (status == FW_OK)
+        status = place_gauge_points(&plan, error);
+    if (status == FW_OK)
         status = read_inflows(&plan, &inflow, error);
     if (status == FW_OK)
         status = plan_times(&plan, option_text(&until, NULL), every_s, step_s, error);
@@ -435,9 +561,12 @@ enum fw_status command_route(int argument_count, char *arguments[], struct fw_er
     for (size_t gauge = 0; gauge < settings->gauge_count && plan.inflow != NULL; gauge++) {
         free(plan.inflow[gauge].time_s);
         free(plan.inflow[gauge].discharge_m3s);
+        free(plan.inflow[gauge].stage_m);
     }
     free(plan.inflow);
     free(plan.reaches);
+    free(plan.points);
+    free(plan.gauge_point);
     settings_destroy(settings);
     return status;
 }

@@ -58,7 +58,17 @@ struct settings_gauge {
     struct quality_rules quality; /* in the measured quantity, SI */
     double rising_rate_per_s;     /* above this it counts as rising */
     struct assumed_rules assumed;
-    size_t node; /* index of its node in the river */
+    size_t node;           /* index of its node in the river; SETTINGS_NONE: it gives a level only */
+    bool gives_level_only; /* of an outlet; it has no rating, and its flow is not known */
+};
+
+struct settings_level { /* at the foot of a last reach, step by step */
+    size_t reach;
+    size_t gauge;    /* whose level it is; SETTINGS_NONE: the series below */
+    double bed_at_m; /* the gauge's reading at the invert */
+    size_t row_count;
+    bool is_in_seconds; /* times as plain seconds, not UTC */
+    double *time_s, *stage_m;
 };
 
 struct settings_mark {
@@ -140,6 +150,8 @@ struct settings {
 
     size_t gauge_count;
     struct settings_gauge *gauges;
+    size_t level_count; /* as many as the river's */
+    struct settings_level *levels;
     size_t section_count;
     const char **section_ids;
     struct section *sections;

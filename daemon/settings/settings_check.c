@@ -79,6 +79,7 @@ static bool is_host_port(const char *string)
 static bool is_string_right(const struct settings_key *key, const char *string)
 {
     struct when_zone zone;
+    int64_t utc_s = 0;
     switch (key->type) {
     case SETTINGS_TYPE_TEXT:
         return is_one_line(string, key->highest);
@@ -101,6 +102,8 @@ static bool is_string_right(const struct settings_key *key, const char *string)
         return is_url(string);
     case SETTINGS_TYPE_HOST_PORT:
         return is_host_port(string);
+    case SETTINGS_TYPE_MOMENT_OR_NUMBER:
+        return when_parse(string, NULL, &utc_s, NULL) == FW_OK;
     case SETTINGS_TYPE_OBJECT:
     case SETTINGS_TYPE_ARRAY:
     case SETTINGS_TYPE_NUMBER:
@@ -123,6 +126,14 @@ static const char *fault_of_value(const struct json_value *value, const struct s
         if ((double)value->child_count < key->lowest)
             return "has too few elements";
         return (double)value->child_count > key->highest ? "has too many elements" : NULL;
+    case SETTINGS_TYPE_MOMENT_OR_NUMBER:
+        if (value->kind == JSON_STRING)
+            break;
+        if (value->kind != JSON_NUMBER)
+            return "is neither a number nor a text in double quotes";
+        if (value->number < key->lowest)
+            return "is too small";
+        return value->number > key->highest ? "is too large" : NULL;
     case SETTINGS_TYPE_NUMBER:
     case SETTINGS_TYPE_INTEGER:
         if (value->kind != JSON_NUMBER)

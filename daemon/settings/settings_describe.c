@@ -142,6 +142,10 @@ static void add_type(struct text *json, size_t depth, const struct settings_key 
     case SETTINGS_TYPE_HOST_PORT:
         add_pattern(json, depth, "^[^ ]+:[0-9]{1,5}$", 300);
         break;
+    case SETTINGS_TYPE_MOMENT_OR_NUMBER:
+        add_member(json, depth, "type", "[\"number\", \"string\"]");
+        text_add(json, ", \"minimum\": %.10g, \"maximum\": %.10g", key->lowest, key->highest);
+        break;
     }
 }
 

@@ -74,6 +74,9 @@ const char *settings_keys_expected(const struct settings_key *key, char *text, s
     case SETTINGS_TYPE_HOST_PORT:
         snprintf(text, size, "host:port, as \"127.0.0.1:8460\"");
         break;
+    case SETTINGS_TYPE_MOMENT_OR_NUMBER:
+        snprintf(text, size, "a number, or a time as \"2031-02-14T21:15:00Z\"");
+        break;
     }
     return text;
 }

@@ -274,7 +274,11 @@ static bool build_gauge(struct settings_work *work, struct settings_gauge *gauge
     if (settings_work_has(object, "gauges[].measures") && measures == NULL)
         return true; /* what follows hangs on it */
     bool is_for_run = work->need == SETTINGS_FOR_RUN;
-    if (is_for_run && gauge->measures == SETTINGS_STAGE)
+    gauge->gives_level_only = settings_work_gives_level_only(work, gauge->id);
+    if (gauge->gives_level_only && gauge->measures == SETTINGS_DISCHARGE)
+        json_tree_fault(work->report, settings_work_member(object, "gauges[].measures"),
+                        "is no level, but an outlet's stage_of names the gauge: expected \"stage\"");
+    if (is_for_run && gauge->measures == SETTINGS_STAGE && !gauge->gives_level_only)
         settings_work_need(work, object, "gauges[].rating", because_of(gauge->measures));
     if (is_for_run && gauge->measures == SETTINGS_DISCHARGE)
         settings_work_need(work, object, "gauges[].rising_m3s_h", because_of(gauge->measures));

@@ -61,6 +61,11 @@
         .path = (p), .type = SETTINGS_TYPE_NUMBER, .want = (w), .unit = (u), .lowest = (lo), .highest = (hi),        \
         .otherwise = (o), .meaning = (m)                                                                             \
     }
+#define MOMENT_OR_NUMBER(p, lo, hi, m)                                                                               \
+    {                                                                                                                \
+        .path = (p), .type = SETTINGS_TYPE_MOMENT_OR_NUMBER, .want = WANTED, .unit = "", .lowest = (lo),             \
+        .highest = (hi), .meaning = (m)                                                                              \
+    }
 #define TRUTH(p, w, d, m)                                                                                            \
     {                                                                                                                \
         .path = (p), .type = SETTINGS_TYPE_TRUTH, .want = (w), .unit = "", .fallback = (d), .meaning = (m)           \
@@ -111,7 +116,9 @@ static const struct settings_key keys[] = {
            "Another lets the discharge fall with this time constant."),
 
     ARRAY("gauges", WANTED, 1, 50, NULL,
-          "The river gauges whose readings drive the forecast. A gauge stands at the head of a reach."),
+          "The river gauges whose readings drive the forecast. A gauge stands at the head of a reach: of the first, "
+          "or in "
+          "mid-river, where its flow takes the place of what was routed there for as long as it is measured."),
     OBJECT("gauges[]", WANTED, "One gauge."),
     NAMES("gauges[].id", GAUGE,
           "Its short name; also the name of its node in the river. No point may have the same."),
@@ -265,10 +272,24 @@ static const struct settings_key keys[] = {
     NUMBER("reaches[].side_inflow[].constant_m3s", OPTIONAL, "m3/s", 0, 1e5, "0", "A constant flow."),
     NUMBER("reaches[].side_inflow[].spread", OPTIONAL, "", 0, 5, "0",
            "How uncertain it is, a share. Kept for the ensemble; not used by this version."),
-    OBJECT("reaches[].outlet", OPTIONAL,
-           "A level held at the foot of a last reach: a lake, a weir pool. Needs method auto, dynamic or diffusive. "
-           "Without one the river goes on at normal depth."),
-    NUMBER("reaches[].outlet.stage_m", WANTED, "m", 0.01, 200, NULL, "Level at the foot above the invert."),
+    OBJECT(
+        "reaches[].outlet", OPTIONAL,
+        "A level at the foot of a last reach: a lake, a tide, a weir pool. One of stage_m, stage_of and "
+        "stage_series. "
+        "Needs method auto, dynamic or diffusive. Without one the river goes on at normal depth. A level under the "
+        "flow's critical depth does not act; the critical depth stands there then."),
+    NUMBER("reaches[].outlet.stage_m", OPTIONAL, "m", 0.01, 200, NULL, "Level at the foot above the invert, held."),
+    REFERS("reaches[].outlet.stage_of", OPTIONAL, GAUGE,
+           "Gauge that measures the level there. It needs no rating, and need not stand at a node."),
+    OTHERWISE("reaches[].outlet.bed_at_m", OPTIONAL, "m", -500, 9000, "0",
+              "What that gauge reads when the water stands at the invert."),
+    ARRAY(
+        "reaches[].outlet.stage_series", OPTIONAL, 1, 20000, NULL,
+        "Rows of time and level (m) at the foot above the invert, times rising, straight lines between, held before "
+        "the first and after the last."),
+    ARRAY("reaches[].outlet.stage_series[]", WANTED, 2, 2, NULL,
+          "Time (RFC 3339, or for `route` seconds), level (m)."),
+    MOMENT_OR_NUMBER("reaches[].outlet.stage_series[][]", -1e12, 1e12, "A time, or a level."),
 
     ARRAY("points", FOR_RUN, 0, 200, NULL, "The crossings, and other places to look at."),
     OBJECT("points[]", WANTED, "One crossing."),

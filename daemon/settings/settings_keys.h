@@ -20,7 +20,8 @@ enum settings_type {
     SETTINGS_TYPE_FILE_NAME,   /* without folders */
     SETTINGS_TYPE_POINTER,     /* JSON Pointer, RFC 6901 */
     SETTINGS_TYPE_URL,
-    SETTINGS_TYPE_HOST_PORT
+    SETTINGS_TYPE_HOST_PORT,
+    SETTINGS_TYPE_MOMENT_OR_NUMBER /* an element of a series: RFC 3339, or lowest .. highest */
 };
 
 enum settings_want { SETTINGS_OPTIONAL, SETTINGS_WANTED, SETTINGS_WANTED_FOR_RUN };

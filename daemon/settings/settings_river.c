@@ -190,28 +190,9 @@ static void build_reach(struct settings_work *work, struct network_reach *reach,
     for (size_t i = 0; section != NULL && i < settings->section_count; i++)
         if (settings->section_ids[i] != NULL && strcmp(settings->section_ids[i], section) == 0)
             reach->section = &settings->sections[i];
-    struct json_value *outlet = settings_work_member(object, "reaches[].outlet");
-    if (outlet != NULL && reach->method != NETWORK_AUTO && !network_method_is_full(reach->method))
-        json_tree_fault(work->report, outlet,
-                        "holds a level: expected \"method\" \"auto\", \"dynamic\" or \"diffusive\" with it");
-    else if (outlet != NULL)
-        reach->outlet_depth_m = settings_work_number(outlet, "reaches[].outlet.stage_m");
     struct json_value *to = settings_work_member(object, "reaches[].to");
     if (to != NULL && reach->from_node == reach->to_node)
         json_tree_fault(work->report, to, "is where the reach begins: expected another node");
-}
-
-/* Once all reaches are known: a level is held where none leaves. */
-static void check_outlets(struct settings_work *work, const struct json_value *reaches)
-{
-    const struct network_river *river = &work->settings->river;
-    const struct json_value *object;
-    size_t reach = 0;
-    for (size_t i = 0; (object = settings_work_next(reaches, &i)) != NULL; reach++)
-        if (river->reaches[reach].outlet_depth_m > 0.0 &&
-            network_reach_from(river, river->reaches[reach].to_node) != NETWORK_NONE)
-            json_tree_fault(work->report, settings_work_member(object, "reaches[].outlet"),
-                            "holds a level in mid-river: expected it where the last reach ends");
 }
 
 static bool build_reaches(struct settings_work *work, const struct json_value *reaches)
@@ -223,10 +204,18 @@ static bool build_reaches(struct settings_work *work, const struct json_value *r
     if (built == NULL || settings->node_names == NULL)
         return false;
     const struct json_value *object;
-    for (size_t i = 0; (object = settings_work_next(reaches, &i)) != NULL;)
-        build_reach(work, &built[settings->river.reach_count++], object);
+    settings->levels = arena_take(work->arena, count, sizeof *settings->levels);
+    if (settings->levels == NULL)
+        return false;
+    for (size_t i = 0; (object = settings_work_next(reaches, &i)) != NULL; settings->river.reach_count++) {
+        struct network_reach *reach = &built[settings->river.reach_count];
+        build_reach(work, reach, object);
+        if (!settings_build_outlet(work, settings->river.reach_count, reach, object))
+            return false;
+    }
     settings->river.reaches = built;
-    check_outlets(work, reaches);
+    settings->river.level_count = settings->level_count;
+    settings_check_outlets(work, reaches);
     return true;
 }
 
@@ -312,14 +301,18 @@ static bool place_gauges(struct settings_work *work)
     for (size_t i = 0; (object = settings_work_next(gauges, &i)) != NULL; gauge++) {
         struct json_value *id = settings_work_member(object, "gauges[].id");
         size_t node = NETWORK_NONE;
-        for (size_t n = 0; id != NULL && n < settings->river.node_count; n++)
+        bool is_apart = settings->gauges[gauge].gives_level_only;
+        for (size_t n = 0; id != NULL && !is_apart && n < settings->river.node_count; n++)
             if (strcmp(settings->node_names[n], id->string) == 0)
                 node = n;
         settings->gauges[gauge].node = gauge_node[gauge] = node;
         size_t into = node != NETWORK_NONE ? network_reach_into(&settings->river, node) : NETWORK_NONE;
-        if (id != NULL && node == NETWORK_NONE)
-            json_tree_fault(work->report, id, "stands at no reach: expected a reach with this id as its 'from'");
-        else if (id != NULL && into != NETWORK_NONE)
+        if (id != NULL && node == NETWORK_NONE && !is_apart)
+            json_tree_fault(
+                work->report, id,
+                "stands at no reach: expected a reach with this id as its 'from', or an outlet with it as "
+                "'stage_of'");
+        else if (id != NULL && into != NETWORK_NONE && work->need == SETTINGS_FOR_RUN)
             json_tree_fault(work->report, id,
                             "stands in mid-river, where reach '%s' ends: expected a gauge at the head of the river",
                             settings->river.reaches[into].id != NULL ? settings->river.reaches[into].id : "?");
@@ -384,6 +377,31 @@ static void check_tree(struct settings_work *work, const struct json_value *reac
     }
 }
 
+/* What follows a gauge must be able to: it measures a flow, and not one that it feeds itself. */
+static void check_shares(struct settings_work *work, const struct json_value *reaches)
+{
+    const struct network_river *river = &work->settings->river;
+    const struct json_value *object;
+    size_t reach = 0;
+    for (size_t i = 0; (object = settings_work_next(reaches, &i)) != NULL; reach++) {
+        const struct json_value *inflows = settings_work_member(object, "reaches[].side_inflow");
+        const struct json_value *inflow;
+        for (size_t j = 0; (inflow = settings_work_next(inflows, &j)) != NULL;) {
+            struct json_value *share_of = settings_work_member(inflow, "reaches[].side_inflow[].share_of");
+            size_t gauge = share_of != NULL ? settings_gauge_index(work->settings, share_of->string) : SETTINGS_NONE;
+            if (gauge == SETTINGS_NONE)
+                continue;
+            if (work->settings->gauges[gauge].gives_level_only)
+                json_tree_fault(work->report, share_of,
+                                "gives the level of an outlet only: expected a gauge whose flow is known");
+            else if (network_gauge_is_inner(river, gauge) &&
+                     network_leads_to(river, river->reaches[reach].to_node, river->gauge_node[gauge]))
+                json_tree_fault(work->report, share_of,
+                                "stands downstream, so that its flow would feed itself: expected another gauge");
+        }
+    }
+}
+
 bool settings_build_river(struct settings_work *work)
 {
     const struct json_value *reaches = settings_work_member(work->root, "reaches");
@@ -403,6 +421,7 @@ bool settings_build_river(struct settings_work *work)
     if (!place_gauges(work))
         return false;
     check_tree(work, reaches);
+    check_shares(work, reaches);
     return true;
 }
 

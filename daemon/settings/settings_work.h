@@ -54,6 +54,15 @@ void settings_work_engine_fault(struct settings_work *work, struct json_value *o
 /* Absolute, in the arena; NULL: no memory. */
 const char *settings_work_path(struct settings_work *work, const char *path);
 
+/* Does the gauge of that id give an outlet its level and feed no reach? */
+bool settings_work_gives_level_only(const struct settings_work *work, const char *gauge_id);
+
+/* The outlet of a reach that is built already, or nothing; false: no memory. */
+bool settings_build_outlet(struct settings_work *work, size_t reach_index, struct network_reach *reach,
+                           const struct json_value *object);
+/* Once all reaches are known: a level stands where none leaves. */
+void settings_check_outlets(struct settings_work *work, const struct json_value *reaches);
+
 /* The parts; false: no memory. Faults are in the report. In this order. */
 bool settings_build_base(struct settings_work *work);
 bool settings_build_channels(struct settings_work *work);

@@ -17,6 +17,7 @@
 #define SETTINGS_EXAMPLE FW_SOURCE_DIR "/config/forewater.json"
 #define SETTINGS_EVERY_OTHER_KEY FW_SOURCE_DIR "/tests/data/settings/every_other_key.json"
 #define SETTINGS_OUTLET FW_SOURCE_DIR "/tests/data/settings/outlet.json"
+#define SETTINGS_BOUNDARIES FW_SOURCE_DIR "/tests/data/settings/boundaries.json"
 
 static inline struct text settings_text_load(const char *path)
 {

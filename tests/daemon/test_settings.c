@@ -226,6 +226,42 @@ static void an_outlet_holds_a_level_by_the_full_equations(void **state)
     settings_destroy(settings);
 }
 
+static void an_outlet_follows_a_gauge_or_a_series(void **state)
+{
+    (void)state;
+    struct settings *settings = read_sound(SETTINGS_BOUNDARIES, SETTINGS_FOR_ROUTE);
+    const struct network_river *river = &settings->river;
+    assert_int_equal(river->level_count, 3);
+    assert_int_equal(settings->level_count, 3);
+    assert_true(river->reaches[1].has_outlet_level && river->reaches[1].outlet_level == 0);
+    assert_int_equal(settings->levels[0].reach, 1);
+    assert_int_equal(settings->levels[0].gauge, 4);
+    assert_true(settings->levels[0].bed_at_m == 31.4);
+    assert_true(settings->gauges[4].gives_level_only);
+    assert_int_equal(settings->gauges[4].node, SETTINGS_NONE);
+    const struct settings_level *tide = &settings->levels[1], *sluice = &settings->levels[2];
+    assert_int_equal(tide->gauge, SETTINGS_NONE);
+    assert_int_equal(tide->row_count, 2);
+    assert_false(tide->is_in_seconds);
+    assert_true(tide->time_s[1] - tide->time_s[0] == 3600.0);
+    assert_true(tide->stage_m[0] == 1.25 && tide->stage_m[1] == 1.5);
+    assert_true(sluice->is_in_seconds && sluice->time_s[1] == 900.0 && sluice->stage_m[1] == -0.5);
+    settings_destroy(settings);
+}
+
+static void a_gauge_may_stand_in_mid_river(void **state)
+{
+    (void)state;
+    struct settings *settings = read_sound(SETTINGS_BOUNDARIES, SETTINGS_FOR_ROUTE);
+    assert_int_equal(settings->gauges[1].node, settings->river.reaches[0].to_node);
+    assert_true(network_gauge_is_inner(&settings->river, 1));
+    assert_false(network_gauge_is_inner(&settings->river, 0));
+    bool is_above[5];
+    settings_gauges_above(settings, 0, is_above);
+    assert_true(is_above[0] && is_above[1] && !is_above[2] && !is_above[3] && !is_above[4]);
+    settings_destroy(settings);
+}
+
 static void a_point_stands_at_its_node_or_where_it_is_put(void **state)
 {
     (void)state;
@@ -528,6 +564,8 @@ int main(void)
         cmocka_unit_test(what_is_not_stated_has_the_default_of_the_table),
         cmocka_unit_test(a_gauge_of_discharge_has_its_own_keys),
         cmocka_unit_test(an_outlet_holds_a_level_by_the_full_equations),
+        cmocka_unit_test(an_outlet_follows_a_gauge_or_a_series),
+        cmocka_unit_test(a_gauge_may_stand_in_mid_river),
         cmocka_unit_test(a_point_stands_at_its_node_or_where_it_is_put),
         cmocka_unit_test(gauges_above_a_point_are_those_whose_water_passes_it),
         cmocka_unit_test(things_are_found_by_id),

@@ -38,7 +38,8 @@ static void demand(const char *base_path, const struct change *change)
              change->fault);
     struct settings *settings;
     struct settings_faults faults = {0};
-    enum fw_status status = settings_text_read(&changed, SETTINGS_FOR_RUN, &settings, &faults);
+    enum settings_need need = strcmp(base_path, SETTINGS_BOUNDARIES) == 0 ? SETTINGS_FOR_ROUTE : SETTINGS_FOR_RUN;
+    enum fw_status status = settings_text_read(&changed, need, &settings, &faults);
     const struct settings_fault *fault = settings_text_fault(&faults, begin);
     if (status != FW_BAD_INPUT || fault == NULL) {
         settings_text_print_faults(&faults);
@@ -199,6 +200,42 @@ static void names_must_lead_somewhere_and_to_one_thing(void **state)
          "points[0].colour: unknown key: expected one of id, name, reach, "},
     };
     DEMAND_ALL(SETTINGS_EXAMPLE, changes);
+}
+
+static void what_stands_at_a_foot_must_fit_there(void **state)
+{
+    (void)state;
+    static const struct change changes[] = {
+        {"a level twice", "\"stage_of\": \"mere\"", "\"stage_of\": \"mere\", \"stage_m\": 2.5", NULL,
+         "reaches[1].outlet: has 2 of 'stage_m', 'stage_of' and 'stage_series'"},
+        {"an outlet of nothing", "\"stage_of\": \"mere\", \"bed_at_m\": 31.4", "", "\"outlet\": {  }",
+         "reaches[1].outlet: has 0 of 'stage_m', 'stage_of' and 'stage_series'"},
+        {"a bed without a gauge", "\"stage_of\": \"mere\",", "\"stage_m\": 2.5,", NULL,
+         "reaches[1].outlet.bed_at_m: 31.4 does nothing here"},
+        {"a level of a gauge of discharge", "\"stage_of\": \"mere\"", "\"stage_of\": \"mid\"", NULL,
+         "reaches[1].outlet.stage_of: \"mid\" measures no stage"},
+        {"a level by discharge", "{ \"id\": \"mere\" }", "{ \"id\": \"mere\", \"measures\": \"discharge\" }", NULL,
+         "gauges[4].measures: \"discharge\" is no level, but an outlet's stage_of names the gauge"},
+        {"a share of a level", "\"share_of\": \"mid\"", "\"share_of\": \"mere\"", NULL,
+         "reaches[1].side_inflow[0].share_of: \"mere\" gives the level of an outlet only"},
+        {"a gauge that feeds itself", "\"slope\": 0.001, \"section\": \"s\" }",
+         "\"slope\": 0.001, \"section\": \"s\", \"side_inflow\": [ { \"share_of\": \"mid\", \"share\": 0.1 } ] }",
+         NULL, "reaches[0].side_inflow[0].share_of: \"mid\" stands downstream, so that its flow would feed itself"},
+        {"a moving level in mid-river", "\"slope\": 0.001, \"section\": \"s\" }",
+         "\"slope\": 0.001, \"section\": \"s\", \"outlet\": { \"stage_of\": \"mere\" } }", NULL,
+         "reaches[0].outlet: an object holds a level in mid-river"},
+        {"a moving level by storage", "\"method\": \"diffusive\"", "\"method\": \"kinematic\"", NULL,
+         "reaches[2].outlet: an object holds a level: expected \"method\""},
+        {"a series that falls back", "[ 900, -0.5 ]", "[ -1, -0.5 ]", NULL,
+         "reaches[3].outlet.stage_series[1][0]: -1 is not after the time of the row before it"},
+        {"a series in two clocks", "[ 900, -0.5 ]", "[ \"2031-02-14T21:15:00Z\", -0.5 ]", NULL,
+         "reaches[3].outlet.stage_series[1][0]: \"2031-02-14T21:15:00Z\" is not written as the first time"},
+        {"a level as a time", "[ 900, -0.5 ]", "[ 900, \"2031-02-14T21:15:00Z\" ]", NULL,
+         "reaches[3].outlet.stage_series[1][1]: \"2031-02-14T21:15:00Z\" is not a level"},
+        {"a level on a mountain", "[ 900, -0.5 ]", "[ 900, 1000.5 ]", NULL,
+         "reaches[3].outlet.stage_series[1][1]: 1000.5 is not a level"},
+    };
+    DEMAND_ALL(SETTINGS_BOUNDARIES, changes);
 }
 
 static void the_river_must_be_a_tree_fed_by_gauges(void **state)
@@ -452,6 +489,7 @@ int main(void)
         cmocka_unit_test(a_deck_must_fit_its_marks_and_its_section),
         cmocka_unit_test(limits_must_not_contradict_each_other),
         cmocka_unit_test(names_must_lead_somewhere_and_to_one_thing),
+        cmocka_unit_test(what_stands_at_a_foot_must_fit_there),
         cmocka_unit_test(the_river_must_be_a_tree_fed_by_gauges),
         cmocka_unit_test(a_gauge_must_be_whole),
         cmocka_unit_test(a_section_must_have_what_its_shape_needs),

@@ -16,6 +16,7 @@ static const struct {
     {SETTINGS_EXAMPLE, SETTINGS_FOR_RUN},
     {SETTINGS_EVERY_OTHER_KEY, SETTINGS_FOR_RUN},
     {SETTINGS_OUTLET, SETTINGS_FOR_ROUTE},
+    {SETTINGS_BOUNDARIES, SETTINGS_FOR_ROUTE},
 };
 enum { BASE_COUNT = sizeof bases / sizeof bases[0] };
 
@@ -89,7 +90,7 @@ static void is_wrong_in_type(size_t base_index, const struct base *base, const s
         [SETTINGS_TYPE_TIME_OF_DAY] = "20", [SETTINGS_TYPE_ZONE] = "1",
         [SETTINGS_TYPE_PATH] = "false",     [SETTINGS_TYPE_FILE_NAME] = "[]",
         [SETTINGS_TYPE_POINTER] = "0",      [SETTINGS_TYPE_URL] = "{}",
-        [SETTINGS_TYPE_HOST_PORT] = "8460",
+        [SETTINGS_TYPE_HOST_PORT] = "8460", [SETTINGS_TYPE_MOMENT_OR_NUMBER] = "true",
     };
     demand_fault(base_index, base, value, wrong[value->key->type], "wrong type");
     demand_fault(base_index, base, value, "null", "nothing");
@@ -112,6 +113,7 @@ static void is_out_of_range(size_t base_index, const struct base *base, const st
         [SETTINGS_TYPE_TEXT] = "\"\"",
         [SETTINGS_TYPE_TRUTH] = "yes",
         [SETTINGS_TYPE_OBJECT] = "[{}]",
+        [SETTINGS_TYPE_MOMENT_OR_NUMBER] = "\"half past nine\"",
     };
     struct text text = {0};
     if (key->type == SETTINGS_TYPE_NUMBER || key->type == SETTINGS_TYPE_INTEGER) {
