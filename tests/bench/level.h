@@ -30,11 +30,19 @@ enum { FLOAT_SHIFT = 23 - 6 }; /* 64 rows to the octave, as in engine/bit_index.
 typedef void bench_float_step(const struct float_table *table, size_t cell_count, size_t member_count,
                               float *restrict state_m3, float *restrict passing_m3, float *restrict implicit_m3);
 
+/* Of the levels compiled in; the widest below, where a level has none of its own. */
+bench_triad *bench_triad_of(enum vector_level level);
+bench_float_step *bench_float_step_of(enum vector_level level);
+
 bench_triad bench_triad_baseline;
 bench_float_step bench_float_step_baseline;
 #if defined(FW_VECTOR_AVX2)
 bench_triad bench_triad_avx2;
 bench_float_step bench_float_step_avx2;
+#endif
+#if defined(FW_VECTOR_AVX512)
+bench_triad bench_triad_avx512;
+bench_float_step bench_float_step_avx512;
 #endif
 
 #endif

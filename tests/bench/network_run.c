@@ -1,0 +1,139 @@
+/* SPDX-License-Identifier: MIT */
+#include "tests/bench/network_run.h"
+
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+
+enum { VALUES_OF_A_LAP = 100000 };
+
+/* A chain from node 0 down; a tributary runs from a node of its own into the chain's newest. */
+static void lay_reaches(struct network_run *run)
+{
+    const struct network_run_setup *setup = &run->setup;
+    size_t stem_node = 0, next_node = 1, every = setup->reaches_to_a_tributary;
+    run->gauge_node[run->gauge_count++] = 0;
+    for (size_t i = 0; i < setup->reach_count; i++) {
+        bool is_tributary = every > 0 && i % every == every - 1 && i + 1 < setup->reach_count;
+        struct network_reach reach = {.id = "reach",
+                                      .from_node = is_tributary ? next_node : stem_node,
+                                      .to_node = is_tributary ? stem_node : next_node,
+                                      .length_m = setup->reach_m,
+                                      .slope_m_per_m = setup->slope_m_per_m,
+                                      .section = setup->section,
+                                      .method = setup->method};
+        if (is_tributary)
+            run->gauge_node[run->gauge_count++] = next_node;
+        else
+            stem_node = next_node;
+        next_node++;
+        run->reaches[i] = reach;
+        if (!is_tributary)
+            run->foot = (struct network_point){.id = "foot", .reach_index = i, .at_m = setup->reach_m};
+    }
+}
+
+static void fill_inflow(struct network_run *run)
+{
+    const struct network_run_setup *setup = &run->setup;
+    size_t members = setup->group_count * setup->members_per_group;
+    for (size_t member = 0; member < members; member++) {
+        struct flood flood = flood_of_member(&setup->flood, member);
+        for (size_t step = 0; step <= setup->step_count; step++) {
+            double flow = flood_m3s(setup->time_step_s * (double)step, &flood) / (double)run->gauge_count;
+            for (size_t gauge = 0; gauge < run->gauge_count; gauge++)
+                run->inflow_m3s[(gauge * (setup->step_count + 1) + step) * members + member] = flow;
+        }
+    }
+}
+
+bool network_run_init(struct network_run *run, const struct network_run_setup *setup)
+{
+    size_t values = (setup->step_count + 1) * setup->group_count * setup->members_per_group;
+    struct network_fault fault = {""};
+    *run = (struct network_run){.setup = *setup};
+    run->reaches = calloc(setup->reach_count, sizeof *run->reaches);
+    run->gauge_node = calloc(setup->reach_count + 1, sizeof *run->gauge_node);
+    run->factors = calloc(setup->group_count, sizeof *run->factors);
+    if (run->reaches == NULL || run->gauge_node == NULL || run->factors == NULL)
+        goto failed;
+    lay_reaches(run);
+    run->inflow_m3s = calloc(run->gauge_count * values, sizeof *run->inflow_m3s);
+    run->first_m3s = calloc(run->gauge_count * setup->group_count * setup->members_per_group, sizeof *run->first_m3s);
+    run->outflow_m3s = calloc(values, sizeof *run->outflow_m3s);
+    if (run->inflow_m3s == NULL || run->first_m3s == NULL || run->outflow_m3s == NULL)
+        goto failed;
+    fill_inflow(run);
+    for (size_t group = 0; group < setup->group_count; group++)
+        run->factors[group] = 1.0 + 0.01 * (double)group;
+    run->river = (struct network_river){.node_count = setup->reach_count + 1,
+                                        .gauge_count = run->gauge_count,
+                                        .gauge_node = run->gauge_node,
+                                        .reach_count = setup->reach_count,
+                                        .reaches = run->reaches,
+                                        .point_count = 1,
+                                        .points = &run->foot};
+    const struct network_options options = {.time_step_s = setup->time_step_s,
+                                            .fixed_cell_count = setup->cells_per_reach,
+                                            .group_count = setup->group_count,
+                                            .roughness_factors = run->factors,
+                                            .members_per_group = setup->members_per_group,
+                                            .largest_discharge_m3s = setup->flood.base_m3s + setup->flood.rise_m3s};
+    double begin = wall_s();
+    if (network_create(&run->river, &options, &run->network, &fault) != FW_OK) {
+        fprintf(stderr, "the network: %s\n", fault.text);
+        goto failed;
+    }
+    run->create_s = wall_s() - begin;
+    return true;
+failed:
+    network_run_clear(run);
+    return false;
+}
+
+void network_run_clear(struct network_run *run)
+{
+    network_destroy(run->network);
+    free(run->reaches);
+    free(run->gauge_node);
+    free(run->factors);
+    free(run->inflow_m3s);
+    free(run->first_m3s);
+    free(run->outflow_m3s);
+    memset(run, 0, sizeof *run);
+}
+
+static size_t values_of_a_step(const struct network_run *run)
+{
+    return run->setup.group_count * run->setup.members_per_group * network_cell_count(run->network, 0);
+}
+
+bool network_run_advance(struct network_run *run, struct laps *laps)
+{
+    size_t members = run->setup.group_count * run->setup.members_per_group, steps = run->setup.step_count;
+    for (size_t gauge = 0; gauge < run->gauge_count; gauge++)
+        memcpy(run->first_m3s + gauge * members, run->inflow_m3s + gauge * (steps + 1) * members,
+               members * sizeof *run->first_m3s);
+    if (network_start_steady(run->network, run->first_m3s) != FW_OK)
+        return false;
+    /* the arrays of one gauge and one point may be taken piece by piece; of more, only whole */
+    size_t piece = run->gauge_count > 1 ? steps : 1 + (size_t)(VALUES_OF_A_LAP / (double)values_of_a_step(run));
+    laps_start(laps);
+    for (size_t at = 0; at < steps; at += piece) {
+        size_t count = piece < steps - at ? piece : steps - at;
+        if (network_advance(run->network, count, run->inflow_m3s + at * members, run->outflow_m3s + at * members) !=
+            FW_OK)
+            return false;
+        laps_mark(laps);
+    }
+    return true;
+}
+
+double network_run_best_s(struct network_run *run, int repeats)
+{
+    struct laps laps = {0};
+    for (int repeat = 0; repeat < repeats; repeat++)
+        if (!network_run_advance(run, &laps))
+            return -1.0;
+    return laps_total_s(&laps);
+}
