@@ -9,6 +9,8 @@
 #include "engine/method.h"
 
 static const double longest_delay_s = 10.0 * 86400.0;
+/* Below these a number is a mistake, and what is divided by it overflows. */
+static const double shortest_reach_m = 0.1, flattest_slope = 1e-9, shortest_step_s = 1e-3, smallest_flow_m3s = 1e-6;
 static const double most_cells = 10000.0;
 
 __attribute__((format(printf, 2, 3))) static enum fw_status fault(struct network_fault *fault_out, const char *format,
@@ -49,12 +51,13 @@ static enum fw_status check_reach(const struct network_river *river, size_t reac
     if (reach->to_node >= river->node_count)
         return fault(fault_out, "reach '%s': to_node %zu, but there are %zu nodes", reach->id, reach->to_node,
                      river->node_count);
-    if (!is_positive(reach->length_m) || reach->length_m > 1e7)
-        return fault(fault_out, "reach '%s': length_m %g: expected more than 0, at most 1e7", reach->id,
-                     reach->length_m);
-    if (!is_positive(reach->slope_m_per_m) || reach->slope_m_per_m > 1.0)
-        return fault(fault_out, "reach '%s': slope_m_per_m %g: expected a fall downstream, more than 0 and at most 1",
-                     reach->id, reach->slope_m_per_m);
+    if (!(reach->length_m >= shortest_reach_m && reach->length_m <= 1e7))
+        return fault(fault_out, "reach '%s': length_m %g: expected %g to 1e7", reach->id, reach->length_m,
+                     shortest_reach_m);
+    if (!(reach->slope_m_per_m >= flattest_slope && reach->slope_m_per_m <= 1.0))
+        return fault(fault_out,
+                     "reach '%s': slope_m_per_m %g: expected a fall downstream, more than 0 (%g) and at most 1",
+                     reach->id, reach->slope_m_per_m, flattest_slope);
     if (!is_not_negative(reach->cell_m))
         return fault(fault_out, "reach '%s': cell_m %g: expected 0 (chosen) or more", reach->id, reach->cell_m);
     if (reach->cell_m > 0.0 && reach->length_m / reach->cell_m > most_cells)
@@ -178,8 +181,9 @@ static enum fw_status check_floods(const struct network_river *river, const stru
 
 static enum fw_status check_options(const struct network_options *options, struct network_fault *fault_out)
 {
-    if (!is_positive(options->time_step_s) || options->time_step_s > 86400.0)
-        return fault(fault_out, "options: time_step_s %g: expected more than 0, at most a day", options->time_step_s);
+    if (!(options->time_step_s >= shortest_step_s && options->time_step_s <= 86400.0))
+        return fault(fault_out, "options: time_step_s %g: expected %g to a day", options->time_step_s,
+                     shortest_step_s);
     if ((double)options->fixed_cell_count > most_cells)
         return fault(fault_out, "options: fixed_cell_count %zu: expected 0 (chosen) to %.0f",
                      options->fixed_cell_count, most_cells);
@@ -194,12 +198,13 @@ static enum fw_status check_options(const struct network_options *options, struc
         return fault(fault_out,
                      "options: members_per_group %zu: expected at least 1, at most a million in all groups",
                      options->members_per_group);
-    if (!is_positive(options->largest_discharge_m3s) || options->largest_discharge_m3s > 1e6)
-        return fault(fault_out, "options: largest_discharge_m3s %g: expected more than 0, at most 1e6",
-                     options->largest_discharge_m3s);
-    if (!is_not_negative(options->typical_peak_m3s) || options->typical_peak_m3s > options->largest_discharge_m3s)
-        return fault(fault_out, "options: typical_peak_m3s %g: expected 0 to largest_discharge_m3s %g",
-                     options->typical_peak_m3s, options->largest_discharge_m3s);
+    if (!(options->largest_discharge_m3s >= smallest_flow_m3s && options->largest_discharge_m3s <= 1e6))
+        return fault(fault_out, "options: largest_discharge_m3s %g: expected %g to 1e6",
+                     options->largest_discharge_m3s, smallest_flow_m3s);
+    if (!is_not_negative(options->typical_peak_m3s) || options->typical_peak_m3s > options->largest_discharge_m3s ||
+        (options->typical_peak_m3s > 0.0 && options->typical_peak_m3s < smallest_flow_m3s))
+        return fault(fault_out, "options: typical_peak_m3s %g: expected 0 (none), or %g to largest_discharge_m3s %g",
+                     options->typical_peak_m3s, smallest_flow_m3s, options->largest_discharge_m3s);
     return FW_OK;
 }
 

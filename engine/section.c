@@ -12,6 +12,9 @@
 enum { NEWTON_ONLY = 12, ITERATIONS_MAX = 240 };
 
 static const double DEEPEST_M = 1e30;
+/* Beyond these no number is a river's, and sums of them may overflow. */
+static const double SHORTEST_M = 1e-6, LONGEST_M = 1e6, FARTHEST_M = 1e7;
+static const double SMOOTHEST_N = 1e-6, ROUGHEST_N = 1e3;
 static const double CLOSE_ENOUGH = 1e-15; /* of the depth; the promise is 1e-12 */
 
 /* One panel, or the whole section, at one depth; the rates are per metre of depth. */
@@ -41,31 +44,36 @@ struct bed_walk {
 
 /* --- the check -------------------------------------------------------------------------------------------------- */
 
-static bool is_positive(double value)
+static bool is_length(double value_m)
 {
-    return isfinite(value) && value > 0;
+    return value_m >= SHORTEST_M && value_m <= LONGEST_M;
+}
+
+static bool is_roughness(double value)
+{
+    return value >= SMOOTHEST_N && value <= ROUGHEST_N;
 }
 
 static const char *fault_in_simple_shape(const struct section *section)
 {
-    const bool may_be_a_point = section->shape == SECTION_TRAPEZOID;
-    if (!isfinite(section->bottom_m) || section->bottom_m < 0 || (section->bottom_m <= 0 && !may_be_a_point))
-        return "bottom_m: must be above 0 (a trapezoid with sloping banks may have 0)";
+    const bool may_be_a_point = section->shape == SECTION_TRAPEZOID && section->bottom_m == 0;
+    if (!is_length(section->bottom_m) && !may_be_a_point)
+        return "bottom_m: must be above 0, 1e-6 to 1e6 m (a trapezoid with sloping banks may have 0)";
     if (section->shape == SECTION_TRAPEZOID) {
-        if (!isfinite(section->side_h_per_v) || section->side_h_per_v < 0)
-            return "side_h_per_v: must be 0 or more, horizontal to 1 vertical";
-        if (section->bottom_m <= 0 && section->side_h_per_v <= 0)
+        if (!(section->side_h_per_v >= 0 && section->side_h_per_v <= LONGEST_M))
+            return "side_h_per_v: must be 0 or more, horizontal to 1 vertical, at most 1e6";
+        if (may_be_a_point && section->side_h_per_v < SHORTEST_M)
             return "bottom_m: must be above 0 where the banks are vertical";
     }
-    if (!is_positive(section->roughness_n))
-        return "roughness_n: must be above 0";
+    if (!is_roughness(section->roughness_n))
+        return "roughness_n: must be above 0, 1e-6 to 1e3";
     if (section->has_plain) {
-        if (!is_positive(section->plain_above_m))
-            return "plain_above_m: must be above 0, a depth over the channel's bed";
-        if (!is_positive(section->plain_width_m))
-            return "plain_width_m: must be above 0";
-        if (!is_positive(section->plain_roughness_n))
-            return "plain_roughness_n: must be above 0";
+        if (!is_length(section->plain_above_m))
+            return "plain_above_m: must be above 0, a depth over the channel's bed, 1e-6 to 1e6 m";
+        if (!is_length(section->plain_width_m))
+            return "plain_width_m: must be above 0, 1e-6 to 1e6 m";
+        if (!is_roughness(section->plain_roughness_n))
+            return "plain_roughness_n: must be above 0, 1e-6 to 1e3";
     }
     return NULL;
 }
@@ -99,14 +107,14 @@ static const char *fault_in_panels(const struct section *section)
     const double left_m = section->point_offset_m[0];
     const double right_m = section->point_offset_m[section->point_count - 1];
     if (section->panel_count == 0)
-        return is_positive(section->roughness_n) ? NULL : "roughness_n: must be above 0 where there are no panels";
+        return is_roughness(section->roughness_n) ? NULL : "roughness_n: must be above 0 where there are no panels";
     if (section->panel_to_offset_m == NULL || section->panel_roughness_n == NULL)
         return "panels: offsets or roughness are missing";
     for (size_t panel = 0; panel < section->panel_count; panel++) {
         if (!isfinite(section->panel_to_offset_m[panel]))
             return "panel_to_offset_m: a value is not finite";
-        if (!is_positive(section->panel_roughness_n[panel]))
-            return "panel_roughness_n: must be above 0 in every panel";
+        if (!is_roughness(section->panel_roughness_n[panel]))
+            return "panel_roughness_n: must be above 0 in every panel, 1e-6 to 1e3";
         double from_m = panel == 0 ? left_m : section->panel_to_offset_m[panel - 1];
         if (section->panel_to_offset_m[panel] <= from_m)
             return "panel_to_offset_m: panels must go from left to right, each ending beyond its beginning";
@@ -129,6 +137,10 @@ static const char *fault_in_points(const struct section *section)
             return "point_offset_m: a value is not finite";
         if (!isfinite(section->point_elevation_m[point]))
             return "point_elevation_m: a value is not finite";
+        if (fabs(section->point_offset_m[point]) > FARTHEST_M)
+            return "point_offset_m: lies beyond 1e7 m";
+        if (fabs(section->point_elevation_m[point]) > LONGEST_M)
+            return "point_elevation_m: lies beyond 1e6 m";
         if (point > 0 && section->point_offset_m[point] < section->point_offset_m[point - 1])
             return "point_offset_m: folds back, offsets must never decrease";
     }
@@ -466,7 +478,7 @@ static enum fw_status find_depth(const struct sought *sought, double *depth_out_
 enum fw_status section_normal_depth_m(const struct section *section, double slope_m_per_m, double discharge_m3s,
                                       double *depth_out_m)
 {
-    if (!is_positive(slope_m_per_m) || !isfinite(discharge_m3s) || discharge_m3s < 0)
+    if (!isfinite(slope_m_per_m) || !(slope_m_per_m > 0) || !isfinite(discharge_m3s) || discharge_m3s < 0)
         return FW_BAD_INPUT;
     const struct sought sought = {.section = section, .wanted = discharge_m3s / sqrt(slope_m_per_m)};
     if (discharge_m3s > 0)

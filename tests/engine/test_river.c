@@ -75,6 +75,8 @@ SPOIL(to_outside, try->reaches[MIDDLE].to_node = NETWORK_NONE)
 SPOIL(zero_length, try->reaches[MIDDLE].length_m = 0.0)
 SPOIL(negative_length, try->reaches[MIDDLE].length_m = -5.0)
 SPOIL(nan_length, try->reaches[MIDDLE].length_m = NOT_A_NUMBER)
+SPOIL(hair_long, try->reaches[MIDDLE].length_m = 5e-324)
+SPOIL(hair_steep, try->reaches[MIDDLE].slope_m_per_m = 1e-300)
 SPOIL(endless, try->reaches[MIDDLE].length_m = ENDLESS)
 SPOIL(level_bed, try->reaches[MIDDLE].slope_m_per_m = 0.0)
 SPOIL(adverse_slope, try->reaches[MIDDLE].slope_m_per_m = -0.0024)
@@ -149,6 +151,9 @@ SPOIL(rating_discharge_negative, try->points[MOUTH].stage_rating = ((struct netw
 SPOIL(rating_stage_falls,
       try->points[MOUTH].stage_rating = ((struct network_stage_rating){4, try->rated_discharge_m3s, falling_stage_m}))
 SPOIL(no_step, try->options.time_step_s = 0.0)
+SPOIL(hair_step, try->options.time_step_s = 1e-300)
+SPOIL(hair_largest, try->options.largest_discharge_m3s = 1e-300)
+SPOIL(hair_peak, try->options.typical_peak_m3s = 1e-300)
 SPOIL(nan_step, try->options.time_step_s = NOT_A_NUMBER)
 SPOIL(too_many_cells, try->options.fixed_cell_count = 10001)
 SPOIL(no_group, try->options.group_count = 0)
@@ -186,6 +191,8 @@ static const struct {
     {zero_length, "reach 'middle'", "length_m 0"},
     {negative_length, "reach 'middle'", "length_m -5"},
     {nan_length, "reach 'middle'", "length_m nan"},
+    {hair_long, "reach 'middle'", "length_m 4.9"},
+    {hair_steep, "reach 'middle'", "slope_m_per_m 1e-300"},
     {endless, "reach 'middle'", "length_m inf"},
     {level_bed, "reach 'middle'", "slope_m_per_m 0"},
     {adverse_slope, "reach 'middle'", "slope_m_per_m -0.0024"},
@@ -224,6 +231,9 @@ static const struct {
     {rating_discharge_negative, "point 'mouth'", "row 0: discharge_m3s -2"},
     {rating_stage_falls, "point 'mouth'", "row 2: stage_m 0.93"},
     {no_step, "options", "time_step_s 0"},
+    {hair_step, "options", "time_step_s 1e-300"},
+    {hair_largest, "options", "largest_discharge_m3s 1e-300"},
+    {hair_peak, "options", "typical_peak_m3s 1e-300"},
     {nan_step, "options", "time_step_s nan"},
     {too_many_cells, "options", "fixed_cell_count 10001"},
     {no_group, "options", "group_count 0"},

@@ -645,7 +645,7 @@ static void every_impossible_number_of_a_simple_shape_is_refused_by_name(void **
     (void)state;
     static const char *const names[] = {
         "bottom_m:", "side_h_per_v:", "roughness_n:", "plain_above_m:", "plain_width_m:", "plain_roughness_n:"};
-    static const double values[] = {-1.3, (double)NAN, (double)INFINITY, (double)-INFINITY, 0};
+    static const double values[] = {-1.3, (double)NAN, (double)INFINITY, (double)-INFINITY, 1e308, 5e-324, 0};
     for (int member = BOTTOM; member <= PLAIN_ROUGHNESS; member++)
         for (size_t value = 0; value < sizeof values / sizeof *values; value++) {
             struct section section = ildra;
@@ -653,7 +653,8 @@ static void every_impossible_number_of_a_simple_shape_is_refused_by_name(void **
                                  &section.plain_above_m, &section.plain_width_m, &section.plain_roughness_n};
             *members[member] = values[value];
             const char *fault = "";
-            if (values[value] == 0 && member <= SIDE) { /* a triangle, and a rectangle: both are sections */
+            /* a triangle, and a rectangle (or as good as one): they are sections */
+            if ((values[value] == 0 && member <= SIDE) || (values[value] == 5e-324 && member == SIDE)) {
                 assert_int_equal(section_check(&section, &fault), FW_OK);
                 continue;
             }
@@ -697,6 +698,8 @@ static void surveys_that_cannot_be_are_refused_with_a_reason(void **state)
         {"an offset without end", "point_offset_m", {0, 3, 5, 7, (double)INFINITY}, {4, 0, 0, 0, 4}, POINTS},
         {"an elevation that is no number", "point_elevation_m", {0, 3, 5, 7, 9}, {4, 0, (double)NAN, 0, 4}, POINTS},
         {"an elevation without end", "point_elevation_m", {0, 3, 5, 7, 9}, {4, 0, 0, 0, (double)INFINITY}, POINTS},
+        {"an offset in the next country", "1e7", {0, 3, 5, 7, 3e7}, {4, 0, 0, 0, 4}, POINTS},
+        {"an elevation in space", "1e6", {0, 3, 5, 7, 9}, {4, 0, 2e6, 0, 4}, POINTS},
         {"a slot without width", "slot", {0, 5, 5, 5, 9}, {4, 1, 0, 1, 4}, POINTS},
         {"a wall up at the left end", "left end", {0, 0, 5, 7, 9}, {0, 4, 1, 1, 4}, POINTS},
         {"a wall down at the right end", "right end", {0, 3, 5, 9, 9}, {4, 1, 1, 4, 0}, POINTS},
