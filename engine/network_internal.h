@@ -26,6 +26,9 @@ struct delayed_share { /* of a gauge: (1 - part) of the flow `whole` steps ago a
 struct block_layout {
     size_t head_m3; /* [reach] passing volumes now */
     size_t foot_m3; /* [reach] */
+    size_t
+        lent_m3; /* [reach] kept back from its head: what ran back out of it and must come again first, never above 0 */
+    size_t lent_before_m3; /* [reach] a step ago */
     size_t gauge; /* [gauge][slot] flows, the newest in slot ring_at, older ones in the slots before it, cyclically */
     size_t given; /* [gauge] flows as given for this step, not a number where nothing was measured */
     size_t brought_m3s; /* [gauge] measured less routed, now */

@@ -71,6 +71,9 @@ double network_volume_m3(const struct network *network, size_t member_index)
                                              block[network->layout.foot_m3 + i * members + member]);
         else if (network_is_outlet_of(tree, i))
             volume += routed_tree_volume_m3(tree, group, member, state);
+        /* what ran back out of a head and has not come again; flows are summed by the trapezoidal rule */
+        volume += 0.5 * (block[network->layout.lent_m3 + i * members + member] +
+                         block[network->layout.lent_before_m3 + i * members + member]);
     }
     return volume;
 }

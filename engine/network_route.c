@@ -64,6 +64,28 @@ static void gather_head(const struct network *network, double *block, size_t rea
     }
 }
 
+/*
+ * At the foot of the full equations water may run back for a while (a front that rings, a pool that fills). The head
+ * below then takes nothing, and what ran back is kept from what comes next.
+ */
+static void hold_head(const struct network *network, double *block, size_t reach_index, bool is_start)
+{
+    size_t members = network->members_per_group;
+    double *lent = block + network->layout.lent_m3 + reach_index * members;
+    double *lent_before = block + network->layout.lent_before_m3 + reach_index * members;
+    const double *given = is_gauged_at_head(network, reach_index)
+                              ? block + network->layout.given + network->gauge_of_head[reach_index] * members
+                              : NULL;
+    for (size_t member = 0; member < members; member++) {
+        lent_before[member] = is_start ? 0.0 : lent[member];
+        if (given != NULL && !isnan(given[member]) && !is_start)
+            continue; /* what was measured goes on as it is */
+        double come = network->stop_m3[member] + lent_before[member];
+        network->stop_m3[member] = come > 0.0 ? come : 0.0;
+        lent[member] = is_start || come > 0.0 ? 0.0 : come;
+    }
+}
+
 /* What was measured at the head goes on in place of what came. */
 static void replace_head(const struct network *network, const double *block, size_t reach_index)
 {
@@ -136,6 +158,7 @@ static void move_tree(struct network *network, size_t group, double *block, stru
     for (size_t branch = 0; branch < tree->branch_count; branch++) {
         size_t reach_index = tree->reach_index[branch];
         gather_head(network, block, reach_index, newest_slot);
+        hold_head(network, block, reach_index, is_start);
         for (size_t member = 0; member < members; member++)
             tree->inflow_m3s[branch * members + member] = network->stop_m3[member] / network->time_step_s;
         if (is_gauged_at_head(network, reach_index))
@@ -252,6 +275,7 @@ static enum fw_status move_reaches(struct network *network, size_t group, double
             continue;
         }
         gather_head(network, block, reach_index, newest_slot);
+        hold_head(network, block, reach_index, is_start);
         replace_head(network, block, reach_index);
         if (is_start)
             routed_reach_start_steady(reach, group, &flows, state);
