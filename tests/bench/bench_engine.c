@@ -94,6 +94,7 @@ int main(int argument_count, char *arguments[])
     } parts[] = {{"storage", bench_storage}, {"full", bench_full}, {"growth", bench_growth}, {"rival", bench_rival}};
     enum { PARTS = sizeof parts / sizeof *parts };
     struct engine_bench bench = {0};
+    setvbuf(stdout, NULL, _IOLBF, 0); /* a long run into a file can be followed */
     bool is_wanted[PARTS] = {0}, is_any = false, is_well = true;
     for (int i = 1; i < argument_count; i++) {
         bool is_known = strcmp(arguments[i], "--smoke") == 0;

@@ -3,8 +3,6 @@
 
 #include <math.h>
 
-static const double smallest_peak_error = 1e-3, smallest_time_error_s = 15.0;
-
 const struct river_case river_cases[RIVER_CASE_COUNT] = {
     {.name = "published",
      .description = "50 m rectangle, n 0.035, S0 0.001, 100 km, 100 to 900 m3/s in 24 h (Todini 2007)",
@@ -94,9 +92,20 @@ struct accuracy accuracy_of(size_t count, double step_s, const double truth[], c
     return (struct accuracy){got.value / expected.value - 1.0, got.time_s - expected.time_s, missed / spread};
 }
 
-bool accuracy_is_as_good(const struct accuracy *accuracy, const struct accuracy *as)
+struct accuracy accuracy_goal_as(const struct accuracy *accuracy)
 {
-    return accuracy->missed <= as->missed &&
-           fabs(accuracy->peak_error) <= fmax(fabs(as->peak_error), smallest_peak_error) &&
-           fabs(accuracy->time_error_s) <= fmax(fabs(as->time_error_s), smallest_time_error_s);
+    return (struct accuracy){.peak_error = fmax(fabs(accuracy->peak_error) + 0.0005, 0.001),
+                             .time_error_s = fmax(fabs(accuracy->time_error_s) + 6.0, 15.0),
+                             .missed = 1.05 * accuracy->missed};
+}
+
+struct accuracy accuracy_goal_asked(double step_s)
+{
+    return (struct accuracy){.peak_error = 0.003, .time_error_s = fmax(60.0, 0.5 * step_s), .missed = 2e-4};
+}
+
+bool accuracy_reaches(const struct accuracy *accuracy, const struct accuracy *goal)
+{
+    return accuracy->missed <= goal->missed && fabs(accuracy->peak_error) <= goal->peak_error &&
+           fabs(accuracy->time_error_s) <= goal->time_error_s;
 }

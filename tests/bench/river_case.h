@@ -25,7 +25,7 @@ struct river_case {
     struct flood flood;
     double duration_s, time_step_s;
     size_t cell_count;
-    bool is_for_storage_form; /* by the method's rule */
+    bool is_for_storage_form; /* by the rule of engine/method.h, or nearly; else the full equations alone */
     size_t truth_cell_count;  /* of the fine grid that judges */
 };
 
@@ -45,7 +45,12 @@ struct accuracy {
 
 struct accuracy accuracy_of(size_t count, double step_s, const double truth[], const double values[]);
 
-/* Equal or better: as little missed, and peak and time no farther off, or by less than anyone reads. */
-bool accuracy_is_as_good(const struct accuracy *accuracy, const struct accuracy *as);
+/* What to reach: as near as another came, with a little room (a peak nobody can tell apart is not a worse one). */
+struct accuracy accuracy_goal_as(const struct accuracy *accuracy);
+
+/* What is asked of the engine on named rivers: peak 0.3 %, its time 1 min or half a step, efficiency 0.9998. */
+struct accuracy accuracy_goal_asked(double step_s);
+
+bool accuracy_reaches(const struct accuracy *accuracy, const struct accuracy *goal);
 
 #endif
