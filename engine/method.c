@@ -26,6 +26,7 @@ static const char *const reasons[METHOD_REASON_COUNT] = {
     [METHOD_BEYOND_LIMIT] = "the wave spreads too much for the storage form",
     [METHOD_EARLY_LEVELS] = "levels would be reached too early by the storage form",
     [METHOD_HELD_LEVEL] = "a level is held at the foot",
+    [METHOD_STRUCTURE] = "a structure or a drop of the bed stands at the foot",
     [METHOD_BACKWATER] = "a control below raises the level",
     [METHOD_TOO_STEEP] = "the full equations would be wanted, but so steep a reach needs too many cells",
     [METHOD_TOO_FAST] = "the full equations would be wanted, but the flow is too near critical",
@@ -152,6 +153,8 @@ static enum method_reason reason_for(const struct method_reach *reach, const str
     bool is_raised = reach->has_control && reach->raise_share > METHOD_RAISE_LIMIT;
     if (reach->is_level_held)
         return METHOD_HELD_LEVEL;
+    if (reach->has_structure)
+        return METHOD_STRUCTURE;
     if (!(choice->flood.peak_m3s > 0.0))
         return METHOD_NO_FLOOD;
     bool is_peak_right = choice->storage_number < METHOD_STORAGE_LIMIT;
@@ -185,7 +188,8 @@ void method_choose(const struct method_reach *reach, const struct method_flood *
     }
     choice_out->reason = reason_for(reach, choice_out);
     bool is_full = choice_out->reason == METHOD_BEYOND_LIMIT || choice_out->reason == METHOD_EARLY_LEVELS ||
-                   choice_out->reason == METHOD_HELD_LEVEL || choice_out->reason == METHOD_BACKWATER;
+                   choice_out->reason == METHOD_HELD_LEVEL || choice_out->reason == METHOD_STRUCTURE ||
+                   choice_out->reason == METHOD_BACKWATER;
     choice_out->method = choice_out->advised = is_full ? NETWORK_DYNAMIC : NETWORK_MUSKINGUM_CUNGE;
 }
 

@@ -43,6 +43,7 @@ struct method_reach {
     const struct flow_curve *curve;
     double length_m, slope_m_per_m;
     bool is_level_held; /* at its foot: an outlet's level */
+    bool has_structure; /* at its foot, or a drop of the bed */
     bool has_control;   /* what raises the level at its foot is computed by the full equations */
     double raise_share; /* of the depth at its foot above normal, by normal depth, at the flow where it is most */
 };
@@ -54,6 +55,7 @@ enum method_reason {
     METHOD_BEYOND_LIMIT, /* full equations: the storage form's peak would come late and low */
     METHOD_EARLY_LEVELS, /* full equations: the storage form's levels would come early */
     METHOD_HELD_LEVEL,   /* full equations: a level is held at the foot */
+    METHOD_STRUCTURE,    /* full equations: a structure or a drop stands at the foot */
     METHOD_BACKWATER,    /* full equations: a control below raises the level */
     METHOD_TOO_STEEP,    /* full equations wanted; their cells would be too many: storage form */
     METHOD_TOO_FAST,     /* full equations wanted; too near critical flow: storage form */

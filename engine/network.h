@@ -22,6 +22,7 @@
 #include <stdint.h>
 
 #include "engine/section.h"
+#include "engine/stage_structure.h"
 #include "engine/status.h"
 
 enum network_method {
@@ -53,11 +54,24 @@ struct network_reach {
     double outlet_depth_m;
     bool has_outlet_level;
     size_t outlet_level; /* which of the river's levels */
+    /*
+     * What rates the flow at the foot by its levels, by the full equations: a weir, a road embankment, a culvert's table,
+     * with or without a reach below; NULL: nothing. And how far the bed falls from this foot to the head below: alone, an
+     * overfall (the flow is critical at the edge until the water below drowns it). Where the river goes on by
+     * another method, or unmodelled, neither is drowned.
+     */
+    const struct stage_structure *foot_structure;
+    double foot_drop_m;
 };
 
 static inline bool network_reach_has_held_foot(const struct network_reach *reach)
 {
     return reach->outlet_depth_m > 0.0 || reach->has_outlet_level;
+}
+
+static inline bool network_reach_has_control(const struct network_reach *reach)
+{
+    return reach->foot_structure != NULL || reach->foot_drop_m > 0.0;
 }
 
 struct network_side_inflow { /* enters the cell that holds at_m, at the mean of its flows at both ends of a step */

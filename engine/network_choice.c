@@ -83,7 +83,11 @@ static double foot_depth_m(const struct network *network, size_t reach_index, in
     size_t below = network_reach_from(&network->river, reach->to_node);
     if (reach->outlet_depth_m > 0.0)
         return reach->outlet_depth_m;
-    return below == NETWORK_NONE ? (double)NAN : levels[below].depth_m[level];
+    double below_m = below == NETWORK_NONE ? -(double)INFINITY : levels[below].depth_m[level] - reach->foot_drop_m;
+    if (reach->foot_structure != NULL)
+        return stage_structure_depth_above_m(reach->foot_structure,
+                                             level_flow_m3s(&network->choices[reach_index].flood, level), below_m);
+    return below == NETWORK_NONE ? (double)NAN : below_m;
 }
 
 /* How far the foot is raised above normal, at worst, and the levels at the head that follow. */
@@ -124,6 +128,7 @@ enum fw_status network_choose_methods(struct network *network, const struct netw
             .length_m = source->length_m,
             .slope_m_per_m = source->slope_m_per_m,
             .is_level_held = network_reach_has_held_foot(source),
+            .has_structure = network_reach_has_control(source),
             .has_control = below != NETWORK_NONE && network_method_is_full(river->reaches[below].method),
             .raise_share = follow_levels(network, reach, levels),
         };

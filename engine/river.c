@@ -80,6 +80,19 @@ static enum fw_status check_reach(const struct network_river *river, size_t reac
     if (network_reach_has_held_foot(reach) && network_reach_from(river, reach->to_node) != NETWORK_NONE)
         return fault(fault_out, "reach '%s': %s: a level is held at the foot of a last reach only", reach->id,
                      held_foot(reach));
+    if (reach->foot_structure != NULL && stage_structure_check(reach->foot_structure) != FW_OK)
+        return fault(fault_out,
+                     "reach '%s': foot_structure: tables must rise from 0 flow at the sill, shares lie in 0 to 1",
+                     reach->id);
+    if (!is_not_negative(reach->foot_drop_m) || reach->foot_drop_m > 1e3)
+        return fault(fault_out, "reach '%s': foot_drop_m %g: expected 0 (none) to 1000", reach->id,
+                     reach->foot_drop_m);
+    if (network_reach_has_control(reach) && !network_method_is_full(reach->method) && reach->method != NETWORK_AUTO)
+        return fault(fault_out, "reach '%s': %s: needs method auto, dynamic or diffusive", reach->id,
+                     reach->foot_structure != NULL ? "foot_structure" : "foot_drop_m");
+    if (network_reach_has_control(reach) && network_reach_has_held_foot(reach))
+        return fault(fault_out, "reach '%s': %s: stands where a level is held too; expected a short reach between",
+                     reach->id, reach->foot_structure != NULL ? "foot_structure" : "foot_drop_m");
     if (reach->section == NULL)
         return fault(fault_out, "reach '%s': has no section", reach->id);
     if (section_check(reach->section, &section_fault) != FW_OK)

@@ -14,6 +14,7 @@
 static const double gravity_m_s2 = 9.80665;
 static const double extension_lengths = 5.0;     /* times D/c at the peak */
 static const double extension_lengthening = 1.2; /* cell by cell: where their length jumps, waves are thrown back */
+static const double edge_share = 0.7;            /* of the steepest friction at an edge that its cell can carry */
 static const double most_given_back = 0.02;      /* of the water in the last cell, in one step */
 
 /* --- making ------------------------------------------------------------------------------------------------------- */
@@ -33,7 +34,7 @@ static size_t outlet_interval_count(const struct routed_reach *reach)
 {
     size_t count = 0;
     double extension_m = 0.0, cell_m = reach->cell_m;
-    if (network_reach_has_held_foot(reach->source))
+    if (network_reach_has_held_foot(reach->source) || network_reach_has_control(reach->source))
         return reach->cell_count;
     for (; count < 3 || extension_m < extension_lengths * reach->diffusion_length_m; count++) {
         cell_m = extension_cell_m(reach, cell_m);
@@ -60,6 +61,7 @@ static enum fw_status allocate_parts(struct routed_tree *tree, size_t side_count
     tree->side_index = room_for(side_count, sizeof *tree->side_index);
     tree->tables = room_for(groups * branches, sizeof *tree->tables);
     tree->branches = room_for(groups * branches, sizeof *tree->branches);
+    tree->overfalls = room_for(branches, sizeof *tree->overfalls);
     tree->trees = room_for(groups, sizeof *tree->trees);
     tree->inflow_m3s = room_for(branches * tree->member_count, sizeof *tree->inflow_m3s);
     tree->given_depth_m = room_for(tree->member_count, sizeof *tree->given_depth_m);
@@ -68,8 +70,9 @@ static enum fw_status allocate_parts(struct routed_tree *tree, size_t side_count
     tree->side_m3 = room_for(side_count * tree->member_count, sizeof *tree->side_m3);
     bool is_short = tree->interval_m == NULL || tree->slope_m_per_m == NULL || tree->side_node == NULL ||
                     tree->side_index == NULL || tree->tables == NULL || tree->branches == NULL ||
-                    tree->trees == NULL || tree->inflow_m3s == NULL || tree->given_depth_m == NULL ||
-                    tree->gauged_m3s == NULL || tree->foot_depth_m == NULL || tree->side_m3 == NULL;
+                    tree->overfalls == NULL || tree->trees == NULL || tree->inflow_m3s == NULL ||
+                    tree->given_depth_m == NULL || tree->gauged_m3s == NULL || tree->foot_depth_m == NULL ||
+                    tree->side_m3 == NULL;
     return is_short ? FW_NO_MEMORY : FW_OK;
 }
 
@@ -105,6 +108,68 @@ static size_t branch_of_reach(const struct routed_tree *tree, size_t reach_index
     return DYNAMIC_NOWHERE;
 }
 
+/* The table of the roughest members. */
+static const struct area_table *roughest_table(const struct routed_tree *tree, size_t branch)
+{
+    const struct area_table *roughest = &tree->tables[branch];
+    double area = roughest->largest_area_m2;
+    for (size_t group = 1; group < tree->group_count; group++) {
+        const struct area_table *table = &tree->tables[group * tree->branch_count + branch];
+        if (area_table_conveyance_m3s(table, area) < area_table_conveyance_m3s(roughest, area))
+            roughest = table;
+    }
+    return roughest;
+}
+
+/*
+ * Critical flow at the edge, by depth: Q = A sqrt(g A / B), made to rise where a plain floods. A cell is longer than the
+ * drawdown to the critical depth: friction at such an edge, taken for the whole cell, would make the flow fall with the
+ * level. So the edge passes no more than a friction slope can that still rises: 1/dx > d(Sf)/dh / 2.
+ */
+static void make_overfall(struct routed_overfall *overfall, const struct area_table *table, double cell_m)
+{
+    double from = area_table_depth_m(table, table->smallest_area_m2);
+    double to = area_table_depth_m(table, table->largest_area_m2);
+    for (size_t row = 1; row < ROUTED_OVERFALL_ROWS; row++) {
+        double depth = from * pow(to / from, (double)(row - 1) / (ROUTED_OVERFALL_ROWS - 2));
+        double area = area_table_area_at_depth_m2(table, depth);
+        const struct area_table_row *at = area_table_row_at(table, area);
+        double critical = area * sqrt(gravity_m_s2 * area * at->depth_1);
+        double conveyance = at->conveyance_0 + at->conveyance_1 * area;
+        double steepest = edge_share * conveyance * at->depth_1 / (at->conveyance_1 * cell_m);
+        double most = fmin(critical, conveyance * sqrt(steepest));
+        overfall->depth_m[row] = depth;
+        overfall->discharge_m3s[row] = fmax(critical, 1.001 * overfall->discharge_m3s[row - 1]);
+        overfall->most_m3s[row] = fmax(most, 1.001 * overfall->most_m3s[row - 1]);
+    }
+    overfall->opening = (struct stage_opening){.row_count = ROUTED_OVERFALL_ROWS,
+                                               .depth_m = overfall->depth_m,
+                                               .discharge_m3s = overfall->discharge_m3s,
+                                               .open_share = 1.0,
+                                               .most_m3s = overfall->most_m3s};
+    overfall->structure = (struct stage_structure){.opening_count = 1, .openings = &overfall->opening};
+}
+
+static const struct stage_structure *structure_at_foot(struct routed_tree *tree, size_t branch,
+                                                       const struct routed_reach *reach)
+{
+    const struct network_reach *source = reach->source;
+    if (source->foot_structure == NULL && source->foot_drop_m > 0.0)
+        make_overfall(&tree->overfalls[branch], roughest_table(tree, branch), reach->cell_m);
+    return source->foot_structure != NULL ? source->foot_structure
+           : source->foot_drop_m > 0.0    ? &tree->overfalls[branch].structure
+                                          : NULL;
+}
+
+static enum dynamic_foot foot_of(const struct network_reach *source, bool is_outlet)
+{
+    if (network_reach_has_control(source))
+        return DYNAMIC_FOOT_STRUCTURE;
+    if (!is_outlet)
+        return DYNAMIC_FOOT_JOINS;
+    return network_reach_has_held_foot(source) ? DYNAMIC_FOOT_STAGE : DYNAMIC_FOOT_NORMAL;
+}
+
 static void place_branches(struct routed_tree *tree, const struct network_river *river,
                            const struct routed_reach reaches[])
 {
@@ -125,9 +190,9 @@ static void place_branches(struct routed_tree *tree, const struct network_river 
                 .interval_count = count,
                 .interval_m = tree->interval_m + at,
                 .slope_m_per_m = tree->slope_m_per_m + at,
-                .foot = !is_outlet                            ? DYNAMIC_FOOT_JOINS
-                        : network_reach_has_held_foot(source) ? DYNAMIC_FOOT_STAGE
-                                                              : DYNAMIC_FOOT_NORMAL,
+                .foot = foot_of(source, is_outlet),
+                .bed_drop_m = source->foot_drop_m,
+                .structure = structure_at_foot(tree, branch, reach),
                 .below =
                     is_outlet ? DYNAMIC_NOWHERE : branch_of_reach(tree, network_reach_from(river, source->to_node))};
         at += count;
@@ -215,6 +280,7 @@ void routed_tree_clear(struct routed_tree *tree)
     free(tree->side_index);
     free(tree->tables);
     free(tree->branches);
+    free(tree->overfalls);
     free(tree->trees);
     free(tree->inflow_m3s);
     free(tree->given_depth_m);

@@ -12,6 +12,14 @@
 #include "engine/dynamic_tree.h"
 #include "engine/routed_reach.h"
 
+enum { ROUTED_OVERFALL_ROWS = 96 };
+
+struct routed_overfall { /* a drop of the bed alone: critical flow at its edge */
+    double depth_m[ROUTED_OVERFALL_ROWS], discharge_m3s[ROUTED_OVERFALL_ROWS], most_m3s[ROUTED_OVERFALL_ROWS];
+    struct stage_opening opening;
+    struct stage_structure structure;
+};
+
 struct routed_tree {
     size_t branch_count;
     size_t *reach_index; /* per branch */
@@ -22,11 +30,12 @@ struct routed_tree {
     size_t node_count;
     size_t outlet_cell_count; /* of the outlet's intervals, those above its foot */
     double *interval_m, *slope_m_per_m;
-    size_t *side_node;               /* as in struct dynamic_tree */
-    size_t *side_index;              /* into the river's side inflows; NETWORK_NONE: what the tree owes itself */
-    struct area_table *tables;       /* [group][branch] */
-    struct dynamic_branch *branches; /* [group][branch] */
-    struct dynamic_tree *trees;      /* [group] */
+    size_t *side_node;                 /* as in struct dynamic_tree */
+    size_t *side_index;                /* into the river's side inflows; NETWORK_NONE: what the tree owes itself */
+    struct area_table *tables;         /* [group][branch] */
+    struct dynamic_branch *branches;   /* [group][branch] */
+    struct routed_overfall *overfalls; /* [branch] */
+    struct dynamic_tree *trees;        /* [group] */
     struct dynamic_work *work;
     struct dynamic_counts counts;
     double *inflow_m3s;    /* [branch][member] */

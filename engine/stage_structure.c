@@ -21,22 +21,29 @@ enum fw_status stage_structure_check(const struct stage_structure *structure)
                 !(opening->discharge_m3s[row] > opening->discharge_m3s[row - 1]) ||
                 !isfinite(opening->discharge_m3s[row]))
                 return FW_BAD_INPUT;
+        for (size_t row = 0; opening->most_m3s != NULL && row < opening->row_count; row++)
+            if (!isfinite(opening->most_m3s[row]) ||
+                !(row == 0 ? opening->most_m3s[row] == 0.0 : opening->most_m3s[row] > opening->most_m3s[row - 1]))
+                return FW_BAD_INPUT;
     }
     return FW_OK;
 }
 
-/* Without water below: discharge and its slope. */
-static struct stage_flow free_flow(const struct stage_opening *opening, double depth_m)
+/* A column of an opening's table at a depth above its sill: the value and its slope. */
+static struct stage_flow line_at(const struct stage_opening *opening, const double discharge_m3s[], double depth_m)
 {
-    if (depth_m <= opening->depth_m[0])
-        return (struct stage_flow){0};
-    size_t row = 0;
-    while (row + 2 < opening->row_count && opening->depth_m[row + 1] < depth_m)
-        row++;
-    double slope = (opening->discharge_m3s[row + 1] - opening->discharge_m3s[row]) /
-                   (opening->depth_m[row + 1] - opening->depth_m[row]);
-    return (struct stage_flow){.discharge_m3s = opening->open_share * (opening->discharge_m3s[row] +
-                                                                       slope * (depth_m - opening->depth_m[row])),
+    size_t row = 0, last = opening->row_count - 2;
+    while (row < last) { /* the first row whose next is not below the depth */
+        size_t middle = row + (last - row) / 2;
+        if (opening->depth_m[middle + 1] < depth_m)
+            row = middle + 1;
+        else
+            last = middle;
+    }
+    double slope =
+        (discharge_m3s[row + 1] - discharge_m3s[row]) / (opening->depth_m[row + 1] - opening->depth_m[row]);
+    return (struct stage_flow){.discharge_m3s = opening->open_share *
+                                                (discharge_m3s[row] + slope * (depth_m - opening->depth_m[row])),
                                .by_depth_above_m2s = opening->open_share * slope};
 }
 
@@ -61,9 +68,9 @@ struct stage_flow stage_structure_flow(const struct stage_structure *structure, 
         const struct stage_opening *opening = &structure->openings[i];
         double head_above = depth_above_m - opening->depth_m[0];
         double head_below = depth_below_m - opening->depth_m[0];
-        struct stage_flow flow = free_flow(opening, depth_above_m);
-        if (head_above <= 0.0 || head_below >= head_above)
+        if (!(head_above > 0.0) || head_below >= head_above)
             continue;
+        struct stage_flow flow = line_at(opening, opening->discharge_m3s, depth_above_m);
         if (head_below > 0.0) {
             double ratio = head_below / head_above;
             double factor_slope;
@@ -72,6 +79,10 @@ struct stage_flow stage_structure_flow(const struct stage_structure *structure, 
             flow.by_depth_above_m2s =
                 flow.by_depth_above_m2s * factor - flow.discharge_m3s * factor_slope * ratio / head_above;
             flow.discharge_m3s *= factor;
+        }
+        if (opening->most_m3s != NULL) {
+            struct stage_flow most = line_at(opening, opening->most_m3s, depth_above_m);
+            flow = flow.discharge_m3s > most.discharge_m3s ? most : flow;
         }
         sum.discharge_m3s += flow.discharge_m3s;
         sum.by_depth_above_m2s += flow.by_depth_above_m2s;

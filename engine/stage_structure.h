@@ -20,6 +20,7 @@ struct stage_opening {           /* the caller owns the arrays */
     const double *depth_m;       /* rising; the first is the sill, below which nothing flows */
     const double *discharge_m3s; /* rising from 0; beyond the last row the last line is carried on */
     double open_share;           /* 1: clean; 0: blocked */
+    const double *most_m3s;      /* NULL, or by the same depths, rising: never more than so much, free or drowned */
 };
 
 struct stage_structure {
@@ -34,7 +35,7 @@ struct stage_flow {
 };
 
 /* FW_BAD_INPUT  no openings, a table that does not rise or is not finite, no discharge of 0 at its sill, a share
- *               outside 0 to 1. */
+ *               outside 0 to 1, a most that does not rise from 0. */
 FW_MUST_CHECK enum fw_status stage_structure_check(const struct stage_structure *structure);
 
 /* Depths above the bed at the structure; where nothing is below, any depth_below_m at or under the sills. */

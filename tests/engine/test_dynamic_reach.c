@@ -305,7 +305,8 @@ static void a_rating_of_normal_depth_is_normal_depth(void **state)
         depth_m[i] = 0.02 * (double)i;
         discharge_m3s[i] = section_normal_discharge_m3s(&from.section, from.slope_m_per_m, depth_m[i]);
     }
-    const struct stage_opening opening = {ROWS, depth_m, discharge_m3s, 1.0};
+    const struct stage_opening opening = {
+        .row_count = ROWS, .depth_m = depth_m, .discharge_m3s = discharge_m3s, .open_share = 1.0};
     const struct stage_structure structure = {1, &opening};
     rated.branch.foot = DYNAMIC_FOOT_STRUCTURE;
     rated.branch.structure = &structure;

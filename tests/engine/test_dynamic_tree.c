@@ -328,8 +328,9 @@ struct weir_run {
 
 static struct weir_run run_weir(double culvert_open_share, double bed_drop_m)
 {
-    const struct stage_opening openings[] = {{7, weir_depth_m, weir_m3s, 1.0},
-                                             {4, culvert_depth_m, culvert_m3s, culvert_open_share}};
+    const struct stage_opening openings[] = {
+        {.row_count = 7, .depth_m = weir_depth_m, .discharge_m3s = weir_m3s, .open_share = 1.0},
+        {.row_count = 4, .depth_m = culvert_depth_m, .discharge_m3s = culvert_m3s, .open_share = culvert_open_share}};
     const struct stage_structure structure = {2, openings};
     struct grove river;
     struct weir_run run = {0};

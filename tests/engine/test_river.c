@@ -120,6 +120,28 @@ static void level_twice(struct try_river *try)
     try->reaches[LOWER].outlet_depth_m = 2.3;
 }
 
+static const double fallen_m3s[] = {0.0, 3.0, 2.0};
+static const double rising_m[] = {0.2, 0.7, 1.1};
+static const struct stage_opening fallen = {
+    .row_count = 3, .depth_m = rising_m, .discharge_m3s = fallen_m3s, .open_share = 1.0};
+static const struct stage_structure unsound_structure = {1, &fallen};
+static const double risen_m3s[] = {0.0, 3.0, 7.0};
+static const struct stage_opening risen = {
+    .row_count = 3, .depth_m = rising_m, .discharge_m3s = risen_m3s, .open_share = 1.0};
+static const struct stage_structure sound_structure = {1, &risen};
+
+SPOIL(structure_that_falls, try->reaches[MIDDLE].foot_structure = &unsound_structure)
+SPOIL(structure_by_storage, try->reaches[MIDDLE].foot_structure = &sound_structure)
+SPOIL(drop_by_storage, try->reaches[MIDDLE].foot_drop_m = 0.4)
+SPOIL(drop_upwards, try->reaches[MIDDLE].foot_drop_m = -0.4)
+SPOIL(nan_drop, try->reaches[MIDDLE].foot_drop_m = NOT_A_NUMBER)
+
+static void structure_in_a_lake(struct try_river *try)
+{
+    give_level(try, LOWER, 1);
+    try->reaches[LOWER].foot_structure = &sound_structure;
+}
+
 SPOIL(no_section, try->reaches[MIDDLE].section = NULL)
 SPOIL(bad_section, try->reaches[MIDDLE].section = &impossible)
 SPOIL(gauge_outside, try->gauge_node[1] = 5)
@@ -205,6 +227,12 @@ static const struct {
     {negative_held_level, "reach 'lower'", "outlet_depth_m -0.1"},
     {nan_held_level, "reach 'lower'", "outlet_depth_m nan"},
     {held_level_in_mid_river, "reach 'middle'", "a last reach only"},
+    {structure_that_falls, "reach 'middle'", "foot_structure: tables must rise"},
+    {structure_by_storage, "reach 'middle'", "foot_structure: needs method auto, dynamic or diffusive"},
+    {drop_by_storage, "reach 'middle'", "foot_drop_m: needs method auto, dynamic or diffusive"},
+    {drop_upwards, "reach 'middle'", "foot_drop_m -0.4"},
+    {nan_drop, "reach 'middle'", "foot_drop_m nan"},
+    {structure_in_a_lake, "reach 'lower'", "foot_structure: stands where a level is held too"},
     {no_section, "reach 'middle'", "no section"},
     {bad_section, "reach 'middle'", "section: "},
     {gauge_outside, "gauge_node[1]", "node 5"},

@@ -101,6 +101,26 @@ static void the_depth_that_passes_a_flow_passes_it(void **state)
     assert_true(stage_structure_depth_above_m(&blocked, 1.0, nothing_below) == 1e6);
 }
 
+/* Free it is the lesser of the two; drowned far enough the limit does nothing. */
+static void a_limit_holds_free_or_drowned(void **state)
+{
+    (void)state;
+    static const double most_m3s[] = {0.0, 0.4, 2.0, 6.0, 9.0};
+    struct stage_opening limited = openings[0];
+    limited.most_m3s = most_m3s;
+    const struct stage_structure structure = {1, &limited};
+    assert_int_equal(stage_structure_check(&structure), FW_OK);
+    struct stage_flow flow = stage_structure_flow(&structure, 1.8, nothing_below);
+    assert_true(fabs(flow.discharge_m3s - 4.0) <= 1e-12);
+    assert_true(fabs(flow.by_depth_above_m2s - 10.0) <= 1e-12);
+    flow = stage_structure_flow(&structure, 1.8, 1.5); /* a little drowned: still more than the limit */
+    assert_true(fabs(flow.discharge_m3s - 4.0) <= 1e-12 && flow.by_depth_below_m2s == 0.0);
+    struct stage_flow unlimited = stage_structure_flow(&weir, 1.8, 1.76);
+    flow = stage_structure_flow(&structure, 1.8, 1.76);
+    assert_true(unlimited.discharge_m3s < 4.0 && flow.discharge_m3s == unlimited.discharge_m3s);
+    assert_true(flow.by_depth_below_m2s == unlimited.by_depth_below_m2s);
+}
+
 static void faulty_tables_are_refused(void **state)
 {
     (void)state;
@@ -111,17 +131,28 @@ static void faulty_tables_are_refused(void **state)
         const char *shows;
         struct stage_opening opening;
     } rows[] = {
-        {"one row", {1, weir_depth_m, weir_m3s, 1.0}},
-        {"depth falls", {5, falling, weir_m3s, 1.0}},
-        {"depth endless", {5, endless, weir_m3s, 1.0}},
-        {"flow at the sill", {5, weir_depth_m, not_from_zero, 1.0}},
-        {"flow does not rise", {5, weir_depth_m, level, 1.0}},
-        {"flow endless", {2, weir_depth_m, endless_m3s, 1.0}},
-        {"more than open", {5, weir_depth_m, weir_m3s, 1.01}},
-        {"less than shut", {5, weir_depth_m, weir_m3s, -0.01}},
-        {"share unknown", {5, weir_depth_m, weir_m3s, (double)NAN}},
+        {"one row", {.row_count = 1, .depth_m = weir_depth_m, .discharge_m3s = weir_m3s, .open_share = 1.0}},
+        {"depth falls", {.row_count = 5, .depth_m = falling, .discharge_m3s = weir_m3s, .open_share = 1.0}},
+        {"depth endless", {.row_count = 5, .depth_m = endless, .discharge_m3s = weir_m3s, .open_share = 1.0}},
+        {"flow at the sill",
+         {.row_count = 5, .depth_m = weir_depth_m, .discharge_m3s = not_from_zero, .open_share = 1.0}},
+        {"flow does not rise", {.row_count = 5, .depth_m = weir_depth_m, .discharge_m3s = level, .open_share = 1.0}},
+        {"flow endless", {.row_count = 2, .depth_m = weir_depth_m, .discharge_m3s = endless_m3s, .open_share = 1.0}},
+        {"more than open", {.row_count = 5, .depth_m = weir_depth_m, .discharge_m3s = weir_m3s, .open_share = 1.01}},
+        {"less than shut", {.row_count = 5, .depth_m = weir_depth_m, .discharge_m3s = weir_m3s, .open_share = -0.01}},
+        {"share unknown",
+         {.row_count = 5, .depth_m = weir_depth_m, .discharge_m3s = weir_m3s, .open_share = (double)NAN}},
     };
+    static const double most_falls[] = {0.0, 0.5, 0.4, 6.0, 7.0}, most_at_sill[] = {0.1, 0.5, 3.0, 6.0, 7.0};
+    static const double most_endless[] = {0.0, 0.5, 3.0, 6.0, (double)INFINITY};
+    const double *const most[] = {most_falls, most_at_sill, most_endless};
     assert_int_equal(stage_structure_check(&both), FW_OK);
+    for (size_t i = 0; i < sizeof most / sizeof *most; i++) {
+        struct stage_opening limited = openings[0];
+        limited.most_m3s = most[i];
+        const struct stage_structure faulty = {1, &limited};
+        assert_int_equal(stage_structure_check(&faulty), FW_BAD_INPUT);
+    }
     for (size_t i = 0; i < sizeof rows / sizeof *rows; i++) {
         const struct stage_opening two[] = {openings[0], rows[i].opening};
         const struct stage_structure faulty = {2, two};
@@ -140,6 +171,7 @@ int main(void)
         cmocka_unit_test(water_below_drowns_the_flow),
         cmocka_unit_test(slopes_are_those_of_the_flow),
         cmocka_unit_test(the_depth_that_passes_a_flow_passes_it),
+        cmocka_unit_test(a_limit_holds_free_or_drowned),
         cmocka_unit_test(faulty_tables_are_refused),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
