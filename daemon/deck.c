@@ -10,7 +10,7 @@ struct hazard_water deck_water(const struct settings *settings, size_t point, do
     const struct network_point *place = &settings->river.points[point];
     const struct network_reach *reach = &settings->river.reaches[place->reach_index];
     double below_m = HAZARD_NOTHING_BELOW;
-    bool has_level_of_its_own = place->stage_rating.row_count > 0;
+    bool has_level_of_its_own = place->stage_rating.row_count > 0 || place->structure != NULL;
     if (known->deck.kind == HAZARD_DECK_IS_WEIR && has_level_of_its_own && stage_m > known->deck.level_m &&
         section_normal_depth_m(reach->section, reach->slope_m_per_m, fabs(discharge_m3s) * roughness_factor,
                                &below_m) != FW_OK)

@@ -259,6 +259,8 @@ enum fw_status network_create(const struct network_river *river, const struct ne
     place_delays(network);
     status = allocate_values(network);
     if (status == FW_OK)
+        status = network_make_levels(network, fault_out);
+    if (status == FW_OK)
         dry_trees(network);
 cleanup:
     if (status == FW_OK)
@@ -293,6 +295,8 @@ void network_destroy(struct network *network)
     free(network->next_point);
     free(network->state_offset);
     free(network->points);
+    free(network->structure_ratings);
+    free(network->structure_rows);
     free(network->delays);
     free(network->roughness_factors);
     free(network->blocks);

@@ -95,6 +95,11 @@ struct network_point {
     size_t reach_index;
     double at_m;
     struct network_stage_rating stage_rating;
+    /*
+     * Instead of such a rating: what the river passes there, a weir over the road; NULL: nothing. The level is that above
+     * it, with the normal depth of the flow below, in the member's roughness (engine/structure_rating).
+     */
+    const struct stage_structure *structure;
 };
 
 struct network_river { /* the caller's; must outlive the network */

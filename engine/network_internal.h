@@ -63,6 +63,8 @@ struct network {
     size_t tree_count;
     struct routed_tree *trees;
     struct placed_point *points;
+    struct network_stage_rating *structure_ratings; /* [point][group], without rows where no structure stands */
+    double *structure_rows;                         /* theirs */
     struct delayed_share *delays;
     size_t ring_count;
     size_t ring_at;
@@ -109,5 +111,8 @@ static inline bool network_is_outlet_of(const struct routed_tree *tree, size_t r
 {
     return tree->reach_index[tree->branch_count - 1] == reach_index;
 }
+
+/* The ratings of structures at points. FW_BAD_INPUT: one that cannot be; fault_out says which. FW_NO_MEMORY. */
+FW_MUST_CHECK enum fw_status network_make_levels(struct network *network, struct network_fault *fault_out);
 
 #endif

@@ -36,10 +36,16 @@ static double rated_stage_m(const struct network_stage_rating *rating, double di
     const double *discharge = rating->discharge_m3s;
     const double *stage = rating->stage_m;
     size_t row = 0;
+    size_t last = rating->row_count - 2;
     if (discharge_m3s <= discharge[0])
         return stage[0];
-    while (row + 2 < rating->row_count && discharge[row + 1] < discharge_m3s)
-        row++;
+    while (row < last) { /* the first row whose next is not below the flow */
+        size_t middle = row + (last - row) / 2;
+        if (discharge[middle + 1] < discharge_m3s)
+            row = middle + 1;
+        else
+            last = middle;
+    }
     return stage[row] +
            (discharge_m3s - discharge[row]) * ((stage[row + 1] - stage[row]) / (discharge[row + 1] - discharge[row]));
 }
@@ -50,6 +56,10 @@ double network_point_stage_m(const struct network *network, size_t point_index, 
     const struct network_point *point = &network->river.points[point_index];
     if (point->stage_rating.row_count > 0)
         return rated_stage_m(&point->stage_rating, discharge_m3s);
+    if (point->structure != NULL)
+        return rated_stage_m(&network->structure_ratings[point_index * network->group_count +
+                                                         member_index / network->members_per_group],
+                             discharge_m3s);
     const struct routed_reach *reach = &network->reaches[point->reach_index];
     double factor = network->roughness_factors[member_index / network->members_per_group];
     return flow_curve_depth_m(&reach->curve, discharge_m3s * factor / sqrt(reach->source->slope_m_per_m));

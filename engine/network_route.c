@@ -393,7 +393,8 @@ static void give_points(const struct network *network, size_t group, size_t step
         const double *depth = block + network->layout.depth + point * members;
         size_t at = (point * (step_count + 1) + step) * all_members + group * members;
         memcpy(point_discharge_m3s + at, flow, members * sizeof *flow);
-        bool is_rated = network->river.points[point].stage_rating.row_count > 0;
+        bool is_rated =
+            network->river.points[point].stage_rating.row_count > 0 || network->river.points[point].structure != NULL;
         for (size_t member = 0; point_stage_m != NULL && member < members; member++)
             point_stage_m[at + member] =
                 is_rated || isnan(depth[member])

@@ -137,6 +137,13 @@ static enum fw_status check_side_inflow(const struct network_river *river, size_
 static enum fw_status check_stage_rating(const struct network_point *point, struct network_fault *fault_out)
 {
     const struct network_stage_rating *rating = &point->stage_rating;
+    if (point->structure != NULL && rating->row_count > 0)
+        return fault(fault_out, "point '%s': structure: has a stage_rating beside it: expected one of them",
+                     point->id);
+    if (point->structure != NULL && stage_structure_check(point->structure) != FW_OK)
+        return fault(fault_out,
+                     "point '%s': structure: tables must rise from 0 flow at the sill, shares lie in 0 to 1",
+                     point->id);
     if (rating->row_count == 0)
         return FW_OK;
     if (rating->row_count == 1 || rating->discharge_m3s == NULL || rating->stage_m == NULL)

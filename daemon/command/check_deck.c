@@ -109,10 +109,40 @@ void check_deck_find(const struct check_facts *facts, size_t point, bool is_abov
     *deck_out = deck;
 }
 
+double check_deck_rated_m3s(const struct settings_point *point, bool is_part_blocked)
+{
+    size_t count = is_part_blocked ? point->blocked_row_count : point->stage_row_count;
+    const double *flow = is_part_blocked ? point->blocked_row_discharge_m3s : point->stage_row_discharge_m3s;
+    const double *stage = is_part_blocked ? point->blocked_row_stage_m : point->stage_row_stage_m;
+    double deck_m = point->marks[point->deck_mark].depth_m;
+    for (size_t row = 1; row < count; row++)
+        if (stage[row] >= deck_m)
+            return stage[row] > stage[row - 1]
+                       ? flow[row - 1] + (flow[row] - flow[row - 1]) * fmax(0.0, deck_m - stage[row - 1]) /
+                                             (stage[row] - stage[row - 1])
+                       : flow[row - 1];
+    return NAN;
+}
+
+static void print_rating(const struct settings_point *point)
+{
+    double clean_m3s = check_deck_rated_m3s(point, false);
+    double blocked_m3s = check_deck_rated_m3s(point, true);
+    if (point->stage_row_count == 0)
+        return;
+    printf("    level from %s", point->structure != NULL ? "a weir over the road" : "a stage rating of its own");
+    if (isfinite(clean_m3s))
+        printf(": '%s' at %.1f m3/s", point->marks[point->deck_mark].name, clean_m3s);
+    if (isfinite(clean_m3s) && isfinite(blocked_m3s))
+        printf(", part-blocked at %.1f", blocked_m3s);
+    printf("\n");
+}
+
 void check_deck_print(const struct check_facts *facts, size_t point, bool is_above[])
 {
     const struct settings_point *known = &facts->settings->points[point];
     struct check_deck deck;
+    print_rating(known);
     if (!known->has_deck)
         return;
     check_deck_find(facts, point, is_above, &deck);

@@ -22,6 +22,10 @@ struct check_deck {
 /* Of a point whose settings have a deck. Nothing in it where no flow looked at wets the deck. is_above: scratch per gauge. */
 void check_deck_find(const struct check_facts *facts, size_t point, bool is_above[], struct check_deck *deck_out);
 
+/* The flow at which a point's own rating brings the water to its deck mark, NAN where it has none. */
+double check_deck_rated_m3s(const struct settings_point *point, bool is_part_blocked);
+
+/* Also where the level comes from, when it has a rating of its own. */
 void check_deck_print(const struct check_facts *facts, size_t point, bool is_above[]);
 
 #endif

@@ -112,6 +112,8 @@ static void add_point(cJSON *array, const struct check_facts *facts, size_t inde
         check_facts_lead(facts, gauge, index, &lead);
         add_lead(leads, settings->gauges[gauge].id, &lead);
     }
+    add(object, "deck_by_own_rating_m3s", check_deck_rated_m3s(point, false));
+    add(object, "deck_by_own_rating_part_blocked_m3s", check_deck_rated_m3s(point, true));
     add_deck(object, facts, index, is_above);
 }
 

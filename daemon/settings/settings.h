@@ -104,11 +104,13 @@ struct settings_point {
     const char **access_over;
     size_t trigger_count;
     struct settings_trigger *triggers;
-    size_t stage_row_count; /* own stage rating; 0: the section's normal stage */
+    /* own stage rating, of a structure as the section's roughness is given; 0: the section's normal stage */
+    size_t stage_row_count;
     double *stage_row_discharge_m3s, *stage_row_stage_m;
     size_t blocked_row_count; /* part-blocked curve, beside it */
     double *blocked_row_discharge_m3s, *blocked_row_stage_m;
-    size_t cannot_see_count; /* standing sentences: what this forecast cannot see here */
+    const struct stage_structure *structure; /* a weir over an opening gives the level; NULL: none */
+    size_t cannot_see_count;                 /* standing sentences: what this forecast cannot see here */
     const char **cannot_see;
 };
 

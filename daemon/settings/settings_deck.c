@@ -68,6 +68,16 @@ static void choose_panel(struct settings_work *work, struct hazard_deck *built, 
     }
 }
 
+static double weir_coefficient(const struct json_value *object, const struct json_value *deck)
+{
+    static const double ideal = 1.7;
+    const struct json_value *rating = settings_work_member(object, "points[].stage_rating");
+    const struct json_value *weir = settings_work_member(rating, "points[].stage_rating.weir");
+    double of_rating = settings_work_number(weir, "points[].stage_rating.weir.coefficient");
+    double of_deck = settings_work_number(deck, "points[].deck.coefficient");
+    return isfinite(of_deck) ? of_deck : isfinite(of_rating) ? of_rating : ideal;
+}
+
 void settings_build_deck(struct settings_work *work, struct settings_point *point, const struct json_value *object)
 {
     struct json_value *deck = settings_work_member(object, "points[].deck");
@@ -95,7 +105,7 @@ void settings_build_deck(struct settings_work *work, struct settings_point *poin
         .section = reach->section,
         .panel = HAZARD_ANY_PANEL,
         .roughness_n = settings_work_number(deck, "points[].deck.n"),
-        .weir_coefficient = settings_work_number(deck, "points[].deck.coefficient"),
+        .weir_coefficient = weir_coefficient(object, deck),
     };
     if (!is_weir)
         choose_panel(work, &point->deck, deck);

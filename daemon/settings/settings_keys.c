@@ -325,8 +325,8 @@ static const struct settings_key keys[] = {
      .meaning = "section: on which part of a section with a plain the deck lies."},
     OTHERWISE("points[].deck.offset_m", OPTIONAL, "m", -100000, 100000, "the panel where the water is fastest",
               "section: where in a surveyed section the deck lies."),
-    NUMBER("points[].deck.coefficient", OPTIONAL, "", 0.5, 2.5, "1.7",
-           "weir: Cd of Q = Cd L H^1.5 in SI units; 1.38 to 1.71 by FHWA HDS-5, where 1.7 is the ideal crest."),
+    OTHERWISE("points[].deck.coefficient", OPTIONAL, "", 0.5, 2.5, "that of the stage rating's weir, else 1.7",
+              "weir: Cd of Q = Cd L H^1.5 in SI units; 1.38 to 1.71 by FHWA HDS-5, where 1.7 is the ideal crest."),
     TEXT_OTHERWISE("points[].closing_mark", NAME_MAX_BYTES, "the lowest trafficked mark",
                    "Name of the mark before which the road must be shut. Another one than the lowest trafficked must "
                    "be signed."),
@@ -373,7 +373,7 @@ static const struct settings_key keys[] = {
     OBJECT("points[].stage_rating", OPTIONAL,
            "The level at this point for a flow, where the section's normal stage is not enough: a low bridge, a weir "
            "over the road."),
-    ARRAY("points[].stage_rating.clean", WANTED, 2, 1000, NULL,
+    ARRAY("points[].stage_rating.clean", OPTIONAL, 2, 1000, NULL,
           "Rows of discharge (m3/s), rising, and stage above the invert (m), never falling; straight lines between."),
     ARRAY("points[].stage_rating.clean[]", WANTED, 2, 2, NULL, "Discharge (m3/s), stage (m)."),
     NUMBER("points[].stage_rating.clean[][]", WANTED, "", 0, 1e6, NULL, "Discharge or stage."),
@@ -381,6 +381,27 @@ static const struct settings_key keys[] = {
           "The same with the opening part-blocked by debris, shown beside it."),
     ARRAY("points[].stage_rating.part_blocked[]", WANTED, 2, 2, NULL, "Discharge (m3/s), stage (m)."),
     NUMBER("points[].stage_rating.part_blocked[][]", WANTED, "", 0, 1e6, NULL, "Discharge or stage."),
+    OBJECT("points[].stage_rating.weir", OPTIONAL,
+           "Instead of rows: the road as a weir over an opening, Q = Cd L H^1.5 (FHWA HDS-5) and the opening's own "
+           "rows. "
+           "The level is that above it, against the section's normal depth below (Villemonte's rule)."),
+    OTHERWISE("points[].stage_rating.weir.crest_m", OPTIONAL, "m", 0, 100, "the deck mark's depth",
+              "Crown of the road above the invert."),
+    NUMBER("points[].stage_rating.weir.length_m", WANTED, "m", 0.1, 10000, NULL,
+           "Length of road that the water falls over."),
+    NUMBER("points[].stage_rating.weir.coefficient", WANTED, "", 0.5, 2.5, NULL,
+           "Cd in SI units; 1.38 to 1.71 by HDS-5. A smaller one gives the higher level."),
+    ARRAY(
+        "points[].stage_rating.weir.opening", OPTIONAL, 2, 1000, NULL,
+        "What passes under the road: rows of discharge (m3/s) and level above the invert (m), both rising, the first "
+        "with 0 m3/s at its sill; beyond the last row its last line is carried on."),
+    ARRAY("points[].stage_rating.weir.opening[]", WANTED, 2, 2, NULL, "Discharge (m3/s), level (m)."),
+    NUMBER("points[].stage_rating.weir.opening[][]", WANTED, "", 0, 1e6, NULL, "Discharge or level."),
+    OBJECT("points[].stage_rating.weir.part_blocked", OPTIONAL,
+           "The same part-blocked by debris, shown beside it: the shares that stay open."),
+    NUMBER("points[].stage_rating.weir.part_blocked.opening_share", OPTIONAL, "", 0, 1, "1", "Of the opening."),
+    NUMBER("points[].stage_rating.weir.part_blocked.length_share", OPTIONAL, "", 0.01, 1, "1",
+           "Of the road's length: debris against rails."),
     ARRAY("points[].cannot_see", OPTIONAL, 0, 20, NULL,
           "Standing sentences: what this forecast cannot see here. Printed in every bulletin."),
     TEXT("points[].cannot_see[]", WANTED, SENTENCE_MAX, NULL, "One sentence."),

@@ -293,7 +293,17 @@ static bool build_rows(struct settings_work *work, const struct json_value *rows
 static bool build_stage_rating(struct settings_work *work, struct settings_point *point,
                                const struct json_value *object)
 {
-    const struct json_value *rating = settings_work_member(object, "points[].stage_rating");
+    struct json_value *rating = settings_work_member(object, "points[].stage_rating");
+    struct json_value *weir = settings_work_member(rating, "points[].stage_rating.weir");
+    bool has_rows = settings_work_has(rating, "points[].stage_rating.clean");
+    if (rating != NULL && has_rows == settings_work_has(rating, "points[].stage_rating.weir"))
+        json_tree_fault(work->report, rating,
+                        "'clean' and 'weir' are both there or both missing: expected one of them");
+    if (!has_rows)
+        settings_work_refuse(work, rating, "points[].stage_rating.part_blocked",
+                             "it goes with clean; a weir has its own");
+    if (weir != NULL && !has_rows)
+        return settings_build_weir(work, point, weir);
     return build_rows(work, settings_work_member(rating, "points[].stage_rating.clean"), &point->stage_row_count,
                       &point->stage_row_discharge_m3s, &point->stage_row_stage_m) &&
            build_rows(work, settings_work_member(rating, "points[].stage_rating.part_blocked"),
@@ -346,9 +356,10 @@ static bool build_point(struct settings_work *work, struct settings_point *point
     build_policy(work, point, object);
     if (!build_marks(work, point, object))
         return false;
+    if (!build_triggers(work, point, object) || !build_stage_rating(work, point, object))
+        return false;
     settings_build_deck(work, point, object);
-    return build_triggers(work, point, object) && build_stage_rating(work, point, object) &&
-           build_others(work, point, object);
+    return build_others(work, point, object);
 }
 
 static bool give_points_to_river(struct settings_work *work)
@@ -359,12 +370,12 @@ static bool give_points_to_river(struct settings_work *work)
         return false;
     for (size_t i = 0; i < settings->point_count; i++) {
         const struct settings_point *point = &settings->points[i];
-        built[i] = (struct network_point){.id = point->id,
-                                          .reach_index = point->reach,
-                                          .at_m = point->at_m,
-                                          .stage_rating = {.row_count = point->stage_row_count,
-                                                           .discharge_m3s = point->stage_row_discharge_m3s,
-                                                           .stage_m = point->stage_row_stage_m}};
+        built[i] = (struct network_point){
+            .id = point->id, .reach_index = point->reach, .at_m = point->at_m, .structure = point->structure};
+        if (point->structure == NULL)
+            built[i].stage_rating = (struct network_stage_rating){.row_count = point->stage_row_count,
+                                                                  .discharge_m3s = point->stage_row_discharge_m3s,
+                                                                  .stage_m = point->stage_row_stage_m};
     }
     settings->river.point_count = settings->point_count;
     settings->river.points = built;

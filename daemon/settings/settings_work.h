@@ -71,6 +71,8 @@ bool settings_build_river(struct settings_work *work);
 bool settings_build_points(struct settings_work *work);
 /* Of one point, once its place and marks are built. */
 void settings_build_deck(struct settings_work *work, struct settings_point *point, const struct json_value *object);
+/* The weir of a stage rating, and what it makes of the point's rows; false: no memory. */
+bool settings_build_weir(struct settings_work *work, struct settings_point *point, struct json_value *weir);
 /* What the engine itself would refuse and nothing above has found. Only when there is no fault so far. */
 bool settings_check_river(struct settings_work *work);
 

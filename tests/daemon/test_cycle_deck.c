@@ -6,6 +6,7 @@
 #include <math.h>
 
 #include "daemon/deck.h"
+#include "daemon/tell/sentence.h"
 
 enum { FORD, CAUSEWAY, BRIDGE, RISE_MINUTES = 320 };
 
@@ -111,6 +112,35 @@ static void a_weir_with_a_level_of_its_own_is_drowned_by_the_normal_depth_below(
     settings_destroy(settings);
 }
 
+/* With the causeway a weir over a pipe, levels and deck follow from its flow. */
+static void a_level_from_a_weir_over_the_road_goes_through_the_cycle(void **state)
+{
+    (void)state;
+    struct scene scene = scene_open(
+        "\"deck\": { \"kind\": \"weir\", \"coefficient\": 1.6 },",
+        "\"deck\": { \"kind\": \"weir\" },\n\"stage_rating\": { \"weir\": { \"length_m\": 41, \"coefficient\": 1.6,"
+        "\"opening\": [[0, 0.3], [9.7, 0.9], [37, 1.95], [51.5, 3.1]], \"part_blocked\": { \"opening_share\": 0.5 } "
+        "} },");
+    struct delta delta = run_with_rise(&scene);
+    const struct settings_point *known = &scene.settings->points[CAUSEWAY];
+    const struct point_picture *causeway = &scene.picture->points[CAUSEWAY];
+    assert_true(known->deck.weir_coefficient == 1.6 && known->deck.level_m == 1.95);
+    assert_true(causeway->peak.highest_m > 1.95);
+    const struct hazard_water *high = &causeway->deck.high;
+    assert_true(high->depth_m > 0.0 && high->depth_m <= causeway->peak.highest_m - 1.95 + 0.002);
+    /* no more per metre than falls freely, and the pipe takes the rest */
+    assert_true(high->product_m2_s <= 1.6 * pow(high->depth_m, 1.5) * (1.0 + 1e-12));
+    assert_true(causeway->level_now.high_m > 0.3); /* the sill */
+    struct text bulletin = {0};
+    struct decision decision = {.point = CAUSEWAY, .before = advice_start(), .after = causeway->advice};
+    assert_int_equal(sentence_bulletin(scene.settings, scene.picture, &decision, &bulletin), FW_OK);
+    assert_non_null(strstr(text_string(&bulletin), "On the deck, estimated"));
+    assert_non_null(strstr(text_string(&bulletin), "part-blocked"));
+    text_clear(&bulletin);
+    delta_clear(&delta);
+    scene_close(&scene);
+}
+
 static cJSON *deck_in_json(const struct scene *scene, int point, struct text *json)
 {
     assert_int_equal(picture_write_json(scene->settings, scene->picture, json), FW_OK);
@@ -182,6 +212,7 @@ int main(void)
         cmocka_unit_test(the_peaks_are_those_of_single_runs_and_rise),
         cmocka_unit_test(on_a_weir_the_product_is_the_flow_per_metre),
         cmocka_unit_test(a_weir_with_a_level_of_its_own_is_drowned_by_the_normal_depth_below),
+        cmocka_unit_test(a_level_from_a_weir_over_the_road_goes_through_the_cycle),
         cmocka_unit_test(the_canonical_form_tells_passed_limits_alone_and_always_the_caution),
         cmocka_unit_test(numbers_for_people_are_rounded_up),
     };

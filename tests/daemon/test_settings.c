@@ -192,6 +192,29 @@ static void what_is_not_stated_has_the_default_of_the_table(void **state)
     settings_destroy(settings);
 }
 
+static void a_weir_over_the_road_becomes_a_structure_and_rows(void **state)
+{
+    (void)state;
+    struct settings *settings = read_sound(SETTINGS_EVERY_OTHER_KEY, SETTINGS_FOR_RUN);
+    const struct settings_point *causeway = &settings->points[3];
+    assert_non_null(causeway->structure);
+    assert_ptr_equal(settings->river.points[3].structure, causeway->structure);
+    assert_int_equal(settings->river.points[3].stage_rating.row_count, 0); /* the network makes its own per group */
+    assert_int_equal(causeway->structure->opening_count, 2);
+    const struct stage_opening *road = &causeway->structure->openings[0];
+    assert_true(road->depth_m[0] == 1.85 && road->open_share == 1.0);
+    assert_int_equal(causeway->structure->openings[1].row_count, 4);
+    assert_true(causeway->structure->openings[1].depth_m[0] == 0.2);
+    assert_true(causeway->deck.weir_coefficient == 1.5); /* the deck has the rating's */
+    assert_true(causeway->deck.level_m == 1.8);
+    /* both sets of rows begin at the sill; blocked, the same flow stands higher */
+    assert_true(causeway->stage_row_stage_m[0] == 0.2 && causeway->blocked_row_stage_m[0] == 0.2);
+    assert_true(causeway->stage_row_count > 64 && causeway->blocked_row_count > 64);
+    size_t last = causeway->stage_row_count - 1;
+    assert_true(causeway->stage_row_discharge_m3s[last] > 23 * 1.5 * pow(10.0, 1.5));
+    settings_destroy(settings);
+}
+
 static void a_gauge_of_discharge_has_its_own_keys(void **state)
 {
     (void)state;
@@ -562,6 +585,7 @@ int main(void)
         cmocka_unit_test(the_points_of_the_example_have_their_marks_and_policies),
         cmocka_unit_test(the_river_of_the_example_is_ready_for_the_engine),
         cmocka_unit_test(what_is_not_stated_has_the_default_of_the_table),
+        cmocka_unit_test(a_weir_over_the_road_becomes_a_structure_and_rows),
         cmocka_unit_test(a_gauge_of_discharge_has_its_own_keys),
         cmocka_unit_test(an_outlet_holds_a_level_by_the_full_equations),
         cmocka_unit_test(an_outlet_follows_a_gauge_or_a_series),

@@ -132,6 +132,40 @@ static void a_deck_must_fit_its_marks_and_its_section(void **state)
     DEMAND_ALL(SETTINGS_EVERY_OTHER_KEY, others);
 }
 
+static void a_weir_must_let_the_river_through_below_the_road(void **state)
+{
+    (void)state;
+    static const struct change changes[] = {
+        {"rows and a weir", "\"stage_rating\": { \"weir\"",
+         "\"stage_rating\": { \"clean\": [[0, 0], [1, 1]], \"weir\"", NULL,
+         "points[3].stage_rating: an object 'clean' and 'weir' are both there or both missing: expected one"},
+        {"rows of debris beside a weir", "\"stage_rating\": { \"weir\"",
+         "\"stage_rating\": { \"part_blocked\": [[0, 0], [1, 1]], \"weir\"", NULL,
+         "points[3].stage_rating.part_blocked: an array does nothing here: expected none, because it goes with "
+         "clean"},
+        {"a road without length", "\"length_m\": 23, ", "", "{\n        \"crest_m\"",
+         "points[3].stage_rating.weir.length_m: missing: expected a number in m"},
+        {"a road without a coefficient", ", \"coefficient\": 1.5", "", "{\n        \"crest_m\"",
+         "points[3].stage_rating.weir.coefficient: missing: expected a number"},
+        {"no opening under the road", "\"opening\": [ [0, 0.2], [3.1, 0.8], [11.7, 1.8], [14.9, 2.6] ],\n", "",
+         "{\n        \"crest_m\"",
+         "points[3].stage_rating.weir: an object holds the water at 1.85 m or above, where the closing mark is "
+         "always "
+         "passed: expected an 'opening' with a sill below 1.7 m"},
+        {"a flow at the sill", "[0, 0.2]", "[0.1, 0.2]", NULL,
+         "points[3].stage_rating.weir.opening[0][0]: 0.1 flows at the sill: expected 0 m3/s in the first row"},
+        {"a flow that falls", "[11.7, 1.8]", "[3.1, 1.8]", NULL,
+         "points[3].stage_rating.weir.opening[2][0]: 3.1 is not above that of the row before, 3.1"},
+        {"a level that stands", "[11.7, 1.8]", "[11.7, 0.8]", NULL,
+         "points[3].stage_rating.weir.opening[2][1]: 0.8 is not above that of the row before, 0.8"},
+        {"more open than there is", "\"opening_share\": 0.4", "\"opening_share\": 1.4", NULL,
+         "points[3].stage_rating.weir.part_blocked.opening_share: 1.4 is too large"},
+        {"a road blocked whole", "\"length_share\": 0.9", "\"length_share\": 0", NULL,
+         "points[3].stage_rating.weir.part_blocked.length_share: 0 is too small"},
+    };
+    DEMAND_ALL(SETTINGS_EVERY_OTHER_KEY, changes);
+}
+
 static void limits_must_not_contradict_each_other(void **state)
 {
     (void)state;
@@ -487,6 +521,7 @@ int main(void)
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(marks_must_rise_and_one_must_close_the_road),
         cmocka_unit_test(a_deck_must_fit_its_marks_and_its_section),
+        cmocka_unit_test(a_weir_must_let_the_river_through_below_the_road),
         cmocka_unit_test(limits_must_not_contradict_each_other),
         cmocka_unit_test(names_must_lead_somewhere_and_to_one_thing),
         cmocka_unit_test(what_stands_at_a_foot_must_fit_there),

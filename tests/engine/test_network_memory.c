@@ -19,11 +19,16 @@
 #include "engine/flow_curve.c"
 #include "engine/muskingum_cunge.c"
 #include "engine/network.c"
+#include "engine/network_levels.c"
 #include "engine/routed_reach.c"
 #undef calloc
 #undef free
 
 #include "tests/engine/try_river.h"
+
+static const double weir_depth_m[] = {1.3, 1.4, 2.7}, weir_m3s[] = {0.0, 0.591, 30.977};
+static const struct stage_opening opening = {3, weir_depth_m, weir_m3s, 1.0};
+static const struct stage_structure weir = {1, &opening};
 
 static void every_failed_allocation_is_told_and_nothing_leaks(void **state)
 {
@@ -38,6 +43,8 @@ static void every_failed_allocation_is_told_and_nothing_leaks(void **state)
             make_river(&try);
             for (size_t i = 0; i < REACH_COUNT; i++)
                 try.reaches[i].method = (enum network_method)method;
+            try.points[0].structure = &weir;
+            try.points[0].stage_rating.row_count = 0;
             allocations_until_failure = allowed;
             status = network_create(&try.river, &try.options, &network, &fault);
             if (status == FW_OK) {

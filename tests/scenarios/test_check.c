@@ -302,6 +302,29 @@ static void the_limits_that_a_deck_passes_are_told_by_level_flow_and_time(void *
     run_clear(&run);
 }
 
+/* By hand: the opening's rows reach 1.8 m, the deck, at 11.7 m3/s freely; 0.4 of them, part-blocked, at 4.68. */
+static void a_weir_over_the_road_is_told_by_the_flow_that_wets_the_deck(void **state)
+{
+    (void)state;
+    struct run run = RUN(NULL, "check", "--config", FW_SOURCE_DIR "/tests/data/settings/every_other_key.json");
+    assert_run(&run, EX_OK);
+    char *block = block_of(run.output, "low-causeway (low-causeway):");
+    const char *line = strstr(block, "    level from a weir over the road: 'deck awash' at ");
+    double clean_m3s = 0.0, blocked_m3s = 0.0;
+    assert_non_null(line);
+    assert_int_equal(sscanf(line, " level from a weir over the road: 'deck awash' at %lf m3/s, part-blocked at %lf",
+                            &clean_m3s, &blocked_m3s),
+                     2);
+    /* less than freely, for the river below drowns it: by no more than a quarter in so steep a reach */
+    assert_true(clean_m3s < 11.7 && clean_m3s > 0.75 * 11.7);
+    assert_true(blocked_m3s < 4.68 && blocked_m3s > 0.75 * 4.68);
+    free(block);
+    block = block_of(run.output, "mill-ford (mill-ford):");
+    assert_null(strstr(block, "level from"));
+    free(block);
+    run_clear(&run);
+}
+
 static void a_deck_that_nothing_wets_has_no_word_of_limits(void **state)
 {
     char *text = changed(read_whole(DEMO), "\"depth_m\": 1.55, \"deck\": true }", "\"depth_m\": 1.55 }");
@@ -531,6 +554,7 @@ int main(void)
         TEST(full_equations_are_told_with_their_own_limit),
         TEST(the_ford_cannot_be_protected_at_night_by_its_gauge_alone),
         TEST(the_limits_that_a_deck_passes_are_told_by_level_flow_and_time),
+        TEST(a_weir_over_the_road_is_told_by_the_flow_that_wets_the_deck),
         TEST(a_deck_that_nothing_wets_has_no_word_of_limits),
         TEST(a_longer_way_to_the_station_takes_the_day_away_too),
         TEST(without_a_trigger_the_engineer_is_asked_for_one),
