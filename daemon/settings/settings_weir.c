@@ -28,7 +28,8 @@ static bool build_opening(struct settings_work *work, const struct json_value *r
                                 "is not above that of the row before, %.10g (line %zu): expected rising rows",
                                 last->children[side].number, last->line);
     }
-    *opening = (struct stage_opening){built, depth_m, discharge_m3s, 1.0};
+    *opening = (struct stage_opening){
+        .row_count = built, .depth_m = depth_m, .discharge_m3s = discharge_m3s, .open_share = 1.0};
     return true;
 }
 
@@ -107,7 +108,10 @@ static bool build_openings(struct settings_work *work, const struct settings_poi
     structure_rating_weir(crest_m, settings_work_number(weir, "points[].stage_rating.weir.length_m"),
                           settings_work_number(weir, "points[].stage_rating.weir.coefficient"), depth_m,
                           discharge_m3s);
-    openings[0] = (struct stage_opening){STRUCTURE_RATING_WEIR_ROWS, depth_m, discharge_m3s, 1.0};
+    openings[0] = (struct stage_opening){.row_count = STRUCTURE_RATING_WEIR_ROWS,
+                                         .depth_m = depth_m,
+                                         .discharge_m3s = discharge_m3s,
+                                         .open_share = 1.0};
     if (under != NULL && !build_opening(work, under, &openings[1]))
         return false;
     *count_out = !settings_work_is_whole(weir) ? 0 : under != NULL ? 2 : 1;

@@ -27,7 +27,7 @@
 #include "tests/engine/try_river.h"
 
 static const double weir_depth_m[] = {1.3, 1.4, 2.7}, weir_m3s[] = {0.0, 0.591, 30.977};
-static const struct stage_opening opening = {3, weir_depth_m, weir_m3s, 1.0};
+static const struct stage_opening opening = {3, weir_depth_m, weir_m3s, 1.0, NULL};
 static const struct stage_structure weir = {1, &opening};
 
 static void every_failed_allocation_is_told_and_nothing_leaks(void **state)

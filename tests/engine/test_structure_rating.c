@@ -33,8 +33,8 @@ static void make_causeway(struct causeway *causeway, double open_share)
     *causeway = (struct causeway){.row_count = 0};
     structure_rating_weir(1.95, 41.0, 1.6, causeway->weir_depth_m, causeway->weir_m3s);
     causeway->openings[0] =
-        (struct stage_opening){STRUCTURE_RATING_WEIR_ROWS, causeway->weir_depth_m, causeway->weir_m3s, 1.0};
-    causeway->openings[1] = (struct stage_opening){4, pipe_depth_m, pipe_m3s, open_share};
+        (struct stage_opening){STRUCTURE_RATING_WEIR_ROWS, causeway->weir_depth_m, causeway->weir_m3s, 1.0, NULL};
+    causeway->openings[1] = (struct stage_opening){4, pipe_depth_m, pipe_m3s, open_share, NULL};
     causeway->structure = (struct stage_structure){2, causeway->openings};
 }
 
@@ -65,7 +65,7 @@ static void a_weir_passes_the_published_flow(void **state)
     assert_true(cfs == 300.0);
     double depth_m[STRUCTURE_RATING_WEIR_ROWS], flow_m3s[STRUCTURE_RATING_WEIR_ROWS];
     structure_rating_weir(1.2, 100.0 * foot_m, 3.0 * sqrt(foot_m), depth_m, flow_m3s);
-    struct stage_opening opening = {STRUCTURE_RATING_WEIR_ROWS, depth_m, flow_m3s, 1.0};
+    struct stage_opening opening = {STRUCTURE_RATING_WEIR_ROWS, depth_m, flow_m3s, 1.0, NULL};
     struct stage_structure weir = {1, &opening};
     assert_int_equal(stage_structure_check(&weir), FW_OK);
     double expected_m3s = cfs * foot_m * foot_m * foot_m;
@@ -81,7 +81,7 @@ static void the_lines_of_a_weir_lie_on_or_a_hair_above_the_formula(void **state)
     (void)state;
     double depth_m[STRUCTURE_RATING_WEIR_ROWS], flow_m3s[STRUCTURE_RATING_WEIR_ROWS];
     structure_rating_weir(0.7, 13.0, 1.53, depth_m, flow_m3s);
-    struct stage_opening opening = {STRUCTURE_RATING_WEIR_ROWS, depth_m, flow_m3s, 1.0};
+    struct stage_opening opening = {STRUCTURE_RATING_WEIR_ROWS, depth_m, flow_m3s, 1.0, NULL};
     struct stage_structure weir = {1, &opening};
     for (double head_m = 0.0011; head_m < 20.0; head_m *= 1.0137) {
         double formula = 13.0 * 1.53 * pow(head_m, 1.5);
