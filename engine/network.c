@@ -99,9 +99,10 @@ static enum fw_status make_cells(struct network *network, const struct network_o
     double typical_m3s = options->typical_peak_m3s > 0.0 ? options->typical_peak_m3s : options->largest_discharge_m3s;
     enum fw_status status = FW_OK;
     for (size_t i = 0; i < network->river.reach_count && status == FW_OK; i++) {
-        double peak_m3s = network->choices[i].flood.peak_m3s;
-        status = routed_reach_init_cells(&network->reaches[i], &network->river, i,
-                                         peak_m3s > 0.0 ? peak_m3s : typical_m3s, options);
+        struct method_flood flood = network->choices[i].flood;
+        if (!(flood.peak_m3s > 0.0))
+            flood = (struct method_flood){.peak_m3s = typical_m3s};
+        status = routed_reach_init_cells(&network->reaches[i], &network->river, i, &flood, options);
     }
     return status;
 }

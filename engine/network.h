@@ -190,8 +190,8 @@ struct network;
 /*
  * A new network is dry (by the full equations: but for a film of a millimetre, and a held level). NETWORK_AUTO is
  * resolved for good. Cells: the celerity at the peak of the reach's flood (typical_peak_m3s where none is known) times
- * the time step, 3 to 400 of them to a reach; by the full equations at least 10, and no longer than 2 D/c at that flow
- * if 400 are enough.
+ * the time step, 3 to 400 of them to a reach; by the full equations that or a sixtieth of the flood's rise (up to
+ * 0.5 D/c), whichever is longer, at least 10, and no longer than 2 D/c at that flow if 400 are enough.
  *
  * FW_BAD_INPUT  a loop, an orphan, a node without inflow, a fork, an index outside, a shape or number refused, a
  *               share of a gauge that its own water reaches; fault_out (written only then) says which, by the reach's or point's id.

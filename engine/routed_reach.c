@@ -13,6 +13,8 @@ static const double fit_from_share =
     0.05;                             /* of the peak: where the linear scheme's A = alpha Q^beta is fitted from */
 static const double on_a_node = 1e-9; /* of a cell: nearer than that is the node itself */
 
+static const double cells_in_a_rise = 60.0; /* of the full equations */
+
 static double smallest_discharge_m3s(const struct network_options *options)
 {
     return fmin(1e-3, 1e-4 * options->largest_discharge_m3s);
@@ -34,8 +36,10 @@ static enum fw_status make_curve(struct routed_reach *reach, const struct networ
                            table_headroom * options->largest_discharge_m3s * most / root_slope);
 }
 
-static size_t choose_cell_count(struct routed_reach *reach, double peak, const struct network_options *options)
+static size_t choose_cell_count(struct routed_reach *reach, const struct method_flood *flood,
+                                const struct network_options *options)
 {
+    double peak = flood->peak_m3s;
     const struct network_reach *source = reach->source;
     double root_slope = sqrt(source->slope_m_per_m);
     bool is_full = network_method_is_full(source->method);
@@ -52,6 +56,8 @@ static size_t choose_cell_count(struct routed_reach *reach, double peak, const s
     double wanted_m = celerity * options->time_step_s;
     if (!is_full)
         return (size_t)fmin(MOST_CELLS, fmax(FEWEST_CELLS, round(source->length_m / wanted_m)));
+    /* a slow flood needs no short ones; at its low flows D/c is short, and levels set from below want it resolved */
+    wanted_m = fmax(wanted_m, fmin(celerity * flood->rise_s / cells_in_a_rise, 0.5 * reach->diffusion_length_m));
     wanted_m = fmin(wanted_m, 2.0 * reach->diffusion_length_m); /* longer ones make a front's areas negative */
     return (size_t)fmin(METHOD_MOST_FULL_CELLS, fmax(FEWEST_CELLS_FULL, ceil(source->length_m / wanted_m)));
 }
@@ -190,15 +196,16 @@ enum fw_status routed_reach_init_curve(struct routed_reach *reach, const struct 
 }
 
 enum fw_status routed_reach_init_cells(struct routed_reach *reach, const struct network_river *river,
-                                       size_t reach_index, double peak_m3s, const struct network_options *options)
+                                       size_t reach_index, const struct method_flood *flood,
+                                       const struct network_options *options)
 {
-    reach->cell_count = choose_cell_count(reach, peak_m3s, options);
+    reach->cell_count = choose_cell_count(reach, flood, options);
     reach->cell_m = reach->source->length_m / (double)reach->cell_count;
     enum fw_status status = place_sides(reach, river, reach_index);
     if (status == FW_OK)
         status = place_stops(reach, river, reach_index);
     if (status == FW_OK && reach->source->method == NETWORK_KINEMATIC_LINEAR)
-        status = make_channels(reach, peak_m3s, options);
+        status = make_channels(reach, flood->peak_m3s, options);
     else if (status == FW_OK && !network_method_is_full(reach->source->method))
         status = make_tables(reach, options);
     return status;

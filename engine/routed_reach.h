@@ -54,9 +54,12 @@ struct routed_flows { /* arrays of one group of members, and what a step reads a
  */
 FW_MUST_CHECK enum fw_status routed_reach_init_curve(struct routed_reach *reach, const struct network_reach *source,
                                                      const struct network_options *options);
-/* Cells for the celerity at peak_m3s, tables, sides and stops. The source's method must be one by now. FW_NO_MEMORY. */
+/*
+ * Cells for the celerity at the flood's peak and, by the full equations, its rise (0: not known), tables, sides and stops. The
+ * source's method must be one by now. FW_NO_MEMORY.
+ */
 FW_MUST_CHECK enum fw_status routed_reach_init_cells(struct routed_reach *reach, const struct network_river *river,
-                                                     size_t reach_index, double peak_m3s,
+                                                     size_t reach_index, const struct method_flood *flood,
                                                      const struct network_options *options);
 void routed_reach_clear(struct routed_reach *reach); /* an all-zero one is fine */
 
