@@ -10,7 +10,14 @@
 
 #include "daemon/delta.h"
 
-struct cycle; /* what is kept between cycles for speed: networks and work space; no state of the river */
+/*
+ * What is kept between cycles for speed. What a cycle gives depends on settings, picture, news and now alone, to the last bit: the same with a
+ * new one as with one that has seen a thousand cycles.
+ */
+struct cycle;
+
+/* Readings are kept (and loaded) for longer than the warm-up by what its alignment may take, and as much again. */
+enum { CYCLE_READINGS_BEYOND_WARM_UP_S = 12 * 3600 };
 
 FW_MUST_CHECK enum fw_status cycle_create(const struct settings *settings, struct cycle **cycle_out,
                                           struct fw_error *error);

@@ -13,12 +13,11 @@ enum {
 
 static struct passage_curves curves_of(const struct cycle *cycle, size_t point)
 {
-    size_t row = (cycle->step_count + 1) * cycle->member_count;
     return (struct passage_curves){.step_count = cycle->step_count + 1,
                                    .member_count = cycle->forecast_column_count,
                                    .member_column = cycle->forecast_columns,
                                    .row_stride = cycle->member_count,
-                                   .stage_m = cycle->stage_m + point * row,
+                                   .stage_m = cycle_stage_m(cycle, point, 0),
                                    .start_utc_s = cycle->start_utc_s,
                                    .step_s = cycle->settings->time_step_s};
 }
@@ -34,7 +33,7 @@ static size_t step_at(const struct cycle *cycle, int64_t utc_s)
 /* Earliest over the roughness groups: the envelope's two edges part first in the fastest of them. */
 static int64_t measured_until(const struct cycle *cycle, size_t point)
 {
-    const double *stage = cycle->stage_m + point * (cycle->step_count + 1) * cycle->member_count;
+    const double *stage = cycle_stage_m(cycle, point, 0);
     double earliest_s = INFINITY;
     for (size_t group = 0; group < cycle->settings->roughness_factor_count; group++) {
         const double *low = stage + group * CYCLE_FUTURES + ASSUMED_FASTEST_FALL;
@@ -83,9 +82,8 @@ static bool is_peak_beyond_gauging(const struct cycle *cycle, int64_t now_utc_s)
             continue;
         double gauged_m3s = rating_discharge_m3s(&gauge->rating, gauge->rating.highest_gauged_m, NULL);
         for (size_t step = from; step < count; step++)
-            for (size_t column = 0; column < cycle->forecast_column_count; column++)
-                if (cycle->inflow_m3s[(index * count + step) * cycle->member_count +
-                                      cycle->forecast_columns[column]] > gauged_m3s)
+            for (size_t future = 0; future < ASSUMED_FORECAST_COUNT; future++)
+                if (cycle_inflow_m3s(cycle, index, future, step) > gauged_m3s)
                     return true;
     }
     return false;

@@ -6,7 +6,7 @@
 
 #include "daemon/feed/quantity.h"
 
-enum { KEPT_BEYOND_WARM_UP_S = 6 * 3600, MESSAGES_KEPT_S = 48 * 3600 };
+enum { MESSAGES_KEPT_S = 48 * 3600 };
 
 static enum fw_status take_reading(struct delta *delta, const struct reading *reading)
 {
@@ -87,7 +87,8 @@ enum fw_status cycle_collect(struct cycle *cycle, const struct news *news, int64
 {
     struct picture *next = delta->next;
     for (size_t gauge = 0; gauge < next->gauge_count; gauge++)
-        forget_old_readings(&next->gauges[gauge], now_utc_s - cycle->settings->warm_up_s - KEPT_BEYOND_WARM_UP_S);
+        forget_old_readings(&next->gauges[gauge],
+                            now_utc_s - cycle->settings->warm_up_s - CYCLE_READINGS_BEYOND_WARM_UP_S);
     forget_settled_messages(next, now_utc_s - MESSAGES_KEPT_S);
 
     enum fw_status status = FW_OK;

@@ -20,14 +20,14 @@ static struct passage_curves share_curves(const struct cycle *cycle)
 static void fill_water(struct cycle *cycle, size_t point)
 {
     const struct settings *settings = cycle->settings;
-    size_t first = point * (cycle->step_count + 1) * cycle->member_count;
+    const double *stage_m = cycle_stage_m(cycle, point, 0);
+    const double *discharge_m3s = cycle_discharge_m3s(cycle, point, 0);
     for (size_t step = 0; step <= cycle->step_count; step++)
         for (size_t index = 0; index < cycle->forecast_column_count; index++) {
             size_t column = cycle->forecast_columns[index];
             size_t place = step * cycle->member_count + column;
-            cycle->deck_water[place] =
-                deck_water(settings, point, cycle->stage_m[first + place], cycle->point_m3s[first + place],
-                           settings->roughness_factors[column / CYCLE_FUTURES]);
+            cycle->deck_water[place] = deck_water(settings, point, stage_m[place], discharge_m3s[place],
+                                                  settings->roughness_factors[column / CYCLE_FUTURES]);
         }
 }
 

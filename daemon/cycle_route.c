@@ -7,7 +7,10 @@
 
 #include "engine/series.h"
 
-enum { GAP_LIMIT_FACTOR = 4 }; /* a gap longer than this many expected intervals is called filled */
+enum {
+    GAP_LIMIT_FACTOR = 4,  /* a gap longer than this many expected intervals is called filled */
+    LATE_READINGS_S = 3600 /* the coming track stays behind what the next readings may change */
+};
 
 static size_t used_samples(struct cycle *cycle, const struct settings_gauge *known, const struct gauge_picture *gauge)
 {
@@ -32,71 +35,135 @@ static double future_at(const double future_m3s[], size_t count, double steps)
     return future_m3s[index] + (steps - whole) * (future_m3s[index + 1] - future_m3s[index]);
 }
 
-static enum fw_status fill_inflow(struct cycle *cycle, size_t index, const struct gauge_picture *gauge)
+/* One of the futures after the newest reading. It goes as far as the arrays may ever reach, so that its length changes no value. */
+static enum fw_status append_future(struct cycle *cycle, const struct settings_gauge *known,
+                                    const struct gauge_picture *gauge, enum assumed_future future, size_t from,
+                                    size_t step_count, double row_m3s[])
 {
-    const struct settings *settings = cycle->settings;
-    const struct settings_gauge *known = &settings->gauges[index];
-    size_t count = cycle->step_count + 1;
-    size_t members = cycle->member_count;
-    double *inflow = cycle->inflow_m3s + index * count * members;
+    int64_t step_s = cycle->settings->time_step_s;
+    int64_t start_s = cycle->present->start_utc_s - gauge->newest_utc_s;
+    size_t count = (size_t)((start_s + (int64_t)step_count * step_s) / step_s) + 2;
+    count = count < cycle->step_capacity ? count : cycle->step_capacity;
+    enum fw_status status =
+        assumed_inflow(&known->assumed, future, known->measures == SETTINGS_STAGE ? &known->rating : NULL,
+                       gauge->newest_value, gauge->rate_per_s, (double)step_s, count, cycle->future_m3s);
+    for (size_t step = from; step <= step_count && status == FW_OK; step++)
+        row_m3s[step] = fmax(0.0, future_at(cycle->future_m3s, count + 1,
+                                            (double)(start_s + (int64_t)step * step_s) / (double)step_s));
+    return status;
+}
+
+/* The measured past is one for all futures, up to and with the newest reading. */
+static enum fw_status fill_inflow(struct cycle *cycle, size_t index, const struct gauge_picture *gauge,
+                                  size_t step_count)
+{
+    const struct settings_gauge *known = &cycle->settings->gauges[index];
+    int64_t step_s = cycle->settings->time_step_s, start_utc_s = cycle->present->start_utc_s;
+    size_t row = cycle->step_capacity + 1;
+    double *inflow = cycle->inflow_m3s + index * CYCLE_FUTURES * row;
     enum fw_status status = cycle_reserve_samples(cycle, gauge->reading_count + 1);
     if (status != FW_OK)
         return status;
     size_t used = used_samples(cycle, known, gauge);
-    cycle->has_inflow[index] = used > 0;
+    size_t measured = 0; /* steps up to the newest */
     if (used == 0) {
-        memset(inflow, 0, count * members * sizeof *inflow);
-        return FW_OK;
+        measured = step_count + 1;
+        memset(inflow, 0, measured * sizeof *inflow);
+    } else {
+        if (gauge->newest_utc_s >= start_utc_s)
+            measured = (size_t)((gauge->newest_utc_s - start_utc_s) / step_s) + 1;
+        measured = measured <= step_count ? measured : step_count + 1;
+        status = series_resample(used, cycle->sample_utc_s, cycle->sample_value, start_utc_s, step_s,
+                                 GAP_LIMIT_FACTOR * known->expect_every_s, measured, inflow, NULL);
+        for (size_t step = 0; step < measured && status == FW_OK; step++)
+            inflow[step] = fmax(inflow[step], 0.0);
     }
-    status =
-        series_resample(used, cycle->sample_utc_s, cycle->sample_value, cycle->start_utc_s, settings->time_step_s,
-                        GAP_LIMIT_FACTOR * known->expect_every_s, count, cycle->even_value, cycle->even_origin);
     for (size_t future = 0; future < CYCLE_FUTURES && status == FW_OK; future++) {
-        status =
-            assumed_inflow(&known->assumed, (enum assumed_future)future,
-                           known->measures == SETTINGS_STAGE ? &known->rating : NULL, gauge->newest_value,
-                           gauge->rate_per_s, (double)settings->time_step_s, cycle->step_count, cycle->future_m3s);
-        for (size_t step = 0; step < count && status == FW_OK; step++) {
-            double since_newest =
-                (double)(cycle->start_utc_s - gauge->newest_utc_s) + (double)step * (double)settings->time_step_s;
-            double flow = since_newest <= 0.0
-                              ? cycle->even_value[step]
-                              : future_at(cycle->future_m3s, count, since_newest / (double)settings->time_step_s);
-            for (size_t group = 0; group < settings->roughness_factor_count; group++)
-                inflow[step * members + group * CYCLE_FUTURES + future] = fmax(flow, 0.0);
-        }
+        if (future > 0)
+            memcpy(inflow + future * row, inflow, measured * sizeof *inflow);
+        if (measured <= step_count)
+            status = append_future(cycle, known, gauge, (enum assumed_future)future, measured, step_count,
+                                   inflow + future * row);
     }
     return status;
+}
+
+static size_t steps_between(const struct cycle *cycle, int64_t from_utc_s, int64_t to_utc_s)
+{
+    return (size_t)((to_utc_s - from_utc_s) / cycle->settings->time_step_s);
+}
+
+/* The track that starts where this pass must; at a change of start it is the coming one. */
+static void choose_track(struct cycle *cycle, int64_t start_utc_s)
+{
+    if (cycle->coming->start_utc_s == start_utc_s) {
+        struct track *coming = cycle->coming;
+        cycle->coming = cycle->present;
+        cycle->present = coming;
+        cycle->readied_utc_s = 0;
+    }
+    track_begin(cycle->present, start_utc_s);
+}
+
+/*
+ * So that a change of start costs no more than any other pass, the coming track is routed from its start beside the present one, at an even pace
+ * that brings it to the moment of change when that moment comes. What it gives does not depend on the pace. Left out where its steps would
+ * not fall on the present one's.
+ */
+static enum fw_status ready_the_coming_track(struct cycle *cycle, int64_t now_utc_s)
+{
+    int64_t ahead_s = CYCLE_ALIGN_S;
+    int64_t start_utc_s = cycle->present->start_utc_s + ahead_s;
+    int64_t change_utc_s = start_utc_s + cycle->settings->warm_up_s;
+    int64_t until_utc_s = now_utc_s - LATE_READINGS_S;
+    if (ahead_s % cycle->settings->time_step_s != 0 || until_utc_s <= start_utc_s)
+        return FW_OK;
+    if (cycle->coming->start_utc_s != start_utc_s)
+        cycle->readied_utc_s = 0;
+    track_begin(cycle->coming, start_utc_s);
+    if (cycle->readied_utc_s == 0 || cycle->readied_utc_s > now_utc_s)
+        cycle->readied_utc_s = now_utc_s - cycle->settings->forecast_every_s;
+    size_t done = cycle->coming->step_count;
+    size_t all = steps_between(cycle, start_utc_s, until_utc_s);
+    int64_t left_s =
+        change_utc_s - cycle->settings->forecast_every_s - cycle->readied_utc_s; /* to the last cycle before it */
+    double share = left_s > 0 ? fmin(1.0, (double)(now_utc_s - cycle->readied_utc_s) / (double)left_s) : 1.0;
+    size_t wanted = done + (size_t)ceil(share * (double)(all > done ? all - done : 0));
+    cycle->readied_utc_s = now_utc_s;
+    return track_follow(cycle->coming, cycle->inflow_m3s + ahead_s / cycle->settings->time_step_s,
+                        cycle->step_capacity + 1, wanted < all ? wanted : all, now_utc_s);
+}
+
+/* From where levels are looked at, for this pass's assessment. */
+static void look_back(struct cycle *cycle, int64_t now_utc_s, size_t step_count)
+{
+    int64_t from_utc_s = now_utc_s - CYCLE_LOOK_BACK_S;
+    from_utc_s -= from_utc_s % CYCLE_ALIGN_S;
+    const struct track *track = cycle->present;
+    cycle->first_step = from_utc_s > track->start_utc_s ? steps_between(cycle, track->start_utc_s, from_utc_s) : 0;
+    cycle->start_utc_s = track->start_utc_s + (int64_t)cycle->first_step * cycle->settings->time_step_s;
+    cycle->step_count = step_count - cycle->first_step;
+    cycle->replaced_share =
+        step_count > 0 ? (double)track->replaced_steps / (double)(step_count * cycle->member_count) : 0.0;
 }
 
 enum fw_status cycle_route(struct cycle *cycle, int64_t now_utc_s, const struct picture *picture,
                            struct fw_error *error)
 {
     const struct settings *settings = cycle->settings;
-    int64_t earliest = now_utc_s - settings->warm_up_s;
-    cycle->start_utc_s = earliest - earliest % CYCLE_ALIGN_S;
-    cycle->step_count = (size_t)((now_utc_s + settings->horizon_s - cycle->start_utc_s) / settings->time_step_s);
+    int64_t earliest_utc_s = now_utc_s - settings->warm_up_s;
+    choose_track(cycle, earliest_utc_s - earliest_utc_s % CYCLE_ALIGN_S);
+    size_t step_count = steps_between(cycle, cycle->present->start_utc_s, now_utc_s + settings->horizon_s);
     enum fw_status status = FW_OK;
     for (size_t gauge = 0; gauge < settings->gauge_count && status == FW_OK; gauge++)
-        status = fill_inflow(cycle, gauge, &picture->gauges[gauge]);
+        status = fill_inflow(cycle, gauge, &picture->gauges[gauge], step_count);
     if (status != FW_OK)
         return status;
-    double *start = calloc(settings->gauge_count * cycle->member_count + 1, sizeof *start);
-    if (start == NULL)
-        return FW_NO_MEMORY;
-    for (size_t gauge = 0; gauge < settings->gauge_count; gauge++)
-        memcpy(start + gauge * cycle->member_count,
-               cycle->inflow_m3s + gauge * (cycle->step_count + 1) * cycle->member_count,
-               cycle->member_count * sizeof *start);
-    size_t replaced_before = network_steps_replaced(cycle->network);
-    status = network_start_steady(cycle->network, start);
-    free(start);
+    status = track_follow(cycle->present, cycle->inflow_m3s, cycle->step_capacity + 1, step_count, now_utc_s);
     if (status == FW_OK)
-        status = network_advance_with_stage(cycle->network, cycle->step_count, cycle->inflow_m3s, cycle->point_m3s,
-                                            cycle->stage_m);
+        status = ready_the_coming_track(cycle, now_utc_s);
     if (status != FW_OK)
         return fw_error_set(error, status, "the flow could not be routed: an inflow is not finite or is negative");
-    cycle->replaced_share = fmin(1.0, (double)(network_steps_replaced(cycle->network) - replaced_before) /
-                                          (double)(cycle->step_count * cycle->member_count));
+    look_back(cycle, now_utc_s, step_count);
     return FW_OK;
 }

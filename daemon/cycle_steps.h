@@ -4,13 +4,15 @@
 #define FOREWATER_DAEMON_CYCLE_STEPS_H
 
 #include "daemon/cycle.h"
+#include "daemon/track.h"
 #include "engine/series.h"
 
 enum {
-    CYCLE_FUTURES = ASSUMED_FUTURE_COUNT, /* members of a roughness group: three forecasts, two envelope edges */
+    CYCLE_FUTURES = TRACK_FUTURES, /* members of a roughness group: three forecasts, two envelope edges */
     CYCLE_FORECASTS_MAX =
         8 * ASSUMED_FORECAST_COUNT, /* as many roughness factors as the settings take, times the futures */
-    CYCLE_ALIGN_S = 3600            /* routing starts at whole hours, so that the same input gives the same bytes */
+    CYCLE_ALIGN_S = 6 * 3600,       /* routing starts at these fixed instants, whatever was routed before */
+    CYCLE_LOOK_BACK_S = 24 * 3600   /* how far before now levels are looked at, to such an instant */
 };
 
 struct cycle {
@@ -21,14 +23,17 @@ struct cycle {
     size_t *forecast_columns;
     size_t step_capacity; /* steps the arrays can hold */
 
+    /* kept from pass to pass */
+    struct track *present; /* whose levels are this pass's */
+    struct track *coming;  /* the one that starts CYCLE_ALIGN_S later, made ready little by little */
+    int64_t readied_utc_s; /* when that was last gone on with; 0: not yet */
+
     /* of the present pass */
-    int64_t start_utc_s;
+    int64_t start_utc_s;   /* of the levels that are looked at: step 0 below */
+    size_t step_count;     /* from there to now + horizon */
+    size_t first_step;     /* step 0 on the present track */
     double replaced_share; /* of the steps of all members, that the full equations could not take */
-    size_t step_count;     /* from start to now + horizon */
-    bool *has_inflow;      /* [gauge]: there is something to route */
-    double *inflow_m3s;    /* [gauge][step + 1][member] */
-    double *point_m3s;     /* [point][step + 1][member] */
-    double *stage_m;       /* [point][step + 1][member], above the point's invert */
+    double *inflow_m3s;    /* [gauge][future][step_capacity + 1], from the start of the present track */
 
     /* scratch */
     struct hazard_water *deck_water; /* [step + 1][member] of one point; of columns that are no forecast, dry */
@@ -40,10 +45,27 @@ struct cycle {
     size_t *sample_index;
     size_t sample_capacity;
     double *future_m3s; /* [step + 1] */
-    double *even_value;
-    enum series_origin *even_origin;
-    bool *is_above; /* [gauge] */
+    bool *is_above;     /* [gauge] */
 };
+
+/* Levels at a point at a step of the present pass, [member]; the next step's follow. */
+static inline const double *cycle_stage_m(const struct cycle *cycle, size_t point, size_t step)
+{
+    return track_stage_m(cycle->present, point, cycle->first_step + step);
+}
+
+/* Flows there, in the same order. */
+static inline const double *cycle_discharge_m3s(const struct cycle *cycle, size_t point, size_t step)
+{
+    return track_discharge_m3s(cycle->present, point, cycle->first_step + step);
+}
+
+/* Flow at a gauge by one of the assumed futures, at a step of the present pass. */
+static inline double cycle_inflow_m3s(const struct cycle *cycle, size_t gauge, size_t future, size_t step)
+{
+    return cycle
+        ->inflow_m3s[(gauge * CYCLE_FUTURES + future) * (cycle->step_capacity + 1) + cycle->first_step + step];
+}
 
 static inline double cycle_quantity_discharge(const struct settings_gauge *gauge, double value)
 {

@@ -53,27 +53,24 @@ static enum fw_status allocate_work_space(struct cycle *cycle)
     cycle->forecast_column_count = groups * ASSUMED_FORECAST_COUNT;
     cycle->step_capacity =
         (size_t)((settings->warm_up_s + settings->horizon_s + CYCLE_ALIGN_S) / settings->time_step_s) + 2;
-    size_t row = (cycle->step_capacity + 1) * cycle->member_count;
+    size_t row = cycle->step_capacity + 1;
     cycle->forecast_columns = calloc(cycle->forecast_column_count, sizeof *cycle->forecast_columns);
-    cycle->has_inflow = calloc(settings->gauge_count + 1, sizeof *cycle->has_inflow);
     cycle->is_above = calloc(settings->gauge_count + 1, sizeof *cycle->is_above);
-    cycle->inflow_m3s = calloc(settings->gauge_count * row + 1, sizeof(double));
-    cycle->point_m3s = calloc(settings->point_count * row + 1, sizeof(double));
-    cycle->stage_m = calloc(settings->point_count * row + 1, sizeof(double));
-    cycle->deck_water = calloc(row, sizeof *cycle->deck_water);
-    cycle->deck_share = calloc(row, sizeof(double));
-    cycle->future_m3s = calloc(cycle->step_capacity + 1, sizeof(double));
-    cycle->even_value = calloc(cycle->step_capacity + 1, sizeof(double));
-    cycle->even_origin = calloc(cycle->step_capacity + 1, sizeof *cycle->even_origin);
-    if (!cycle->forecast_columns || !cycle->has_inflow || !cycle->is_above || !cycle->inflow_m3s ||
-        !cycle->point_m3s || !cycle->stage_m || !cycle->deck_water || !cycle->deck_share || !cycle->future_m3s ||
-        !cycle->even_value || !cycle->even_origin)
+    cycle->inflow_m3s = calloc(settings->gauge_count * CYCLE_FUTURES * row + 1, sizeof(double));
+    cycle->deck_water = calloc(row * cycle->member_count, sizeof *cycle->deck_water);
+    cycle->deck_share = calloc(row * cycle->member_count, sizeof(double));
+    cycle->future_m3s = calloc(row, sizeof(double));
+    if (!cycle->forecast_columns || !cycle->is_above || !cycle->inflow_m3s || !cycle->deck_water ||
+        !cycle->deck_share || !cycle->future_m3s)
         return FW_NO_MEMORY;
     size_t next = 0;
     for (size_t group = 0; group < groups; group++)
         for (size_t future = 0; future < ASSUMED_FORECAST_COUNT; future++)
             cycle->forecast_columns[next++] = group * CYCLE_FUTURES + future;
-    return FW_OK;
+    enum fw_status status = track_create(settings, cycle->network, cycle->step_capacity, &cycle->present);
+    if (status == FW_OK)
+        status = track_create(settings, cycle->network, cycle->step_capacity, &cycle->coming);
+    return status;
 }
 
 enum fw_status cycle_create(const struct settings *settings, struct cycle **cycle_out, struct fw_error *error)
@@ -97,13 +94,12 @@ void cycle_destroy(struct cycle *cycle)
 {
     if (cycle == NULL)
         return;
+    track_destroy(cycle->present);
+    track_destroy(cycle->coming);
     network_destroy(cycle->network);
     free(cycle->forecast_columns);
-    free(cycle->has_inflow);
     free(cycle->is_above);
     free(cycle->inflow_m3s);
-    free(cycle->point_m3s);
-    free(cycle->stage_m);
     free(cycle->deck_water);
     free(cycle->deck_share);
     free(cycle->sample_utc_s);
@@ -112,8 +108,6 @@ void cycle_destroy(struct cycle *cycle)
     free(cycle->verdicts);
     free(cycle->sample_index);
     free(cycle->future_m3s);
-    free(cycle->even_value);
-    free(cycle->even_origin);
     free(cycle);
 }
 
@@ -143,7 +137,7 @@ enum fw_status cycle_reserve_samples(struct cycle *cycle, size_t count)
 void cycle_spread_at(const struct cycle *cycle, size_t point, size_t step, double spread_out_m[3])
 {
     double values[CYCLE_FORECASTS_MAX] = {0};
-    const double *row = cycle->stage_m + (point * (cycle->step_count + 1) + step) * cycle->member_count;
+    const double *row = cycle_stage_m(cycle, point, step);
     size_t count = cycle->forecast_column_count;
     assert(count > 0 && count <= CYCLE_FORECASTS_MAX);
     for (size_t column = 0; column < count; column++) { /* insertion sort: there are nine */

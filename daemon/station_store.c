@@ -4,8 +4,6 @@
 #include <stdio.h>
 #include <string.h>
 
-enum { LOADED_BEYOND_WARM_UP_S = 6 * 3600 };
-
 void station_store_trouble(struct station *station, const struct fw_error *error)
 {
     bool is_news = !station->picture->is_store_failing;
@@ -140,8 +138,8 @@ enum fw_status station_store_load(struct station *station, struct fw_error *erro
     if (status != FW_OK)
         return fw_error_set(error, status, "no memory for the picture");
     if (station->store != NULL)
-        status = store_load_picture(station->store, settings, now - settings->warm_up_s - LOADED_BEYOND_WARM_UP_S,
-                                    picture, error);
+        status = store_load_picture(station->store, settings,
+                                    now - settings->warm_up_s - CYCLE_READINGS_BEYOND_WARM_UP_S, picture, error);
     if (status != FW_OK) {
         picture_destroy(picture);
         return status;
