@@ -54,8 +54,9 @@ bool network_run_init(struct network_run *run, const struct network_run_setup *s
     *run = (struct network_run){.setup = *setup};
     run->reaches = calloc(setup->reach_count, sizeof *run->reaches);
     run->gauge_node = calloc(setup->reach_count + 1, sizeof *run->gauge_node);
+    run->gauge_floods = calloc(setup->reach_count + 1, sizeof *run->gauge_floods);
     run->factors = calloc(setup->group_count, sizeof *run->factors);
-    if (run->reaches == NULL || run->gauge_node == NULL || run->factors == NULL)
+    if (run->reaches == NULL || run->gauge_node == NULL || run->gauge_floods == NULL || run->factors == NULL)
         goto failed;
     lay_reaches(run);
     run->inflow_m3s = calloc(run->gauge_count * values, sizeof *run->inflow_m3s);
@@ -64,8 +65,13 @@ bool network_run_init(struct network_run *run, const struct network_run_setup *s
     if (run->inflow_m3s == NULL || run->first_m3s == NULL || run->outflow_m3s == NULL)
         goto failed;
     fill_inflow(run);
+    for (size_t gauge = 0; gauge < run->gauge_count; gauge++)
+        run->gauge_floods[gauge] = (struct method_flood){.base_m3s = setup->flood.base_m3s / (double)run->gauge_count,
+                                                         .peak_m3s = (setup->flood.base_m3s + setup->flood.rise_m3s) /
+                                                                     (double)run->gauge_count,
+                                                         .rise_s = flood_rise_s(&setup->flood)};
     for (size_t group = 0; group < setup->group_count; group++)
-        run->factors[group] = 1.0 + 0.01 * (double)group;
+        run->factors[group] = 1.0 + 0.01 * ((double)group - 0.5 * (double)(setup->group_count - 1));
     run->river = (struct network_river){.node_count = setup->reach_count + 1,
                                         .gauge_count = run->gauge_count,
                                         .gauge_node = run->gauge_node,
@@ -78,6 +84,7 @@ bool network_run_init(struct network_run *run, const struct network_run_setup *s
                                             .group_count = setup->group_count,
                                             .roughness_factors = run->factors,
                                             .members_per_group = setup->members_per_group,
+                                            .gauge_floods = run->gauge_floods,
                                             .largest_discharge_m3s = setup->flood.base_m3s + setup->flood.rise_m3s};
     double begin = wall_s();
     if (network_create(&run->river, &options, &run->network, &fault) != FW_OK) {
@@ -96,6 +103,7 @@ void network_run_clear(struct network_run *run)
     network_destroy(run->network);
     free(run->reaches);
     free(run->gauge_node);
+    free(run->gauge_floods);
     free(run->factors);
     free(run->inflow_m3s);
     free(run->first_m3s);

@@ -3,6 +3,7 @@
 #ifndef FOREWATER_TESTS_BENCH_NETWORK_RUN_H
 #define FOREWATER_TESTS_BENCH_NETWORK_RUN_H
 
+#include "engine/method.h"
 #include "engine/network.h"
 #include "tests/bench/river_case.h"
 #include "tests/bench/stopwatch.h"
@@ -25,6 +26,7 @@ struct network_run {
     struct network_reach *reaches;
     size_t *gauge_node;
     size_t gauge_count;
+    struct method_flood *gauge_floods;
     double *factors, *inflow_m3s;
     double *first_m3s;   /* [gauge][member] */
     double *outflow_m3s; /* [step, 0 the present][member] */

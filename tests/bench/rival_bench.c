@@ -22,7 +22,7 @@
 
 enum way { NAMED, FREE, ASKED, DAEMON, WAYS };
 enum against { NAMED_SAME_CELLS, NAMED_ANY_CELLS, ASKED_ANY, DAEMON_ANY, RIVALS };
-enum { MANY_MEMBERS = 1000, DATA_INTERVAL_S = 900 };
+enum { MANY_GROUPS = 25, MEMBERS_OF_A_GROUP = 40, SMOKE_GROUPS = 2, DATA_INTERVAL_S = 900 };
 static const char *const way_names[] = {"named", "free", "asked", "daemon"};
 
 struct match {
@@ -37,20 +37,12 @@ struct match {
 
 /* --- who takes part ------------------------------------------------------------------------------------------------- */
 
-static double rise_s_of(const struct river_case *river)
-{
-    double steepest = 0.0;
-    for (double t_s = 0.0; t_s < river->flood.peak_s; t_s += river->flood.peak_s / 1000.0)
-        steepest = fmax(steepest, flood_m3s(t_s + 1.0, &river->flood) - flood_m3s(t_s, &river->flood));
-    return river->flood.rise_m3s / steepest;
-}
-
 static void choose_sides(struct match *match)
 {
     struct contest *contest = &match->contest;
     const struct river_case *river = contest->river;
     const struct method_flood flood = {
-        .base_m3s = river->flood.base_m3s, .peak_m3s = contest->largest_m3s, .rise_s = rise_s_of(river)};
+        .base_m3s = river->flood.base_m3s, .peak_m3s = contest->largest_m3s, .rise_s = flood_rise_s(&river->flood)};
     double daemon_step_s = contest->is_smoke ? 300.0 : method_time_step_s(&flood, DATA_INTERVAL_S);
     contest_run_trials(contest);
     match->engine[NAMED] = contest_try_engine(contest, river->cell_count, river->time_step_s, 1);
@@ -75,9 +67,10 @@ struct sides {
     struct laps rival_laps[RIVALS][CONTEST_MEMBERS];
 };
 
-static bool make_run(const struct match *match, enum way way, size_t members, struct network_run *run)
+static bool make_run(const struct match *match, enum way way, size_t groups, size_t members, struct network_run *run)
 {
-    const struct network_run_setup setup = contest_engine_setup(&match->contest, &match->engine[way], members);
+    struct network_run_setup setup = contest_engine_setup(&match->contest, &match->engine[way], members);
+    setup.group_count = groups;
     return match->engine[way].seconds == 0.0 || network_run_init(run, &setup);
 }
 
@@ -94,9 +87,14 @@ static size_t rival_members(const struct match *match)
     return match->contest.is_smoke ? 2 : CONTEST_MEMBERS;
 }
 
+static size_t many_groups(const struct match *match)
+{
+    return match->contest.is_smoke ? SMOKE_GROUPS : MANY_GROUPS;
+}
+
 static size_t many_members(const struct match *match)
 {
-    return match->contest.is_smoke ? 2 * CONTEST_MEMBERS : MANY_MEMBERS;
+    return many_groups(match) * MEMBERS_OF_A_GROUP;
 }
 
 static bool run_rival(struct match *match, struct rival *rival, struct laps laps[])
@@ -114,10 +112,10 @@ static bool make_sides(const struct match *match, struct sides *sides)
 {
     const struct rival_reach reach = contest_reach(&match->contest);
     for (enum way way = NAMED; way < WAYS; way++)
-        if (!make_run(match, way, 1, &sides->lone[way]) ||
-            !make_run(match, way, CONTEST_MEMBERS, &sides->block[way]) ||
+        if (!make_run(match, way, 1, 1, &sides->lone[way]) ||
+            !make_run(match, way, 1, CONTEST_MEMBERS, &sides->block[way]) ||
             /* the daemon's short steps of a thousand would only take memory and time */
-            (way != DAEMON && !make_run(match, way, many_members(match), &sides->many[way])))
+            (way != DAEMON && !make_run(match, way, many_groups(match), MEMBERS_OF_A_GROUP, &sides->many[way])))
             return false;
     for (size_t i = 0; i < RIVALS; i++)
         if (match->rival[i].seconds > 0.0 && !rival_create(&sides->rival[i], &reach, &match->rival[i].setup))
@@ -232,9 +230,8 @@ static void print_most_accurate(const struct contest *contest)
 
 static void print_match(const struct match *match)
 {
-    printf("  %s: %s\n",
-           match->contest.is_full ? "full equations against Saint-Venant" : "storage form against diffusive",
-           match->contest.river->description);
+    printf("  %s\n",
+           match->contest.is_full ? "full equations against Saint-Venant" : "storage form against diffusive");
     print_engine(match, NAMED);
     print_rival(match, "as many", NAMED_SAME_CELLS, NAMED);
     print_rival(match, "any", NAMED_ANY_CELLS, NAMED);
@@ -278,6 +275,30 @@ static bool run_match(const struct river_case *river, bool is_full, bool is_smok
     return is_well;
 }
 
+/* The river, and what the engine's rule chooses for it. */
+static bool print_choice(const struct river_case *river)
+{
+    const struct network_run_setup setup = {.section = &river->section,
+                                            .slope_m_per_m = river->slope_m_per_m,
+                                            .reach_m = river->length_m,
+                                            .reach_count = 1,
+                                            .method = NETWORK_AUTO,
+                                            .group_count = 1,
+                                            .members_per_group = 1,
+                                            .time_step_s = river->time_step_s,
+                                            .step_count = 1,
+                                            .flood = river->flood};
+    struct method_choice choice;
+    struct network_run run;
+    if (!network_run_init(&run, &setup))
+        return false;
+    network_reach_choice(run.network, 0, &choice);
+    printf("\n  %s: %s\n  by rule: %s (%s)\n", river->name, river->description, method_name(choice.method),
+           method_reason_text(choice.reason));
+    network_run_clear(&run);
+    return true;
+}
+
 static bool run_case(const struct river_case *river, bool is_smoke)
 {
     struct full_flow_result truth = {0};
@@ -291,7 +312,7 @@ static bool run_case(const struct river_case *river, bool is_smoke)
                                         .output_step_s = river->time_step_s,
                                         .inflow = flood_m3s,
                                         .inflow_parameters = &river->flood};
-    bool is_well = full_flow_run(&fine, &truth);
+    bool is_well = print_choice(river) && full_flow_run(&fine, &truth);
     if (is_well && river->is_for_storage_form)
         is_well = run_match(river, false, is_smoke, full_flow_discharge_at(&truth, 0));
     if (is_well)
@@ -305,7 +326,8 @@ bool bench_rival(struct engine_bench *bench)
     bool is_well = true;
     printf(
         "\nAgainst SUNDIALS CVODE (BDF, banded, method of lines, same tables) at equal accuracy; the rival runs once "
-        "per member.\nPer member of 32 and of 1,000: storage form floor 30 x, aim 60 x; full equations floor 8 x, "
+        "per member.\nPer member of 32 and of 1,000 (25 roughness groups): storage form floor 30 x, aim 60 x; full "
+        "equations floor 8 x, "
         "aim "
         "15 x\n");
     for (size_t i = 0; i < RIVER_CASE_COUNT; i++) {

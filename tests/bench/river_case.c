@@ -53,6 +53,14 @@ double flood_m3s(double t_s, const void *parameters)
     return x > 0.0 ? flood->base_m3s + flood->rise_m3s * exp(flood->power * (log(x) + 1.0 - x)) : flood->base_m3s;
 }
 
+double flood_rise_s(const struct flood *flood)
+{
+    double steepest = 0.0, step_s = 1e-3 * flood->peak_s;
+    for (double t_s = 0.0; t_s < flood->peak_s; t_s += step_s)
+        steepest = fmax(steepest, (flood_m3s(t_s + step_s, flood) - flood_m3s(t_s, flood)) / step_s);
+    return flood->rise_m3s / steepest;
+}
+
 struct flood flood_of_member(const struct flood *flood, size_t member)
 {
     struct flood own = *flood;

@@ -15,6 +15,9 @@ struct flood {
 
 double flood_m3s(double t_s, const void *flood);
 
+/* (peak - base) / steepest rise */
+double flood_rise_s(const struct flood *flood);
+
 /* What a member routes in place of the given flood: its rise by 0.8 to 1.2, 1 for member 0. */
 struct flood flood_of_member(const struct flood *flood, size_t member);
 
