@@ -290,6 +290,31 @@ static const struct settings_key keys[] = {
     ARRAY("reaches[].outlet.stage_series[]", WANTED, 2, 2, NULL,
           "Time (RFC 3339, or for `route` seconds), level (m)."),
     MOMENT_OR_NUMBER("reaches[].outlet.stage_series[][]", -1e12, 1e12, "A time, or a level."),
+    OBJECT("reaches[].foot", OPTIONAL,
+           "What rates the flow at the foot by its levels: a weir, a road embankment, a culvert, a drop of the bed, "
+           "with or "
+           "without a reach below. Needs method auto, dynamic or diffusive, and no outlet there. It is drowned by a "
+           "reach below that is computed by the same method."),
+    NUMBER("reaches[].foot.drop_m", OPTIONAL, "m", 0, 200, "0",
+           "How far the bed falls there. Without openings the flow is critical at the edge until the water below "
+           "drowns it."),
+    ARRAY("reaches[].foot.openings", OPTIONAL, 1, 8, NULL, "What the water passes through and over; the flows add."),
+    OBJECT("reaches[].foot.openings[]", WANTED,
+           "A weir or road, Q = Cd L H^1.5 over its crest, or the rows of a culvert. Drowned by Villemonte's rule "
+           "(1947)."),
+    NUMBER("reaches[].foot.openings[].crest_m", OPTIONAL, "m", 0, 100, NULL, "Weir: its crest above the bed."),
+    NUMBER("reaches[].foot.openings[].length_m", OPTIONAL, "m", 0.1, 10000, NULL,
+           "Weir: its length across the flow."),
+    NUMBER("reaches[].foot.openings[].coefficient", OPTIONAL, "", 0.5, 2.5, "1.7",
+           "Weir: Cd in SI units; 1.38 to 1.71 for a road by FHWA HDS-5, where 1.7 is the ideal crest."),
+    ARRAY("reaches[].foot.openings[].rows", OPTIONAL, 2, 1000, NULL,
+          "Culvert: rows of discharge (m3/s) and depth above the bed (m), both rising, the first with discharge 0 at "
+          "the "
+          "sill."),
+    ARRAY("reaches[].foot.openings[].rows[]", WANTED, 2, 2, NULL, "Discharge (m3/s), depth (m)."),
+    NUMBER("reaches[].foot.openings[].rows[][]", WANTED, "", 0, 1e6, NULL, "Discharge or depth."),
+    NUMBER("reaches[].foot.openings[].open_share", OPTIONAL, "", 0, 1, "1",
+           "Share that is not blocked by debris: 1 clean, less part-blocked."),
 
     ARRAY("points", FOR_RUN, 0, 200, NULL, "The crossings, and other places to look at."),
     OBJECT("points[]", WANTED, "One crossing."),

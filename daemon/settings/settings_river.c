@@ -210,7 +210,8 @@ static bool build_reaches(struct settings_work *work, const struct json_value *r
     for (size_t i = 0; (object = settings_work_next(reaches, &i)) != NULL; settings->river.reach_count++) {
         struct network_reach *reach = &built[settings->river.reach_count];
         build_reach(work, reach, object);
-        if (!settings_build_outlet(work, settings->river.reach_count, reach, object))
+        if (!settings_build_outlet(work, settings->river.reach_count, reach, object) ||
+            !settings_build_foot(work, reach, object))
             return false;
     }
     settings->river.reaches = built;

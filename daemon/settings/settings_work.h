@@ -60,6 +60,8 @@ bool settings_work_gives_level_only(const struct settings_work *work, const char
 /* The outlet of a reach that is built already, or nothing; false: no memory. */
 bool settings_build_outlet(struct settings_work *work, size_t reach_index, struct network_reach *reach,
                            const struct json_value *object);
+/* The same for what rates the flow at its foot. */
+bool settings_build_foot(struct settings_work *work, struct network_reach *reach, const struct json_value *object);
 /* Once all reaches are known: a level stands where none leaves. */
 void settings_check_outlets(struct settings_work *work, const struct json_value *reaches);
 

@@ -256,8 +256,8 @@ static void an_outlet_follows_a_gauge_or_a_series(void **state)
     const struct network_river *river = &settings->river;
     assert_int_equal(river->level_count, 3);
     assert_int_equal(settings->level_count, 3);
-    assert_true(river->reaches[1].has_outlet_level && river->reaches[1].outlet_level == 0);
-    assert_int_equal(settings->levels[0].reach, 1);
+    assert_true(river->reaches[2].has_outlet_level && river->reaches[2].outlet_level == 0);
+    assert_int_equal(settings->levels[0].reach, 2);
     assert_int_equal(settings->levels[0].gauge, 4);
     assert_true(settings->levels[0].bed_at_m == 31.4);
     assert_true(settings->gauges[4].gives_level_only);
@@ -272,6 +272,23 @@ static void an_outlet_follows_a_gauge_or_a_series(void **state)
     settings_destroy(settings);
 }
 
+static void a_foot_may_have_a_structure_and_a_drop(void **state)
+{
+    (void)state;
+    struct settings *settings = read_sound(SETTINGS_BOUNDARIES, SETTINGS_FOR_ROUTE);
+    const struct network_reach *beck = &settings->river.reaches[1];
+    assert_true(beck->foot_drop_m == 0.4);
+    assert_non_null(beck->foot_structure);
+    assert_int_equal(beck->foot_structure->opening_count, 2);
+    assert_true(beck->foot_structure->openings[0].open_share == 0.6);
+    /* 0.6 of the culvert's 3.5 m3/s; and 1.6 x 24 x 0.9^1.5 over the weir, within its table's 0.02 % */
+    assert_true(fabs(stage_structure_flow(beck->foot_structure, 0.9, -1.0).discharge_m3s - 2.1) <= 1e-12);
+    double over = stage_structure_flow(beck->foot_structure, 3.0, -1.0).discharge_m3s - 0.6 * (8.0 + 4.5 * 1.1);
+    assert_true(fabs(over / (1.6 * 24.0 * pow(0.9, 1.5)) - 1.0) <= 3e-4);
+    assert_null(settings->river.reaches[0].foot_structure);
+    settings_destroy(settings);
+}
+
 static void a_gauge_may_stand_in_mid_river(void **state)
 {
     (void)state;
@@ -279,9 +296,9 @@ static void a_gauge_may_stand_in_mid_river(void **state)
     assert_int_equal(settings->gauges[1].node, settings->river.reaches[0].to_node);
     assert_true(network_gauge_is_inner(&settings->river, 1));
     assert_false(network_gauge_is_inner(&settings->river, 0));
-    bool is_above[5];
+    bool is_above[6];
     settings_gauges_above(settings, 0, is_above);
-    assert_true(is_above[0] && is_above[1] && !is_above[2] && !is_above[3] && !is_above[4]);
+    assert_true(is_above[0] && is_above[1] && !is_above[2] && !is_above[3] && !is_above[4] && is_above[5]);
     settings_destroy(settings);
 }
 
@@ -589,6 +606,7 @@ int main(void)
         cmocka_unit_test(a_gauge_of_discharge_has_its_own_keys),
         cmocka_unit_test(an_outlet_holds_a_level_by_the_full_equations),
         cmocka_unit_test(an_outlet_follows_a_gauge_or_a_series),
+        cmocka_unit_test(a_foot_may_have_a_structure_and_a_drop),
         cmocka_unit_test(a_gauge_may_stand_in_mid_river),
         cmocka_unit_test(a_point_stands_at_its_node_or_where_it_is_put),
         cmocka_unit_test(gauges_above_a_point_are_those_whose_water_passes_it),

@@ -106,6 +106,30 @@ static void an_outlet_follows_a_series(void **state)
     run_clear(&run);
 }
 
+/* Q = 1.7 x 12 H^1.5 over a crest of 1.1 m; auto takes the full equations there. By a method that cannot, it is refused. */
+static void a_weir_at_a_foot_gives_the_level_above_it(void **state)
+{
+    static const char flows[] = "time,discharge_m3s\n0,25\n7200,25\n10800,42\n36000,42\n";
+    struct run run = RUN(NULL, "route", "--config", DATA "weir.json", "--inflow",
+                         scratch_inflow(*state, "scar", flows), "--every", "3600");
+    assert_run(&run, EX_OK);
+    struct routed routed = routed_read(&run);
+    for (size_t i = 0; i < 2; i++) {
+        size_t row = i == 0 ? 0 : routed.row_count - 1;
+        double flow = i == 0 ? 25.0 : 42.0;
+        assert_true(fabs(routed_value(&routed, row, "above.discharge_m3s") - flow) <= 1e-3);
+        assert_true(fabs(routed_value(&routed, row, "above.stage_m") - 1.1 - pow(flow / (1.7 * 12.0), 2.0 / 3.0)) <=
+                    1e-3);
+    }
+    routed_clear(&routed);
+    run_clear(&run);
+    run = RUN(NULL, "route", "--config", DATA "weir.json", "--method", "kinematic", "--inflow",
+              scratch_inflow(*state, "scar", flows));
+    assert_run(&run, EX_DATAERR);
+    assert_says(run.errors, "reach 'upper': foot_structure: needs method auto, dynamic or diffusive");
+    run_clear(&run);
+}
+
 static void what_is_missing_or_unfit_is_named(void **state)
 {
     static const char utc[] = "time,discharge_m3s\n2031-02-14T20:00:00Z,6.7\n2031-02-14T20:10:00Z,6.7\n";
@@ -143,6 +167,7 @@ int main(void)
                                         close_scratch),
         cmocka_unit_test_setup_teardown(an_outlet_follows_the_level_of_a_gauge, open_scratch, close_scratch),
         cmocka_unit_test_setup_teardown(an_outlet_follows_a_series, open_scratch, close_scratch),
+        cmocka_unit_test_setup_teardown(a_weir_at_a_foot_gives_the_level_above_it, open_scratch, close_scratch),
         cmocka_unit_test_setup_teardown(what_is_missing_or_unfit_is_named, open_scratch, close_scratch),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
