@@ -18,19 +18,18 @@ struct reach_errors {
     double peak_late_s;
     double efficiency;                                            /* Nash and Sutcliffe */
     double level_late_s[JUDGED_MARKS], flow_late_s[JUDGED_MARKS]; /* first passages; negative is early */
+    double level_off_m[JUDGED_MARKS];                             /* when the judge says that it passes the mark */
     double level_m;                                               /* of the highest level */
     size_t cell_count, replaced;
     struct method_choice choice;
 };
 
-static inline double judged_at(const struct judged_flood *flood, double t_s)
+static inline double value_at(size_t count, const double values[], double step_s, double t_s)
 {
-    double at = t_s / flood->step_s;
-    size_t step = (size_t)at;
-    if (step + 1 >= flood->count)
-        return flood->discharge_m3s[flood->count - 1];
-    return flood->discharge_m3s[step] +
-           (at - (double)step) * (flood->discharge_m3s[step + 1] - flood->discharge_m3s[step]);
+    size_t step = (size_t)(t_s / step_s);
+    if (step + 1 >= count)
+        return values[count - 1];
+    return values[step] + (t_s / step_s - (double)step) * (values[step + 1] - values[step]);
 }
 
 static inline double efficiency_against(const struct judged_flood *flood, size_t count, const double flow_m3s[],
@@ -38,9 +37,9 @@ static inline double efficiency_against(const struct judged_flood *flood, size_t
 {
     double mean = 0.0, error = 0.0, spread = 0.0;
     for (size_t i = 0; i < count; i++)
-        mean += judged_at(flood, (double)i * step_s) / (double)count;
+        mean += value_at(flood->count, flood->discharge_m3s, flood->step_s, (double)i * step_s) / (double)count;
     for (size_t i = 0; i < count; i++) {
-        double truth = judged_at(flood, (double)i * step_s);
+        double truth = value_at(flood->count, flood->discharge_m3s, flood->step_s, (double)i * step_s);
         error += (flow_m3s[i] - truth) * (flow_m3s[i] - truth);
         spread += (truth - mean) * (truth - mean);
     }
@@ -102,6 +101,7 @@ static inline struct reach_errors route_random_reach(const struct random_reach *
     for (size_t i = 0; i < JUDGED_MARKS; i++) {
         errors.level_late_s[i] =
             judged_passage_s(count, level, step_s, flood->level_mark_m[i]) - flood->level_passage_s[i];
+        errors.level_off_m[i] = value_at(count, level, step_s, flood->level_passage_s[i]) - flood->level_mark_m[i];
         errors.flow_late_s[i] =
             judged_passage_s(count, flow, step_s, flood->flow_mark_m3s[i]) - flood->flow_passage_s[i];
     }

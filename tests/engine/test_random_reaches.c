@@ -27,7 +27,8 @@ struct verdict {
     struct random_reach reach; /* its section is not to be read: it pointed elsewhere */
     struct reach_errors errors;
     double allowed_s, travel_s, peak_doubt, passage_doubt_s;
-    double worst_late_s; /* of the three levels, the largest in size, with its sign */
+    double worst_late_s;                    /* of the three levels, the largest in size, with its sign */
+    double worst_off_m, worst_above_bank_m; /* that level's error then, and where its mark is */
 };
 
 struct selection {
@@ -55,8 +56,11 @@ static struct verdict judge(size_t number)
                               .peak_doubt = flood.peak_doubt,
                               .passage_doubt_s = flood.passage_doubt_s};
     for (size_t i = 0; i < JUDGED_MARKS; i++)
-        if (!(fabs(verdict.errors.level_late_s[i]) <= fabs(verdict.worst_late_s)))
+        if (!(fabs(verdict.errors.level_late_s[i]) <= fabs(verdict.worst_late_s))) {
             verdict.worst_late_s = verdict.errors.level_late_s[i];
+            verdict.worst_off_m = verdict.errors.level_off_m[i];
+            verdict.worst_above_bank_m = flood.level_mark_m[i] - reach.bank_m;
+        }
     judged_flood_clear(&flood);
     return verdict;
 }
@@ -69,12 +73,13 @@ static void print_reach(const struct verdict *verdict)
     const struct reach_errors *errors = &verdict->errors;
     print_message(
         "  %4zu %-8s S0 %.5f, %.1f km, %.0f m wide, bank %.2f m, peak %.2f m deep, rise %.1f h, %.1f to %.1f "
-        "m3/s, Fr %.2f; %s: peak %+.2f %%, levels %+.0f %+.0f %+.0f s of %.0f\n",
+        "m3/s, Fr %.2f; %s: peak %+.2f %%, levels %+.0f %+.0f %+.0f s of %.0f; at the worst "
+        "the level is off by %+.1f mm, the mark %+.0f mm from bank full\n",
         reach->number, random_reach_class_name(reach->class), reach->slope_m_per_m, reach->length_m / 1000.0,
         reach->width_m, reach->bank_m, reach->peak_depth_m, reach->rise_s / 3600.0, reach->flood.base_m3s,
         reach->flood.base_m3s + reach->flood.rise_m3s, reach->froude, method_name(errors->choice.method),
         100.0 * errors->peak, errors->level_late_s[0], errors->level_late_s[1], errors->level_late_s[2],
-        verdict->allowed_s);
+        verdict->allowed_s, 1000.0 * verdict->worst_off_m, 1000.0 * verdict->worst_above_bank_m);
 }
 
 static double peak_size(const struct verdict *verdict)
