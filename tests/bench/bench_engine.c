@@ -4,7 +4,7 @@
  * both measured in the same run (docs/speed.md).
  *
  *     ninja -C build/release bench_engine && build/release/tests/bench_engine [--smoke] [PART...]
- * Parts: storage, full, growth, rival; none named: all. --smoke takes seconds, asserts that accuracy is within wide bounds,
+ * Parts: storage, full, growth, rival; none named: all. The rival's rivers: published, flashy, flat; none named: all. --smoke takes seconds, asserts that accuracy is within wide bounds,
  * and nothing of speed.
  */
 #include <stdio.h>
@@ -13,6 +13,7 @@
 
 #include "tests/bench/engine_bench.h"
 #include "tests/bench/level.h"
+#include "tests/bench/river_case.h"
 #include "tests/bench/stopwatch.h"
 
 const struct section bench_channel = {.shape = SECTION_TRAPEZOID,
@@ -102,8 +103,14 @@ int main(int argument_count, char *arguments[])
         for (size_t part = 0; part < PARTS; part++)
             if (strcmp(arguments[i], parts[part].name) == 0)
                 is_known = is_wanted[part] = is_any = true;
+        for (size_t river = 0; river < RIVER_CASE_COUNT; river++)
+            if (strcmp(arguments[i], river_cases[river].name) == 0) {
+                bench.river = river_cases[river].name;
+                is_known = true;
+            }
         if (!is_known) {
-            fprintf(stderr, "usage: bench_engine [--smoke] [storage] [full] [growth] [rival]\n");
+            fprintf(stderr,
+                    "usage: bench_engine [--smoke] [storage] [full] [growth] [rival] [published | flashy | flat]\n");
             return EXIT_FAILURE;
         }
     }

@@ -9,6 +9,7 @@
 #include "engine/vector.h"
 
 struct engine_bench {
+    const char *river;                   /* of the rival's; NULL: all */
     bool is_smoke;                       /* smallest sizes, to see that everything runs */
     double triad_ns[VECTOR_LEVEL_COUNT]; /* per element; 0 where the level is not present */
 };

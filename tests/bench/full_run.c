@@ -7,7 +7,7 @@
 
 #include "tests/bench/river_case.h"
 
-enum { NODES_OF_A_LAP = 20000, MOST_BALANCED = 64 };
+enum { NODES_OF_A_LAP = 10000, MOST_BALANCED = 64 };
 static const struct flood flood = {8.0, 80.0, 4.0 * 3600.0, 6.0};
 static const double time_step_s = 60.0, interval_m = 130.0, slope = 0.0009;
 

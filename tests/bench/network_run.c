@@ -5,7 +5,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-enum { VALUES_OF_A_LAP = 100000 };
+enum { VALUES_OF_A_LAP = 40000, VALUES_OF_A_FULL_LAP = 4000 };
 
 /* A chain from node 0 down; a tributary runs from a node of its own into the chain's newest. */
 static void lay_reaches(struct network_run *run)
@@ -111,9 +111,14 @@ void network_run_clear(struct network_run *run)
     memset(run, 0, sizeof *run);
 }
 
-static size_t values_of_a_step(const struct network_run *run)
+/* Steps that take a fraction of a millisecond. The arrays of one gauge and one point may be taken piece by piece; of more gauges,
+ * only whole. */
+static size_t steps_of_a_lap(const struct network_run *run)
 {
-    return run->setup.group_count * run->setup.members_per_group * network_cell_count(run->network, 0);
+    size_t values = run->setup.group_count * run->setup.members_per_group * network_cell_count(run->network, 0);
+    size_t wanted = network_method_is_full(run->setup.method) ? VALUES_OF_A_FULL_LAP : VALUES_OF_A_LAP;
+    size_t fewest = 1 + run->setup.step_count / (MOST_LAPS - 1);
+    return run->gauge_count > 1 ? run->setup.step_count : wanted / values > fewest ? wanted / values : fewest;
 }
 
 bool network_run_advance(struct network_run *run, struct laps *laps)
@@ -124,8 +129,7 @@ bool network_run_advance(struct network_run *run, struct laps *laps)
                members * sizeof *run->first_m3s);
     if (network_start_steady(run->network, run->first_m3s) != FW_OK)
         return false;
-    /* the arrays of one gauge and one point may be taken piece by piece; of more, only whole */
-    size_t piece = run->gauge_count > 1 ? steps : 1 + (size_t)(VALUES_OF_A_LAP / (double)values_of_a_step(run));
+    size_t piece = steps_of_a_lap(run);
     laps_start(laps);
     for (size_t at = 0; at < steps; at += piece) {
         size_t count = piece < steps - at ? piece : steps - at;

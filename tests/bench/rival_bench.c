@@ -11,6 +11,7 @@
  */
 #include <math.h>
 #include <stdio.h>
+#include <string.h>
 
 #include "tests/bench/engine_bench.h"
 
@@ -332,7 +333,8 @@ bool bench_rival(struct engine_bench *bench)
         "15 x\n");
     for (size_t i = 0; i < RIVER_CASE_COUNT; i++) {
         struct river_case river = river_cases[i];
-        if (bench->is_smoke && i != 1)
+        bool is_wanted = bench->river == NULL || strcmp(bench->river, river.name) == 0;
+        if (!is_wanted || (bench->is_smoke && i != 1))
             continue;
         if (bench->is_smoke)
             river.cell_count = 40;
