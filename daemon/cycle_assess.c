@@ -45,6 +45,25 @@ static int64_t measured_until(const struct cycle *cycle, size_t point)
     return isfinite(earliest_s) ? cycle->start_utc_s + (int64_t)floor(earliest_s) : PASSAGE_NEVER;
 }
 
+/* Does a gauge in mid-river measure, above the point, what passes this node? */
+static bool is_measured_below(const struct cycle *cycle, const struct picture *picture, size_t node)
+{
+    const struct network_river *river = &cycle->settings->river;
+    for (size_t gauge = 0; gauge < picture->gauge_count; gauge++)
+        if (cycle->is_above[gauge] && picture->gauges[gauge].newest_utc_s != 0 &&
+            network_gauge_is_inner(river, gauge) && network_leads_to(river, node, river->gauge_node[gauge]))
+            return true;
+    return false;
+}
+
+/* The same of a gauge: by another further down. */
+static bool is_gauged_again(const struct cycle *cycle, const struct picture *picture, size_t gauge)
+{
+    const struct network_river *river = &cycle->settings->river;
+    size_t below = network_reach_from(river, river->gauge_node[gauge]);
+    return below != NETWORK_NONE && is_measured_below(cycle, picture, river->reaches[below].to_node);
+}
+
 /*
  * Side water that enters above the point and no gauge measures, as a share of all water on its way there. Both are taken at the gauges' newest
  * flow, so that the share does not swing with where on the river a flood's front is.
@@ -56,7 +75,7 @@ static double unmeasured_share(const struct cycle *cycle, const struct picture *
     double measured_m3s = 0.0;
     double unmeasured_m3s = 0.0;
     for (size_t gauge = 0; gauge < picture->gauge_count; gauge++)
-        if (cycle->is_above[gauge])
+        if (cycle->is_above[gauge] && !is_gauged_again(cycle, picture, gauge))
             measured_m3s += picture->gauges[gauge].newest_discharge_m3s;
     for (size_t side = 0; side < river->side_inflow_count; side++) {
         const struct network_side_inflow *inflow = &river->side_inflows[side];
@@ -64,7 +83,7 @@ static double unmeasured_share(const struct cycle *cycle, const struct picture *
                             ? inflow->at_m < place->at_m
                             : network_leads_to(river, river->reaches[inflow->reach_index].to_node,
                                                river->reaches[place->reach_index].from_node);
-        if (is_above)
+        if (is_above && !is_measured_below(cycle, picture, river->reaches[inflow->reach_index].to_node))
             unmeasured_m3s += inflow->share_of_gauge == NETWORK_NONE
                                   ? inflow->constant_m3s
                                   : inflow->share * picture->gauges[inflow->share_of_gauge].newest_discharge_m3s;

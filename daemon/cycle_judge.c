@@ -94,7 +94,8 @@ static void describe_gauge(struct cycle *cycle, const struct settings_gauge *kno
     gauge->is_hand = newest_is_hand;
     gauge->is_unconfirmed = (newest_reasons & QUALITY_COUNTS_UNCONFIRMED) != 0;
     struct rating_flags flags = {0};
-    gauge->newest_discharge_m3s = known->measures == SETTINGS_STAGE
+    gauge->newest_discharge_m3s = known->gives_level_only ? (double)NAN
+                                  : known->measures == SETTINGS_STAGE
                                       ? rating_discharge_m3s(&known->rating, gauge->newest_value, &flags)
                                       : gauge->newest_value;
     gauge->is_beyond_gauging = flags.is_beyond_highest_gauging;

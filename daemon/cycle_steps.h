@@ -33,7 +33,7 @@ struct cycle {
     size_t step_count;     /* from there to now + horizon */
     size_t first_step;     /* step 0 on the present track */
     double replaced_share; /* of the steps of all members, that the full equations could not take */
-    double *inflow_m3s;    /* [gauge][future][step_capacity + 1], from the start of the present track */
+    double *inflow_m3s;    /* [gauge, then level][future][step_capacity + 1], from the start of the present track */
 
     /* scratch */
     struct hazard_water *deck_water; /* [step + 1][member] of one point; of columns that are no forecast, dry */
@@ -44,8 +44,9 @@ struct cycle {
     struct quality_verdict *verdicts;
     size_t *sample_index;
     size_t sample_capacity;
-    double *future_m3s; /* [step + 1] */
-    bool *is_above;     /* [gauge] */
+    double *future_m3s;         /* [step + 1] */
+    enum series_origin *origin; /* [step + 1] */
+    bool *is_above;             /* [gauge] */
 };
 
 /* Levels at a point at a step of the present pass, [member]; the next step's follow. */
@@ -69,6 +70,8 @@ static inline double cycle_inflow_m3s(const struct cycle *cycle, size_t gauge, s
 
 static inline double cycle_quantity_discharge(const struct settings_gauge *gauge, double value)
 {
+    if (gauge->gives_level_only)
+        return 0.0;
     return gauge->measures == SETTINGS_STAGE ? rating_discharge_m3s(&gauge->rating, value, NULL) : value;
 }
 

@@ -56,12 +56,14 @@ static enum fw_status allocate_work_space(struct cycle *cycle)
     size_t row = cycle->step_capacity + 1;
     cycle->forecast_columns = calloc(cycle->forecast_column_count, sizeof *cycle->forecast_columns);
     cycle->is_above = calloc(settings->gauge_count + 1, sizeof *cycle->is_above);
-    cycle->inflow_m3s = calloc(settings->gauge_count * CYCLE_FUTURES * row + 1, sizeof(double));
+    cycle->inflow_m3s =
+        calloc((settings->gauge_count + settings->level_count) * CYCLE_FUTURES * row + 1, sizeof(double));
+    cycle->origin = calloc(row, sizeof *cycle->origin);
     cycle->deck_water = calloc(row * cycle->member_count, sizeof *cycle->deck_water);
     cycle->deck_share = calloc(row * cycle->member_count, sizeof(double));
     cycle->future_m3s = calloc(row, sizeof(double));
     if (!cycle->forecast_columns || !cycle->is_above || !cycle->inflow_m3s || !cycle->deck_water ||
-        !cycle->deck_share || !cycle->future_m3s)
+        !cycle->deck_share || !cycle->future_m3s || !cycle->origin)
         return FW_NO_MEMORY;
     size_t next = 0;
     for (size_t group = 0; group < groups; group++)
@@ -108,6 +110,7 @@ void cycle_destroy(struct cycle *cycle)
     free(cycle->verdicts);
     free(cycle->sample_index);
     free(cycle->future_m3s);
+    free(cycle->origin);
     free(cycle);
 }
 

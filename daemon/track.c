@@ -38,10 +38,10 @@ static enum fw_status allocate_rows(struct track *track)
     const struct settings *settings = track->settings;
     size_t row = track->step_capacity + 1;
     size_t part = (track->part_steps + 1) * track->member_count;
-    track->inflow_m3s = calloc(settings->gauge_count * TRACK_FUTURES * row + 1, sizeof(double));
+    track->inflow_m3s = calloc(track->row_count * TRACK_FUTURES * row + 1, sizeof(double));
     track->stage_m = calloc(settings->point_count * row * track->member_count + 1, sizeof(double));
     track->discharge_m3s = calloc(settings->point_count * row * track->member_count + 1, sizeof(double));
-    track->part_inflow_m3s = calloc(settings->gauge_count * part + 1, sizeof(double));
+    track->part_inflow_m3s = calloc(track->row_count * part + 1, sizeof(double));
     track->part_discharge_m3s = calloc(settings->point_count * part + 1, sizeof(double));
     track->part_stage_m = calloc(settings->point_count * part + 1, sizeof(double));
     bool is_short = !track->inflow_m3s || !track->stage_m || !track->discharge_m3s || !track->part_inflow_m3s ||
@@ -58,6 +58,7 @@ enum fw_status track_create(const struct settings *settings, struct network *net
     track->settings = settings;
     track->network = network;
     track->step_capacity = step_capacity;
+    track->row_count = settings->gauge_count + settings->level_count;
     track->member_count = settings->roughness_factor_count * TRACK_FUTURES;
     track->part_steps = (size_t)(HOUR_S / settings->time_step_s) + 1;
     enum fw_status status = allocate_rows(track);
@@ -154,7 +155,7 @@ static size_t first_difference(const struct track *track, const double inflow_m3
     if (!track->is_routed)
         return 0;
     size_t first = (step_count < track->step_count ? step_count : track->step_count) + 1;
-    for (size_t row = 0; row < track->settings->gauge_count * TRACK_FUTURES; row++) {
+    for (size_t row = 0; row < track->row_count * TRACK_FUTURES; row++) {
         const double *known = track->inflow_m3s + row * (track->step_capacity + 1);
         const double *given = inflow_m3s + row * row_stride;
         if (memcmp(known, given, first * sizeof *known) == 0)
@@ -170,26 +171,27 @@ static size_t first_difference(const struct track *track, const double inflow_m3
 static void remember_inflow(struct track *track, const double inflow_m3s[], size_t row_stride, size_t from,
                             size_t step_count)
 {
-    for (size_t row = 0; row < track->settings->gauge_count * TRACK_FUTURES; row++)
+    for (size_t row = 0; row < track->row_count * TRACK_FUTURES; row++)
         memcpy(track->inflow_m3s + row * (track->step_capacity + 1) + from, inflow_m3s + row * row_stride + from,
                (step_count + 1 - from) * sizeof *inflow_m3s);
 }
 
-/* Members innermost, as the network takes it: [gauge][step][member]. */
+/* Members innermost, as the network takes it: [gauge, then level][step][member]. */
 static void spread_inflow(const struct track *track, size_t from, size_t count, double spread_out_m3s[])
 {
-    for (size_t gauge = 0; gauge < track->settings->gauge_count; gauge++)
+    for (size_t row = 0; row < track->row_count; row++)
         for (size_t step = 0; step <= count; step++, spread_out_m3s += track->member_count)
             for (size_t member = 0; member < track->member_count; member++)
                 spread_out_m3s[member] =
-                    track->inflow_m3s[(gauge * TRACK_FUTURES + member % TRACK_FUTURES) * (track->step_capacity + 1) +
+                    track->inflow_m3s[(row * TRACK_FUTURES + member % TRACK_FUTURES) * (track->step_capacity + 1) +
                                       from + step];
 }
 
 static enum fw_status start_steady(struct track *track)
 {
     spread_inflow(track, 0, 0, track->part_inflow_m3s);
-    return network_start_steady(track->network, track->part_inflow_m3s);
+    return network_start_steady_at(track->network, track->part_inflow_m3s,
+                                   track->part_inflow_m3s + track->settings->gauge_count * track->member_count);
 }
 
 /* The part's levels and flows go to their rows; the first of them is what stands there already. */
@@ -198,8 +200,9 @@ static enum fw_status advance(struct track *track, size_t from, size_t to)
     size_t count = to - from;
     size_t part_row = (count + 1) * track->member_count;
     spread_inflow(track, from, count, track->part_inflow_m3s);
-    enum fw_status status = network_advance_with_stage(track->network, count, track->part_inflow_m3s,
-                                                       track->part_discharge_m3s, track->part_stage_m);
+    enum fw_status status = network_advance_at(track->network, count, track->part_inflow_m3s,
+                                               track->part_inflow_m3s + track->settings->gauge_count * part_row,
+                                               track->part_discharge_m3s, track->part_stage_m);
     for (size_t point = 0; point < track->settings->point_count && status == FW_OK; point++) {
         size_t at = (point * (track->step_capacity + 1) + from) * track->member_count;
         memcpy(track->stage_m + at, track->part_stage_m + point * part_row, part_row * sizeof(double));

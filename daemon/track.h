@@ -32,7 +32,8 @@ struct track {
     int64_t start_utc_s;
     bool is_routed;        /* false: nothing stands below yet */
     size_t step_count;     /* steps routed */
-    double *inflow_m3s;    /* [gauge][future][step_capacity + 1], what led to it */
+    size_t row_count;      /* the gauges, then the river's levels */
+    double *inflow_m3s;    /* [row][future][step_capacity + 1], what led to it; of levels, depths at their feet */
     double *stage_m;       /* [point][step_capacity + 1][member], above the point's invert */
     double *discharge_m3s; /* likewise */
     size_t replaced_steps; /* of all members, that the full equations could not take */
@@ -57,7 +58,8 @@ void track_begin(struct track *track, int64_t start_utc_s);
 /*
  * Routes to step_count (at most step_capacity), with as few steps as the difference to the inflow it remembers allows.
  *
- *   inflow_m3s  [gauge][future], rows of step_count + 1 values, row_stride apart; bits are compared, not numbers
+ *   inflow_m3s  [gauge, then level][future], rows of step_count + 1 values, row_stride apart; bits are compared, not
+ *               numbers; in mid-river not a number where nothing was measured
  *   now_utc_s   states are kept up to here
  * FW_BAD_INPUT  the network refused an inflow; all is forgotten then.
  */

@@ -104,10 +104,6 @@ bool settings_build_outlet(struct settings_work *work, size_t reach_index, struc
     }
     if (stage_of == NULL && series == NULL)
         return true;
-    if (work->need == SETTINGS_FOR_RUN) {
-        json_tree_fault(work->report, outlet, "moves: only `route` knows such levels: expected \"stage_m\"");
-        return true;
-    }
     struct settings_level *level = &settings->levels[settings->level_count];
     *level = (struct settings_level){.reach = reach_index, .gauge = SETTINGS_NONE};
     if (stage_of != NULL)

@@ -307,16 +307,11 @@ static bool place_gauges(struct settings_work *work)
             if (strcmp(settings->node_names[n], id->string) == 0)
                 node = n;
         settings->gauges[gauge].node = gauge_node[gauge] = node;
-        size_t into = node != NETWORK_NONE ? network_reach_into(&settings->river, node) : NETWORK_NONE;
         if (id != NULL && node == NETWORK_NONE && !is_apart)
             json_tree_fault(
                 work->report, id,
                 "stands at no reach: expected a reach with this id as its 'from', or an outlet with it as "
                 "'stage_of'");
-        else if (id != NULL && into != NETWORK_NONE && work->need == SETTINGS_FOR_RUN)
-            json_tree_fault(work->report, id,
-                            "stands in mid-river, where reach '%s' ends: expected a gauge at the head of the river",
-                            settings->river.reaches[into].id != NULL ? settings->river.reaches[into].id : "?");
     }
     settings->river.gauge_count = settings->gauge_count;
     settings->river.gauge_node = gauge_node;
