@@ -12,6 +12,9 @@ static double largest_discharge_m3s(const struct settings *settings, bool is_at_
     double total = 0.0;
     for (size_t index = 0; index < settings->gauge_count; index++) {
         const struct settings_gauge *gauge = &settings->gauges[index];
+        if (gauge->gives_level_only ||
+            network_gauge_is_inner(&settings->river, index)) /* no more water comes there */
+            continue;
         double value = gauge->quality.highest;
         if (gauge->measures == SETTINGS_STAGE && is_at_highest_gauging && isfinite(gauge->rating.highest_gauged_m))
             value = gauge->rating.highest_gauged_m;

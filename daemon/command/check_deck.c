@@ -82,9 +82,11 @@ static double fastest_rise_s(const struct settings *settings, size_t point, cons
     double rate_per_s = 0.0;
     for (size_t index = 0; index < settings->gauge_count; index++) {
         const struct settings_gauge *gauge = &settings->gauges[index];
+        if (!is_above[index])
+            continue;
         double share = 1.0 + side_share(settings, index, point);
         double rise = quantity_at(gauge, to_m3s / share) - quantity_at(gauge, from_m3s / share);
-        if (is_above[index] && isfinite(gauge->quality.fastest_rise_per_s) && rise > 0.0)
+        if (isfinite(gauge->quality.fastest_rise_per_s) && rise > 0.0)
             rate_per_s += gauge->quality.fastest_rise_per_s / rise;
     }
     return rate_per_s > 0.0 ? 1.0 / rate_per_s : to_m3s > from_m3s ? NAN : 0.0;

@@ -12,6 +12,9 @@ static double largest_flow_m3s(const struct settings *settings)
     double total_m3s = 0.0;
     for (size_t gauge = 0; gauge < settings->gauge_count; gauge++) {
         const struct settings_gauge *known = &settings->gauges[gauge];
+        if (known->gives_level_only ||
+            network_gauge_is_inner(&settings->river, gauge)) /* no more water comes there */
+            continue;
         double value = isfinite(known->quality.highest) ? known->quality.highest : 10.0;
         if (known->measures == SETTINGS_STAGE && isfinite(known->rating.highest_gauged_m))
             value = 1.25 * known->rating.highest_gauged_m;

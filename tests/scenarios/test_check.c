@@ -193,6 +193,36 @@ static void full_equations_are_told_with_their_own_limit(void **state)
     free(text);
 }
 
+/* A gauge in mid-river is told like any other; one that gives a level only, and a weir, are no fault. */
+static void what_stands_in_the_river_is_no_fault(void **state)
+{
+    char *text = changed(
+        read_whole(DEMO), "\n    ],\n\n    \"sections\": [",
+        ",\n{ \"id\": \"narrows\", \"rating\": { \"segments\": [ { \"c\": 11.8, \"h0_m\": 0.42, \"b\": 1.8 } ] },\n"
+        "  \"quality\": { \"highest_m\": 9.0, \"fastest_rise_m_h\": 1.5 } },\n"
+        "{ \"id\": \"pool\", \"quality\": { \"highest_m\": 9.0, \"fastest_rise_m_h\": 1.5 } } ],\n\"sections\": [");
+    text =
+        changed(text, "\"to\": \"tallowick-ford\", \"length_m\": 9400,",
+                "\"to\": \"narrows\", \"length_m\": 4400, \"slope\": 0.0024, \"section\": \"ildra\",\n"
+                "\"foot\": { \"drop_m\": 0.4, \"openings\": [ { \"crest_m\": 0.8, \"length_m\": 12 } ] } },\n"
+                "{ \"id\": \"narrows-ford\", \"from\": \"narrows\", \"to\": \"tallowick-ford\", \"length_m\": 5000,");
+    text = changed(text, "\"to\": \"low-pintle-bridge\",",
+                   "\"to\": \"low-pintle-bridge\", \"outlet\": { \"stage_of\": \"pool\", \"bed_at_m\": 0.5 },");
+    const char *path = scratch_file(*state, "x.json", text);
+    struct run run = RUN(NULL, "check", "--config", path);
+    assert_run(&run, EX_OK);
+    char *block = block_of(run.output, "reach scar-ford:");
+    assert_says(block, "method dynamic, ");
+    free(block);
+    assert_says(run.output, "    from narrows: the closing mark's own flow, ");
+    assert_null(strstr(run.output, "from pool"));
+    run_clear(&run);
+    run = RUN(NULL, "check", "--config", path, "--json");
+    assert_run(&run, EX_OK);
+    run_clear(&run);
+    free(text);
+}
+
 /* --- need against lead ---------------------------------------------------------------------------------------- */
 
 struct told_lead {
@@ -552,6 +582,7 @@ int main(void)
         TEST(travel_times_fall_with_the_flow_up_to_bank_full_and_rise_above),
         TEST(method_cells_and_steps_are_told_per_reach),
         TEST(full_equations_are_told_with_their_own_limit),
+        TEST(what_stands_in_the_river_is_no_fault),
         TEST(the_ford_cannot_be_protected_at_night_by_its_gauge_alone),
         TEST(the_limits_that_a_deck_passes_are_told_by_level_flow_and_time),
         TEST(a_weir_over_the_road_is_told_by_the_flow_that_wets_the_deck),
