@@ -19,6 +19,8 @@ enum fw_status cycle_run(struct cycle *cycle, const struct picture *before, cons
     if (status == FW_OK)
         status = cycle_judge(cycle, now_utc_s, &delta);
     if (status == FW_OK)
+        status = cycle_take_season(cycle, now_utc_s, error);
+    if (status == FW_OK)
         status = cycle_route(cycle, now_utc_s, delta.next, error);
     if (status == FW_OK)
         delta.next->replaced_share = cycle->replaced_share;

@@ -26,8 +26,9 @@ static void fill_water(struct cycle *cycle, size_t point)
         for (size_t index = 0; index < cycle->forecast_column_count; index++) {
             size_t column = cycle->forecast_columns[index];
             size_t place = step * cycle->member_count + column;
-            cycle->deck_water[place] = deck_water(settings, point, stage_m[place], discharge_m3s[place],
-                                                  settings->roughness_factors[column / CYCLE_FUTURES]);
+            cycle->deck_water[place] =
+                deck_water(settings, &cycle->season.river, point, stage_m[place], discharge_m3s[place],
+                           settings->roughness_factors[column / CYCLE_FUTURES]);
         }
 }
 

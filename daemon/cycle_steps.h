@@ -4,6 +4,7 @@
 #define FOREWATER_DAEMON_CYCLE_STEPS_H
 
 #include "daemon/cycle.h"
+#include "daemon/season.h"
 #include "daemon/track.h"
 #include "engine/series.h"
 
@@ -17,6 +18,8 @@ enum {
 
 struct cycle {
     const struct settings *settings;
+    struct season_river season; /* the river in the roughness of the newest pass's date */
+    size_t season_index;
     struct network *network;
     size_t member_count;          /* groups x CYCLE_FUTURES */
     size_t forecast_column_count; /* groups x ASSUMED_FORECAST_COUNT */
@@ -74,6 +77,12 @@ static inline double cycle_quantity_discharge(const struct settings_gauge *gauge
         return 0.0;
     return gauge->measures == SETTINGS_STAGE ? rating_discharge_m3s(&gauge->rating, value, NULL) : value;
 }
+
+/*
+ * Network and tracks in the roughness of the season in force at a moment; where it is not that of the pass before, all is routed anew.
+ * FW_NO_MEMORY, or the engine refuses the river: what was there stays.
+ */
+FW_MUST_CHECK enum fw_status cycle_take_season(struct cycle *cycle, int64_t now_utc_s, struct fw_error *error);
 
 /* Room in the scratch arrays for count samples. */
 FW_MUST_CHECK enum fw_status cycle_reserve_samples(struct cycle *cycle, size_t count);

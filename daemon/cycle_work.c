@@ -30,9 +30,9 @@ static double largest_discharge_m3s(const struct settings *settings, bool is_at_
     return with_side_water;
 }
 
-static enum fw_status create_network(struct cycle *cycle, struct fw_error *error)
+static enum fw_status create_network(const struct settings *settings, const struct network_river *river,
+                                     struct network **network_out, struct fw_error *error)
 {
-    const struct settings *settings = cycle->settings;
     struct network_options options = {
         .time_step_s = (double)settings->time_step_s,
         .group_count = settings->roughness_factor_count,
@@ -42,7 +42,7 @@ static enum fw_status create_network(struct cycle *cycle, struct fw_error *error
         .typical_peak_m3s = largest_discharge_m3s(settings, true),
     };
     struct network_fault fault = {{0}};
-    enum fw_status status = network_create(&settings->river, &options, &cycle->network, &fault);
+    enum fw_status status = network_create(river, &options, network_out, &fault);
     if (status != FW_OK)
         return fw_error_set(error, status, "%s: %s", settings->file, fault.text[0] ? fault.text : "no memory");
     return FW_OK;
@@ -72,10 +72,43 @@ static enum fw_status allocate_work_space(struct cycle *cycle)
     for (size_t group = 0; group < groups; group++)
         for (size_t future = 0; future < ASSUMED_FORECAST_COUNT; future++)
             cycle->forecast_columns[next++] = group * CYCLE_FUTURES + future;
-    enum fw_status status = track_create(settings, cycle->network, cycle->step_capacity, &cycle->present);
+    return FW_OK;
+}
+
+static void clear_season(struct cycle *cycle)
+{
+    track_destroy(cycle->present);
+    track_destroy(cycle->coming);
+    network_destroy(cycle->network);
+    season_river_clear(&cycle->season);
+}
+
+enum fw_status cycle_take_season(struct cycle *cycle, int64_t now_utc_s, struct fw_error *error)
+{
+    const struct settings *settings = cycle->settings;
+    size_t index = season_index(settings, now_utc_s);
+    if (cycle->network != NULL && index == cycle->season_index)
+        return FW_OK;
+    struct cycle fresh = {.network = NULL}; /* of which only these four are used */
+    enum fw_status status = season_river_make(settings, season_day(settings, now_utc_s), &fresh.season);
     if (status == FW_OK)
-        status = track_create(settings, cycle->network, cycle->step_capacity, &cycle->coming);
-    return status;
+        status = create_network(settings, &fresh.season.river, &fresh.network, error);
+    if (status == FW_OK)
+        status = track_create(settings, fresh.network, cycle->step_capacity, &fresh.present);
+    if (status == FW_OK)
+        status = track_create(settings, fresh.network, cycle->step_capacity, &fresh.coming);
+    if (status != FW_OK) {
+        clear_season(&fresh);
+        return status == FW_NO_MEMORY ? fw_error_set(error, status, "no memory for the forecast") : status;
+    }
+    clear_season(cycle);
+    cycle->season = fresh.season;
+    cycle->network = fresh.network;
+    cycle->present = fresh.present;
+    cycle->coming = fresh.coming;
+    cycle->readied_utc_s = 0;
+    cycle->season_index = index;
+    return FW_OK;
 }
 
 enum fw_status cycle_create(const struct settings *settings, struct cycle **cycle_out, struct fw_error *error)
@@ -84,9 +117,11 @@ enum fw_status cycle_create(const struct settings *settings, struct cycle **cycl
     if (cycle == NULL)
         return fw_error_set(error, FW_NO_MEMORY, "no memory for the forecast");
     cycle->settings = settings;
-    enum fw_status status = create_network(cycle, error);
-    if (status == FW_OK && allocate_work_space(cycle) != FW_OK)
-        status = fw_error_set(error, FW_NO_MEMORY, "no memory for the forecast");
+    enum fw_status status = allocate_work_space(cycle);
+    if (status != FW_OK)
+        fw_error_set(error, status, "no memory for the forecast");
+    else
+        status = cycle_take_season(cycle, 0, error); /* the first pass brings the date */
     if (status != FW_OK) {
         cycle_destroy(cycle);
         return status;
@@ -99,9 +134,7 @@ void cycle_destroy(struct cycle *cycle)
 {
     if (cycle == NULL)
         return;
-    track_destroy(cycle->present);
-    track_destroy(cycle->coming);
-    network_destroy(cycle->network);
+    clear_season(cycle);
     free(cycle->forecast_columns);
     free(cycle->is_above);
     free(cycle->inflow_m3s);

@@ -3,19 +3,20 @@
 
 #include <math.h>
 
-struct hazard_water deck_water(const struct settings *settings, size_t point, double stage_m, double discharge_m3s,
-                               double roughness_factor)
+struct hazard_water deck_water(const struct settings *settings, const struct network_river *river, size_t point,
+                               double stage_m, double discharge_m3s, double roughness_factor)
 {
-    const struct settings_point *known = &settings->points[point];
-    const struct network_point *place = &settings->river.points[point];
-    const struct network_reach *reach = &settings->river.reaches[place->reach_index];
+    const struct network_point *place = &river->points[point];
+    const struct network_reach *reach = &river->reaches[place->reach_index];
+    struct hazard_deck deck = settings->points[point].deck;
+    deck.section = reach->section;
     double below_m = HAZARD_NOTHING_BELOW;
     bool has_level_of_its_own = place->stage_rating.row_count > 0 || place->structure != NULL;
-    if (known->deck.kind == HAZARD_DECK_IS_WEIR && has_level_of_its_own && stage_m > known->deck.level_m &&
+    if (deck.kind == HAZARD_DECK_IS_WEIR && has_level_of_its_own && stage_m > deck.level_m &&
         section_normal_depth_m(reach->section, reach->slope_m_per_m, fabs(discharge_m3s) * roughness_factor,
                                &below_m) != FW_OK)
         below_m = HAZARD_NOTHING_BELOW;
-    return hazard_water_on_deck(&known->deck, stage_m, discharge_m3s, below_m);
+    return hazard_water_on_deck(&deck, stage_m, discharge_m3s, below_m);
 }
 
 const char *deck_whom_name(enum hazard_whom whom)

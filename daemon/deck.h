@@ -8,11 +8,12 @@
 /*
  * At one level and flow at a point whose settings have a deck. Below a weir stands the section's normal depth of the flow,
  * where the level above comes from a stage rating of the point's own; elsewhere what stands below is not known.
+ *   river             the settings', or that of a season
  *   stage_m           above the invert
  *   roughness_factor  of the run, on Manning's n of the section
  */
-struct hazard_water deck_water(const struct settings *settings, size_t point, double stage_m, double discharge_m3s,
-                               double roughness_factor);
+struct hazard_water deck_water(const struct settings *settings, const struct network_river *river, size_t point,
+                               double stage_m, double discharge_m3s, double roughness_factor);
 
 /* "a small car"; machines read it too. The limits of cars are for vehicles that stand, and draft. */
 const char *deck_whom_name(enum hazard_whom whom);

@@ -9,6 +9,7 @@
 #include "daemon/command/check_deck.h"
 #include "daemon/command/check_facts.h"
 #include "daemon/command/check_json.h"
+#include "daemon/command/check_season.h"
 #include "daemon/command/options.h"
 
 /* --- reaches ------------------------------------------------------------------------------------------------------ */
@@ -159,6 +160,8 @@ static enum fw_status print_all(const struct check_facts *facts, struct fw_error
     enum fw_status status = FW_OK;
     for (size_t reach = 0; reach < settings->river.reach_count && status == FW_OK; reach++)
         status = print_reach(facts, reach, error);
+    if (status == FW_OK)
+        status = check_season_print(facts, error);
     printf("\n");
     bool is_protected = true;
     for (size_t point = 0; point < settings->point_count && status == FW_OK; point++)

@@ -14,7 +14,8 @@ static double stage_of(const struct check_facts *facts, size_t point, double flo
 /* Steady flow as given, roughness as given. */
 static struct hazard_water water_of(const struct check_facts *facts, size_t point, double flow_m3s)
 {
-    return deck_water(facts->settings, point, stage_of(facts, point, flow_m3s), flow_m3s, 1.0);
+    return deck_water(facts->settings, &facts->settings->river, point, stage_of(facts, point, flow_m3s), flow_m3s,
+                      1.0);
 }
 
 static bool is_over(const struct check_facts *facts, size_t point, const struct hazard_limit *limit, double flow_m3s)

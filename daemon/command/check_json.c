@@ -7,6 +7,7 @@
 #include <stdlib.h>
 
 #include "daemon/command/check_deck.h"
+#include "daemon/command/check_season.h"
 #include "daemon/tell/sentence.h"
 
 /* null for what is not known */
@@ -117,6 +118,23 @@ static void add_point(cJSON *array, const struct check_facts *facts, size_t inde
     add_deck(object, facts, index, is_above);
 }
 
+struct season_list {
+    const struct settings *settings;
+    cJSON *array;
+};
+
+static void add_season(void *with, int from_day, size_t reach, double travel_s, double discharge_m3s)
+{
+    struct season_list *list = with;
+    cJSON *object = add_object(list->array);
+    char from[8];
+    snprintf(from, sizeof from, "%02d-%02d", from_day / 100 % 100, from_day % 100);
+    cJSON_AddStringToObject(object, "from", from);
+    cJSON_AddStringToObject(object, "reach", list->settings->river.reaches[reach].id);
+    add(object, "discharge_m3s", discharge_m3s);
+    add(object, "travel_time_s", travel_s);
+}
+
 enum fw_status check_json_print(const struct check_facts *facts, struct fw_error *error)
 {
     const struct settings *settings = facts->settings;
@@ -134,6 +152,9 @@ enum fw_status check_json_print(const struct check_facts *facts, struct fw_error
         if (status == FW_OK)
             add_reach(reaches, &found);
     }
+    struct season_list seasons = {settings, cJSON_AddArrayToObject(object, "seasons")};
+    if (status == FW_OK)
+        status = check_season_each(facts, add_season, &seasons, error);
     for (size_t index = 0; index < settings->point_count && is_above != NULL; index++)
         add_point(points, facts, index, is_above);
     char *text = status == FW_OK && is_above != NULL ? cJSON_Print(object) : NULL;

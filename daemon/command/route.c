@@ -11,6 +11,7 @@
 #include "daemon/command/options.h"
 #include "daemon/command/table.h"
 #include "daemon/facts.h"
+#include "daemon/season.h"
 #include "engine/method.h"
 
 enum {
@@ -35,6 +36,7 @@ struct route_plan {
     size_t *gauge_point;   /* [gauge]: where the flow that goes on from it is read; NETWORK_NONE: it is the inflow */
     bool is_in_seconds;    /* times came as plain numbers */
     struct when_zone zone; /* else: the offset they came with */
+    struct season_river season; /* the sections in the roughness of the first row's date */
     double start_s, until_s, every_s, step_s;
     size_t fixed_cell_count;
 };
@@ -260,6 +262,19 @@ static enum fw_status place_gauge_points(struct route_plan *plan, struct fw_erro
                                    .reach_index = reach,
                                    .at_m = below != NETWORK_NONE ? 0.0 : plan->reaches[reach].length_m};
     }
+    return FW_OK;
+}
+
+/* Plain seconds have no date: then the roughness is as it is stated. */
+static enum fw_status take_season(struct route_plan *plan, struct fw_error *error)
+{
+    if (plan->is_in_seconds)
+        return FW_OK;
+    int day = season_day(plan->settings, (int64_t)plan->start_s);
+    if (season_river_make(plan->settings, day, &plan->season) != FW_OK)
+        return fw_error_set(error, FW_NO_MEMORY, "no memory");
+    for (size_t reach = 0; reach < plan->river.reach_count; reach++)
+        plan->reaches[reach].section = plan->season.reaches[reach].section;
     return FW_OK;
 }
 
@@ -557,6 +572,8 @@ enum fw_status command_route(int argument_count, char *arguments[], struct fw_er
     if (status == FW_OK)
         status = plan_times(&plan, option_text(&until, NULL), every_s, step_s, error);
     if (status == FW_OK)
+        status = take_season(&plan, error);
+    if (status == FW_OK)
         status = route(&plan, error);
     for (size_t gauge = 0; gauge < settings->gauge_count && plan.inflow != NULL; gauge++) {
         free(plan.inflow[gauge].time_s);
@@ -565,6 +582,7 @@ enum fw_status command_route(int argument_count, char *arguments[], struct fw_er
     }
     free(plan.inflow);
     free(plan.reaches);
+    season_river_clear(&plan.season);
     free(plan.points);
     free(plan.gauge_point);
     settings_destroy(settings);

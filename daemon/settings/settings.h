@@ -114,6 +114,24 @@ struct settings_point {
     const char **cannot_see;
 };
 
+enum { SETTINGS_SEASON_STARTS_MAX = 400 }; /* dates in all sections together */
+
+struct settings_season {
+    int from_day;    /* month * 100 + day, in the district's zone */
+    double n_factor; /* on Manning's n from then on */
+};
+
+struct settings_seasons { /* none, or two and more, rising; the last holds over the turn of the year */
+    size_t count;
+    const struct settings_season *items;
+};
+
+struct settings_section_seasons {
+    struct settings_seasons own;     /* of all the section, where the next two say nothing */
+    struct settings_seasons plain;   /* of its plain */
+    struct settings_seasons *panels; /* [panel] */
+};
+
 struct settings_channel {
     const char *id;
     bool is_journal; /* else a command */
@@ -156,7 +174,8 @@ struct settings {
     struct settings_level *levels;
     size_t section_count;
     const char **section_ids;
-    struct section *sections;
+    struct section *sections; /* in the roughness that is stated; a season's are of daemon/season */
+    struct settings_section_seasons *section_seasons; /* [section] */
     size_t point_count;
     struct settings_point *points;
     size_t channel_count;

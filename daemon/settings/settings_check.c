@@ -46,6 +46,15 @@ static bool is_time_of_day(const char *s)
     return (s[0] - '0') * 10 + (s[1] - '0') <= 23 && s[3] <= '5';
 }
 
+static bool is_day_of_year(const char *s)
+{
+    static const int days[] = {31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31};
+    if (strlen(s) != 5 || strspn(s, "0123456789-") != 5 || s[2] != '-' || strchr(s, '-') != strrchr(s, '-'))
+        return false;
+    int month = (s[0] - '0') * 10 + (s[1] - '0'), day = (s[3] - '0') * 10 + (s[4] - '0');
+    return month >= 1 && month <= 12 && day >= 1 && day <= days[month - 1];
+}
+
 static bool is_pointer(const char *string)
 {
     if (string[0] != '\0' && string[0] != '/')
@@ -89,6 +98,8 @@ static bool is_string_right(const struct settings_key *key, const char *string)
         return is_id(string);
     case SETTINGS_TYPE_TIME_OF_DAY:
         return is_time_of_day(string);
+    case SETTINGS_TYPE_DAY_OF_YEAR:
+        return is_day_of_year(string);
     case SETTINGS_TYPE_ZONE:
         return when_zone_parse(string, &zone, NULL) == FW_OK;
     case SETTINGS_TYPE_PATH:
@@ -149,6 +160,7 @@ static const char *fault_of_value(const struct json_value *value, const struct s
     case SETTINGS_TYPE_WORD:
     case SETTINGS_TYPE_ID:
     case SETTINGS_TYPE_TIME_OF_DAY:
+    case SETTINGS_TYPE_DAY_OF_YEAR:
     case SETTINGS_TYPE_ZONE:
     case SETTINGS_TYPE_PATH:
     case SETTINGS_TYPE_FILE_NAME:

@@ -124,6 +124,10 @@ static void add_type(struct text *json, size_t depth, const struct settings_key 
     case SETTINGS_TYPE_TIME_OF_DAY:
         add_pattern(json, depth, "^([01][0-9]|2[0-3]):[0-5][0-9]$", 5);
         break;
+    case SETTINGS_TYPE_DAY_OF_YEAR:
+        add_pattern(json, depth,
+                    "^(0[1-9]|1[0-2])-(0[1-9]|1[0-9]|2[0-8])$|^(0[13-9]|1[0-2])-(29|30)$|^(0[13578]|1[02])-31$", 5);
+        break;
     case SETTINGS_TYPE_ZONE:
         add_pattern(json, depth, "^(Z|z|[+-][0-9]{2}:[0-9]{2}|[A-Za-z][A-Za-z0-9_+/-]*)$", 63);
         break;

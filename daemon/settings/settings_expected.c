@@ -56,6 +56,9 @@ const char *settings_keys_expected(const struct settings_key *key, char *text, s
     case SETTINGS_TYPE_TIME_OF_DAY:
         snprintf(text, size, "a time of day from \"00:00\" to \"23:59\"");
         break;
+    case SETTINGS_TYPE_DAY_OF_YEAR:
+        snprintf(text, size, "a day that every year has, month and day as \"05-01\"");
+        break;
     case SETTINGS_TYPE_ZONE:
         snprintf(text, size, "a zone: \"+01:00\", \"Z\" or an IANA name as \"Area/City\"");
         break;

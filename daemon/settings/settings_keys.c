@@ -241,10 +241,28 @@ static const struct settings_key keys[] = {
     OBJECT("sections[].panels[]", WANTED, "One panel."),
     NUMBER("sections[].panels[].to_m", WANTED, "m", -100000, 100000, NULL, "Offset of its right end."),
     NUMBER("sections[].panels[].n", WANTED, "", 0.005, 1, NULL, "Manning's n in it."),
+    ARRAY("sections[].panels[].seasons", OPTIONAL, 2, 24, NULL, "Seasons of this panel, instead of the section's."),
+    OBJECT("sections[].panels[].seasons[]", WANTED, "One season."),
+    OTHER("sections[].panels[].seasons[].from", DAY_OF_YEAR, WANTED, NULL, NULL,
+          "Its first day, in the district's zone."),
+    NUMBER("sections[].panels[].seasons[].n_factor", WANTED, "", 0.3, 3, NULL, "On Manning's n from then on."),
     OBJECT("sections[].plain", OPTIONAL, "Flood plain beside a wide, rectangle or trapezoid shape."),
     NUMBER("sections[].plain.above_m", WANTED, "m", 0.01, 200, NULL, "Depth at which the water leaves the channel."),
     NUMBER("sections[].plain.width_m", WANTED, "m", 0.01, 100000, NULL, "Added width, both banks together."),
     NUMBER("sections[].plain.n", WANTED, "", 0.005, 1, NULL, "Manning's n on the plain."),
+    ARRAY("sections[].plain.seasons", OPTIONAL, 2, 24, NULL, "Seasons of the plain, instead of the section's."),
+    OBJECT("sections[].plain.seasons[]", WANTED, "One season."),
+    OTHER("sections[].plain.seasons[].from", DAY_OF_YEAR, WANTED, NULL, NULL,
+          "Its first day, in the district's zone."),
+    NUMBER("sections[].plain.seasons[].n_factor", WANTED, "", 0.3, 3, NULL, "On Manning's n from then on."),
+
+    ARRAY("sections[].seasons", OPTIONAL, 2, 24, NULL,
+          "Roughness by season: factors on n from dates on that rise within the year; the last holds over the turn "
+          "of the year. They "
+          "hold for all of the section, where its plain or a panel has none of its own."),
+    OBJECT("sections[].seasons[]", WANTED, "One season."),
+    OTHER("sections[].seasons[].from", DAY_OF_YEAR, WANTED, NULL, NULL, "Its first day, in the district's zone."),
+    NUMBER("sections[].seasons[].n_factor", WANTED, "", 0.3, 3, NULL, "On Manning's n from then on."),
 
     ARRAY("reaches", WANTED, 1, 500, NULL, "The river, a tree that runs downstream from gauges."),
     OBJECT("reaches[]", WANTED, "One reach, between two nodes."),

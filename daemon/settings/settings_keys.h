@@ -15,6 +15,7 @@ enum settings_type {
     SETTINGS_TYPE_INTEGER,
     SETTINGS_TYPE_TRUTH,       /* true or false */
     SETTINGS_TYPE_TIME_OF_DAY, /* "20:00" */
+    SETTINGS_TYPE_DAY_OF_YEAR, /* "05-01", a day that every year has */
     SETTINGS_TYPE_ZONE,        /* "+01:00", "Z", "Area/City" */
     SETTINGS_TYPE_PATH,        /* relative ones start at the folder of the configuration */
     SETTINGS_TYPE_FILE_NAME,   /* without folders */

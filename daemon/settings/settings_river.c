@@ -142,12 +142,14 @@ static bool build_sections(struct settings_work *work)
     size_t count = settings_work_count(sections);
     settings->sections = arena_take(work->arena, count, sizeof *settings->sections);
     settings->section_ids = arena_take(work->arena, count, sizeof *settings->section_ids);
-    if (settings->sections == NULL || settings->section_ids == NULL)
+    settings->section_seasons = arena_take(work->arena, count, sizeof *settings->section_seasons);
+    if (settings->sections == NULL || settings->section_ids == NULL || settings->section_seasons == NULL)
         return false;
     struct json_value *object;
     for (size_t i = 0; (object = settings_work_next(sections, &i)) != NULL; settings->section_count++) {
         settings->section_ids[settings->section_count] = settings_work_string(object, "sections[].id");
-        if (!build_section(work, &settings->sections[settings->section_count], object))
+        if (!build_section(work, &settings->sections[settings->section_count], object) ||
+            !settings_build_seasons(work, settings->section_count, object))
             return false;
     }
     return true;

@@ -71,6 +71,8 @@ bool settings_build_channels(struct settings_work *work);
 bool settings_build_gauges(struct settings_work *work);
 bool settings_build_river(struct settings_work *work);
 bool settings_build_points(struct settings_work *work);
+/* Of one section, once it is built; false: no memory. */
+bool settings_build_seasons(struct settings_work *work, size_t section, const struct json_value *object);
 /* Of one point, once its place and marks are built. */
 void settings_build_deck(struct settings_work *work, struct settings_point *point, const struct json_value *object);
 /* The weir of a stage rating, and what it makes of the point's rows; false: no memory. */

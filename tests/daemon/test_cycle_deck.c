@@ -103,12 +103,12 @@ static void a_weir_with_a_level_of_its_own_is_drowned_by_the_normal_depth_below(
     assert_int_equal(section_normal_depth_m(reach->section, reach->slope_m_per_m, 112.0, &below_m), FW_OK);
     double head_m = 2.9 - 2.62;
     assert_true(below_m > 2.62 && below_m < 2.9);
-    struct hazard_water water = deck_water(settings, BRIDGE, 2.9, 112.0, 1.0);
+    struct hazard_water water = deck_water(settings, &settings->river, BRIDGE, 2.9, 112.0, 1.0);
     double drowned = pow(1.0 - pow((below_m - 2.62) / head_m, 1.5), 0.385);
     assert_true(fabs(water.product_m2_s - 1.7 * pow(head_m, 1.5) * drowned) <= 1e-9);
     /* a rougher bed below drowns it more; a smoother one lets it fall free */
-    assert_true(deck_water(settings, BRIDGE, 2.9, 112.0, 1.02).product_m2_s < water.product_m2_s);
-    assert_true(fabs(deck_water(settings, BRIDGE, 2.9, 112.0, 0.8).product_m2_s - 1.7 * pow(head_m, 1.5)) <= 1e-12);
+    assert_true(deck_water(settings, &settings->river, BRIDGE, 2.9, 112.0, 1.02).product_m2_s < water.product_m2_s);
+    assert_true(fabs(deck_water(settings, &settings->river, BRIDGE, 2.9, 112.0, 0.8).product_m2_s - 1.7 * pow(head_m, 1.5)) <= 1e-12);
     settings_destroy(settings);
 }
 

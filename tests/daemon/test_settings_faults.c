@@ -166,6 +166,35 @@ static void a_weir_must_let_the_river_through_below_the_road(void **state)
     DEMAND_ALL(SETTINGS_EVERY_OTHER_KEY, changes);
 }
 
+static void seasons_must_rise_within_the_year(void **state)
+{
+    (void)state;
+    static const struct change changes[] = {
+        {"a season before the one before", "\"from\": \"09-15\"", "\"from\": \"04-15\"", NULL,
+         "sections[0].plain.seasons[1].from: \"04-15\" is not after the date before it, \"05-01\" (line "},
+        {"two seasons of one day", "\"from\": \"10-01\"", "\"from\": \"05-15\"", NULL,
+         "sections[0].seasons[1].from: \"05-15\" is not after the date before it"},
+        {"a day of leap years alone", "\"from\": \"10-01\"", "\"from\": \"02-29\"", NULL,
+         "sections[0].seasons[1].from: \"02-29\" cannot be used: expected a day that every year has"},
+        {"a day of no year", "\"from\": \"10-01\"", "\"from\": \"06-31\"", NULL,
+         "sections[0].seasons[1].from: \"06-31\" cannot be used"},
+        {"a day the other way round", "\"from\": \"10-01\"", "\"from\": \"31-12\"", NULL,
+         "sections[0].seasons[1].from: \"31-12\" cannot be used"},
+        {"a season that is all the year", ", { \"from\": \"10-01\", \"n_factor\": 1.0 }", "",
+         "\"seasons\": [ { \"from\": \"05-15\"", "sections[0].seasons: an array has too few elements: expected"},
+        {"a bed of glass", "\"n_factor\": 1.2", "\"n_factor\": 0.2", NULL,
+         "sections[0].seasons[0].n_factor: 0.2 is too small: expected a number, 0.3 to 3"},
+        {"a season without a factor", ", \"n_factor\": 1.3", "", "{ \"from\": \"05-01\"",
+         "sections[0].plain.seasons[0].n_factor: missing: expected a number"},
+    };
+    DEMAND_ALL(SETTINGS_EXAMPLE, changes);
+    static const struct change others[] = {
+        {"a panel's season before the one before", "\"from\": \"11-10\"", "\"from\": \"04-19\"", NULL,
+         "sections[0].panels[1].seasons[1].from: \"04-19\" is not after the date before it, \"04-20\""},
+    };
+    DEMAND_ALL(SETTINGS_EVERY_OTHER_KEY, others);
+}
+
 static void limits_must_not_contradict_each_other(void **state)
 {
     (void)state;
@@ -444,7 +473,10 @@ static void a_section_must_have_what_its_shape_needs(void **state)
          "sections[1].points: an array does nothing here"},
         {"a survey without roughness",
          "\"n\": 0.041,\n      \"points\": [ [0, 3.1], [2.5, 0.4], [6.1, 0.0], [9.7, 0.6], [13.3, 3.3] ],\n"
-         "      \"panels\": [ { \"to_m\": 9.7, \"n\": 0.037 }, { \"to_m\": 13.3, \"n\": 0.061 } ]",
+         "      \"panels\": [ { \"to_m\": 9.7, \"n\": 0.037 },\n"
+         "                  { \"to_m\": 13.3, \"n\": 0.061,\n"
+         "                    \"seasons\": [ { \"from\": \"04-20\", \"n_factor\": 1.4 }, { \"from\": \"11-10\", "
+         "\"n_factor\": 0.9 } ] } ]",
          "\"points\": [ [0, 3.1], [6.1, 0.0], [13.3, 3.3] ]", NULL,
          "sections[0].n: missing: expected a number, 0.005 to 1, because there are no panels"},
     };
@@ -544,6 +576,7 @@ int main(void)
         cmocka_unit_test(marks_must_rise_and_one_must_close_the_road),
         cmocka_unit_test(a_deck_must_fit_its_marks_and_its_section),
         cmocka_unit_test(a_weir_must_let_the_river_through_below_the_road),
+        cmocka_unit_test(seasons_must_rise_within_the_year),
         cmocka_unit_test(limits_must_not_contradict_each_other),
         cmocka_unit_test(names_must_lead_somewhere_and_to_one_thing),
         cmocka_unit_test(what_stands_at_a_foot_must_fit_there),

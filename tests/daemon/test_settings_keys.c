@@ -83,14 +83,23 @@ static void demand_fault(size_t base_index, const struct base *base, const struc
 static void is_wrong_in_type(size_t base_index, const struct base *base, const struct json_value *value)
 {
     static const char *const wrong[] = {
-        [SETTINGS_TYPE_OBJECT] = "[]",      [SETTINGS_TYPE_ARRAY] = "{}",
-        [SETTINGS_TYPE_TEXT] = "17",        [SETTINGS_TYPE_WORD] = "true",
-        [SETTINGS_TYPE_ID] = "1.5",         [SETTINGS_TYPE_NUMBER] = "\"seventeen\"",
-        [SETTINGS_TYPE_INTEGER] = "\"17\"", [SETTINGS_TYPE_TRUTH] = "\"true\"",
-        [SETTINGS_TYPE_TIME_OF_DAY] = "20", [SETTINGS_TYPE_ZONE] = "1",
-        [SETTINGS_TYPE_PATH] = "false",     [SETTINGS_TYPE_FILE_NAME] = "[]",
-        [SETTINGS_TYPE_POINTER] = "0",      [SETTINGS_TYPE_URL] = "{}",
-        [SETTINGS_TYPE_HOST_PORT] = "8460", [SETTINGS_TYPE_MOMENT_OR_NUMBER] = "true",
+        [SETTINGS_TYPE_OBJECT] = "[]",
+        [SETTINGS_TYPE_ARRAY] = "{}",
+        [SETTINGS_TYPE_TEXT] = "17",
+        [SETTINGS_TYPE_WORD] = "true",
+        [SETTINGS_TYPE_ID] = "1.5",
+        [SETTINGS_TYPE_NUMBER] = "\"seventeen\"",
+        [SETTINGS_TYPE_INTEGER] = "\"17\"",
+        [SETTINGS_TYPE_TRUTH] = "\"true\"",
+        [SETTINGS_TYPE_TIME_OF_DAY] = "20",
+        [SETTINGS_TYPE_ZONE] = "1",
+        [SETTINGS_TYPE_PATH] = "false",
+        [SETTINGS_TYPE_FILE_NAME] = "[]",
+        [SETTINGS_TYPE_POINTER] = "0",
+        [SETTINGS_TYPE_URL] = "{}",
+        [SETTINGS_TYPE_DAY_OF_YEAR] = "501",
+        [SETTINGS_TYPE_HOST_PORT] = "8460",
+        [SETTINGS_TYPE_MOMENT_OR_NUMBER] = "true",
     };
     demand_fault(base_index, base, value, wrong[value->key->type], "wrong type");
     demand_fault(base_index, base, value, "null", "nothing");
@@ -104,6 +113,7 @@ static void is_out_of_range(size_t base_index, const struct base *base, const st
         [SETTINGS_TYPE_WORD] = "\"nonesuch\"",
         [SETTINGS_TYPE_ID] = "\"Not An Id\"",
         [SETTINGS_TYPE_TIME_OF_DAY] = "\"24:00\"",
+        [SETTINGS_TYPE_DAY_OF_YEAR] = "\"02-29\"",
         [SETTINGS_TYPE_ZONE] = "\"+1\"",
         [SETTINGS_TYPE_PATH] = "\"\"",
         [SETTINGS_TYPE_FILE_NAME] = "\"a/b\"",

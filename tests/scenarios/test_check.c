@@ -355,6 +355,46 @@ static void a_weir_over_the_road_is_told_by_the_flow_that_wets_the_deck(void **s
     run_clear(&run);
 }
 
+/* By hand: in bank a wave's speed goes with 1/n, at one flow with n^-0.6 or so; here computed at x1.2 and x1. */
+static void every_season_is_told_with_its_travel_times(void **state)
+{
+    (void)state;
+    struct run run = RUN(NULL, "check", "--config", EXAMPLE);
+    assert_run(&run, EX_OK);
+    char *block = block_of(run.output, "roughness by season (local dates;");
+    char flow[40];
+    double stated_min[4];
+    static const char *const begins[] = {
+        "\n    from 05-01: ", "\n    from 05-15: ", "\n    from 09-15: ", "\n    from 10-01: "};
+    for (size_t i = 0; i < 4; i++) {
+        const char *line = strstr(block, begins[i]);
+        assert_non_null(line);
+        assert_int_equal(
+            sscanf(line + strlen(begins[i]), "%39s m3/s travel scar-ford %lf min,", flow, &stated_min[i]), 2);
+        assert_non_null(strstr(line, "causeway-bridge"));
+    }
+    /* 63 m3/s stay in the channel: the plain's season alone changes nothing, the channel's slows the wave */
+    struct row rows[8];
+    char *reach = block_of(run.output, "reach scar-ford:");
+    size_t count = reach_rows(reach, 8, rows);
+    assert_true(count >= 6);
+    double plain_min = rows[4].travel_min;
+    assert_near(stated_min[0], plain_min, 1.0);
+    assert_near(stated_min[3], plain_min, 1.0);
+    assert_near(stated_min[1], stated_min[2], 0.0);
+    /* the depth that carries the flow at n x1.2, and the wave there, by hand */
+    double depth_m = 1.0;
+    while (manning_m3s(depth_m) / 1.2 < rows[4].flow_m3s)
+        depth_m += 1e-4;
+    assert_near(stated_min[1], 9400 / (celerity_m_s(depth_m) / 1.2) / 60, 1.0);
+    free(reach);
+    free(block);
+    run_clear(&run);
+    struct run other = RUN(NULL, "check", "--config", DEMO);
+    assert_null(strstr(other.output, "roughness by season")); /* it states none */
+    run_clear(&other);
+}
+
 static void a_deck_that_nothing_wets_has_no_word_of_limits(void **state)
 {
     char *text = changed(read_whole(DEMO), "\"depth_m\": 1.55, \"deck\": true }", "\"depth_m\": 1.55 }");
@@ -586,6 +626,7 @@ int main(void)
         TEST(the_ford_cannot_be_protected_at_night_by_its_gauge_alone),
         TEST(the_limits_that_a_deck_passes_are_told_by_level_flow_and_time),
         TEST(a_weir_over_the_road_is_told_by_the_flow_that_wets_the_deck),
+        TEST(every_season_is_told_with_its_travel_times),
         TEST(a_deck_that_nothing_wets_has_no_word_of_limits),
         TEST(a_longer_way_to_the_station_takes_the_day_away_too),
         TEST(without_a_trigger_the_engineer_is_asked_for_one),

@@ -43,6 +43,58 @@ static int close_scratch(void **state)
     return 0;
 }
 
+/* --- seasons ---------------------------------------------------------------------------------------------------- */
+
+/*
+ * The same flood on three dates: what the season's n gives is what that n stated gives, by the district's clock (18:00
+ * UTC on 31 May is June there). Plain seconds have no date: as stated.
+ */
+static void the_roughness_is_that_of_the_first_rows_date(void **state)
+{
+    static const char seasonal[] =
+        "{ \"district\": { \"name\": \"D\", \"zone\": \"+08:00\" }, \"gauges\": [ { \"id\": \"head\" } ],\n"
+        "  \"sections\": [ { \"id\": \"s\", \"shape\": \"trapezoid\", \"bottom_m\": 14, \"side\": 2.0, \"n\": 0.04,\n"
+        "    \"seasons\": [ { \"from\": \"06-01\", \"n_factor\": 1.25 }, { \"from\": \"09-01\", \"n_factor\": 1 } ] "
+        "} ],\n"
+        "  \"reaches\": [ { \"id\": \"r\", \"from\": \"head\", \"to\": \"end\", \"length_m\": 9000, \"slope\": "
+        "0.0024,\n"
+        "    \"section\": \"s\" } ], \"points\": [ { \"id\": \"end\" } ] }\n";
+    static const char stated[] = "{ \"gauges\": [ { \"id\": \"head\" } ],\n"
+                                 "  \"sections\": [ { \"id\": \"s\", \"shape\": \"trapezoid\", \"bottom_m\": 14, "
+                                 "\"side\": 2.0, \"n\": %s } ],\n"
+                                 "  \"reaches\": [ { \"id\": \"r\", \"from\": \"head\", \"to\": \"end\", "
+                                 "\"length_m\": 9000, \"slope\": 0.0024,\n"
+                                 "    \"section\": \"s\" } ], \"points\": [ { \"id\": \"end\" } ] }\n";
+    static const struct {
+        const char *from, *then, *peak, *n;
+    } rows[] = {{"2031-05-31T15:59:00Z", "2031-05-31T16:59:00Z", "2031-05-31T18:29:00Z", "0.04"},
+                {"2031-05-31T16:00:00Z", "2031-05-31T17:00:00Z", "2031-05-31T18:30:00Z", "0.05"},
+                {"2031-09-01T00:00:00Z", "2031-09-01T01:00:00Z", "2031-09-01T02:30:00Z", "0.04"},
+                {"0", "3600", "9000", "0.04"}};
+    for (size_t i = 0; i < sizeof rows / sizeof *rows; i++) {
+        double volume[2], last[2];
+        for (int is_stated = 0; is_stated < 2; is_stated++) {
+            char config[1000], flood_text[200];
+            snprintf(config, sizeof config, stated, rows[i].n);
+            snprintf(flood_text, sizeof flood_text, "time,discharge_m3s\n%s,6.7\n%s,38.3\n%s,11.9\n", rows[i].from,
+                     rows[i].then, rows[i].peak);
+            struct run run =
+                RUN(NULL, "route", "--config", scratch_file(*state, "x.json", is_stated ? config : seasonal),
+                    "--inflow", scratch_inflow(*state, "head", flood_text), "--every", "60");
+            assert_run(&run, EX_OK);
+            struct routed routed = routed_read(&run);
+            last[is_stated] = routed_value(&routed, routed.row_count - 1, "end.stage_m");
+            volume[is_stated] = 0.0;
+            for (size_t row = 0; row < routed.row_count; row++)
+                volume[is_stated] += routed_value(&routed, row, "end.discharge_m3s");
+            routed_clear(&routed);
+            run_clear(&run);
+        }
+        assert_near(volume[0], volume[1], 1e-9);
+        assert_near(last[0], last[1], 1e-9);
+    }
+}
+
 /* --- times and columns ------------------------------------------------------------------------------------------ */
 
 static void times_go_out_as_they_came_in(void **state)
@@ -537,6 +589,7 @@ static void help_names_every_option(void **state)
 int main(void)
 {
     const struct CMUnitTest tests[] = {
+        TEST(the_roughness_is_that_of_the_first_rows_date),
         TEST(times_go_out_as_they_came_in),
         TEST(the_way_time_is_written_changes_no_flow),
         TEST(columns_are_gauges_then_points_in_the_order_of_the_configuration),
