@@ -8,6 +8,7 @@
 #include <string.h>
 
 #include "daemon/deck.h"
+#include "daemon/season.h"
 
 static void add_string(struct text *json, const char *bytes)
 {
@@ -239,6 +240,18 @@ static void add_point(struct text *json, const struct settings_point *known, con
     text_add(json, "}");
 }
 
+/* From which of the stated dates on the roughness holds; null where none is stated. */
+static void add_season(struct text *json, const struct settings *settings, int64_t as_of_utc_s)
+{
+    int days[SETTINGS_SEASON_STARTS_MAX];
+    add_key(json, "roughness_from");
+    if (season_starts(settings, SETTINGS_SEASON_STARTS_MAX, days) == 0)
+        text_add(json, "null");
+    else
+        text_add(json, "\"%02d-%02d\"", days[season_index(settings, as_of_utc_s)] / 100,
+                 days[season_index(settings, as_of_utc_s)] % 100);
+}
+
 enum fw_status picture_write_json(const struct settings *settings, const struct picture *picture,
                                   struct text *json_out)
 {
@@ -251,6 +264,7 @@ enum fw_status picture_write_json(const struct settings *settings, const struct 
     add_text(json, "previous_link", picture->newest_link);
     add_bool(json, "store_failing", picture->is_store_failing);
     add_number(json, "replaced_share", 4, picture->replaced_share);
+    add_season(json, settings, picture->as_of_utc_s);
     add_key(json, "assumed");
     add_string(json, "held, last rise carried forward, recession; uncalibrated");
     add_key(json, "gauges");
