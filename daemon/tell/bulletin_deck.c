@@ -27,10 +27,15 @@ static void add_peak(const struct sentence_view *view, bool is_brief, struct tex
                                             {0}});
 }
 
+static enum sentence_id word_of(enum hazard_whom whom)
+{
+    static const enum sentence_id words[HAZARD_WHOM_COUNT] = {DECK_SMALL_CAR, DECK_LARGE_CAR, DECK_ANY_VEHICLE,
+                                                              DECK_ANY_PERSON};
+    return words[whom];
+}
+
 static void add_limit(const struct sentence_view *view, enum hazard_whom whom, struct text *out)
 {
-    static const enum sentence_id whoms[HAZARD_WHOM_COUNT] = {DECK_SMALL_CAR, DECK_LARGE_CAR, DECK_ANY_VEHICLE,
-                                                              DECK_ANY_PERSON};
     const struct deck_picture *deck = &view->state->deck;
     const struct passage *over = &deck->over[whom];
     const struct hazard_limit *limit = hazard_limit_for(whom);
@@ -43,10 +48,41 @@ static void add_limit(const struct sentence_view *view, enum hazard_whom whom, s
         (struct sentence_field[]){{"limit", view->words->text[limit->is_draft ? DECK_DRAFT_LIMIT : DECK_GUIDE_LIMIT]},
                                   {"number", number},
                                   {"unit", deck_measure_unit(deck->by[whom])},
-                                  {"whom", view->words->text[whoms[whom]]},
+                                  {"whom", view->words->text[word_of(whom)]},
                                   {"likely", sentence_moment(view, over->likely_utc_s, moments[0])},
                                   {"earliest", sentence_moment(view, over->earliest_utc_s, moments[1])},
                                   {0}});
+}
+
+/* What the part-blocked peak would put on the deck, and the highest limit that it passes. */
+static void add_blocked_deck(const struct sentence_view *view, double blocked_m, double flow_m3s, struct text *out)
+{
+    char numbers[4][SENTENCE_NUMBER_SIZE];
+    struct hazard_water water =
+        deck_water(view->settings, &view->settings->river, view->point, blocked_m, flow_m3s, 1.0);
+    if (!(water.depth_m > 0.0))
+        return;
+    sentence_fill(out, view->words->text[DECK_BLOCKED],
+                  (struct sentence_field[]){{"depth", up(water.depth_m, numbers[0])},
+                                            {"speed", up(water.speed_m_s, numbers[1])},
+                                            {"product", up(water.product_m2_s, numbers[2])},
+                                            {0}});
+    for (size_t whom = HAZARD_WHOM_COUNT; whom-- > 0;) {
+        const struct hazard_limit *limit = hazard_limit_for((enum hazard_whom)whom);
+        enum hazard_measure by = hazard_measure_passed(limit, &water);
+        if (by == HAZARD_NONE)
+            continue;
+        snprintf(numbers[3], sizeof numbers[3], "%g", deck_measure_limit(limit, by));
+        sentence_fill(out, view->words->text[DECK_OVER_THEN],
+                      (struct sentence_field[]){
+                          {"limit", view->words->text[limit->is_draft ? DECK_DRAFT_LIMIT : DECK_GUIDE_LIMIT]},
+                          {"number", numbers[3]},
+                          {"unit", deck_measure_unit(by)},
+                          {"whom", view->words->text[word_of((enum hazard_whom)whom)]},
+                          {0}});
+        break;
+    }
+    sentence_fill(out, view->words->text[DECK_CAUTION_WORDS], (struct sentence_field[]){{0}});
 }
 
 void bulletin_deck_add(const struct sentence_view *view, bool is_brief, struct text *out)
@@ -80,7 +116,7 @@ static double between_rows(size_t count, const double *from, const double *to, d
     return count > 0 ? to[count - 1] : (double)NAN;
 }
 
-void bulletin_deck_add_rating(const struct sentence_view *view, bool is_brief, struct text *out)
+void bulletin_deck_add_rating(const struct sentence_view *view, bool is_brief, bool has_room, struct text *out)
 {
     const struct settings_point *known = view->known;
     if (known->stage_row_count == 0)
@@ -98,4 +134,6 @@ void bulletin_deck_add_rating(const struct sentence_view *view, bool is_brief, s
                   (struct sentence_field[]){{"blocked", sentence_metres(blocked_m, blocked)},
                                             {"to_deck", sentence_to_deck(view, blocked_m, words)},
                                             {0}});
+    if (has_room && known->has_deck && known->blocked_row_count > 0)
+        add_blocked_deck(view, blocked_m, flow_m3s, out);
 }

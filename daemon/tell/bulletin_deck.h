@@ -11,7 +11,7 @@
  */
 void bulletin_deck_add(const struct sentence_view *view, bool is_brief, struct text *out);
 
-/* Where the level is from, when it has a stage rating of its own, and the peak with it part-blocked. */
-void bulletin_deck_add_rating(const struct sentence_view *view, bool is_brief, struct text *out);
+/* Where the level is from, when it has a stage rating of its own, and the peak with it part-blocked; with room, the deck then. */
+void bulletin_deck_add_rating(const struct sentence_view *view, bool is_brief, bool has_room, struct text *out);
 
 #endif

@@ -442,7 +442,8 @@ static void add_measured(struct bulletin *bulletin)
 static void add_stage_rating(struct bulletin *bulletin)
 {
     struct text paragraph = {0};
-    bulletin_deck_add_rating(bulletin->view, bulletin->detail == DETAIL_LEAST, &paragraph);
+    bulletin_deck_add_rating(bulletin->view, bulletin->detail == DETAIL_LEAST, bulletin->detail >= DETAIL_RUN_ON,
+                             &paragraph);
     if (paragraph.length > 0 || paragraph.is_short)
         end_paragraph(bulletin, &paragraph);
 }

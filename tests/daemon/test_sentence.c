@@ -958,11 +958,17 @@ static void with_blocked_rating(struct night *night)
     night->points[FORD].blocked_row_stage_m = blocked_m;
 }
 
+static const struct section channel = {
+    .shape = SECTION_TRAPEZOID, .bottom_m = 14.0, .side_h_per_v = 2.0, .roughness_n = 0.038};
+
 /* Likely 0.40 m deep; a small car's limit is passed by most runs, the last by a few. */
 static void with_water_on_deck(struct night *night)
 {
     struct deck_picture *deck = &night->point_pictures[FORD].deck;
     night->points[FORD].has_deck = true;
+    night->points[FORD].deck =
+        (struct hazard_deck){.level_m = 1.55, .panel = HAZARD_ANY_PANEL, .roughness_n = 0.016, .section = &channel};
+    night->reaches[FORD].section = &channel;
     deck->low = (struct hazard_water){0.0, 0.0, 0.0};
     deck->likely = (struct hazard_water){0.4, 1.7219, 0.68876};
     deck->high = (struct hazard_water){0.66, 2.07, 1.3662};
@@ -976,6 +982,20 @@ static void with_water_on_deck(struct night *night)
     deck->over[HAZARD_ANY_PERSON].chance = 3.0 / 9.0;
     deck->over[HAZARD_ANY_PERSON].earliest_utc_s = at(24, 20);
     deck->by[HAZARD_ANY_PERSON] = HAZARD_SPEED;
+}
+
+/*
+ * 75 m3/s at 2.50 m: A 47.5 m2, R 1.886 m, K 1908 m3/s, and the sheet of 0.95 m on a deck of n 0.016 runs at
+ * 75 / 1908 x 0.95^(2/3) / 0.016 = 2.374 m/s, faster than the channel's mean of 1.58.
+ */
+static void with_water_on_a_blocked_deck(struct night *night)
+{
+    with_blocked_rating(night);
+    with_water_on_deck(night);
+    night->points[FORD].cannot_see_count = 0; /* room on the page */
+    night->points[FORD].detour_over = NULL;
+    night->decision.after.reasons = ADVICE_BY_CHANCE;
+    night->gauge_pictures[0].is_blind = false;
 }
 
 static void with_water_in_the_highest_run(struct night *night)
@@ -1071,6 +1091,10 @@ static void what_is_special_tonight_is_said(void **state)
          "23:41) over the draft limit of 0.3 m2/s for a small stationary car, in some runs from 00:20 over the "
          "guideline limit of 2 m/s for any vehicle or person. No limit is a depth to drive in.",
          with_water_on_deck},
+        {"water on a blocked deck",
+         "part-blocked by debris the peak would be 2.50 m, 0.95 m over deck. On the deck then 0.95 m, 2.38 m/s, 2.26 "
+         "m2/s, over the guideline limit of 0.6 m2/s for any vehicle or person. No limit is a depth to drive in.",
+         with_water_on_a_blocked_deck},
         {"water on the deck in few runs",
          "On the deck, estimated, in the highest run 0.66 m deep, 2.07 m/s, 1.37 m2/s, in some runs from 23:41 over "
          "the "
@@ -1208,7 +1232,8 @@ static void the_worst_bulletin_still_fits_on_its_page(void **state)
                 "No gauge measures 42 % of the flow there.",
                 "beyond highest gauging 2.38 m",
                 "part-blocked",
-                "over the guideline limit of 0.6 m2/s for any vehicle, child or old person. No limit is a depth to drive",
+                "over the guideline limit of 0.6 m2/s for any vehicle, child or old person. No limit is a depth to "
+                "drive",
                 "(4) ",
                 "not protected from local rain); debris; ice; announced releases not entered",
                 "(6) TOLD: ",
