@@ -139,18 +139,23 @@ static double top_s_of(double rise_s, double sharpness)
 
 /*
  * Within bounds: uniform flow is calm, Froude number at most 0.9, from base to peak (natural channels are seldom
- * otherwise; Jarrett 1984), and conveyance never falls as the water rises (such a section is told by `check`).
+ * otherwise; Jarrett 1984), or, of the fast ones, above that at the peak and nowhere above 1.3; and conveyance never falls as the water rises (such a section is told by `check`).
  */
 static bool is_within_bounds(struct random_reach *reach, const struct full_shape *shape, double base_depth)
 {
     double slope = reach->slope_m_per_m, before = 0.0;
+    bool is_fast = reach->number >= RANDOM_FAST_FROM;
+    double most_froude = is_fast ? 1.3 : 0.9;
+    if (is_fast && !(reach->froude > 0.9))
+        return false;
     reach->slowest_m_s = (double)INFINITY;
     for (size_t i = 1; i <= 200; i++) {
         double depth = 1.15 * reach->peak_depth_m * (double)i / 200.0;
         struct full_water water = full_shape_water_at(shape, depth);
         double flow = sqrt(slope) * water.conveyance_m3s;
         double froude = flow * sqrt(water.top_width_m / (9.80665 * pow(water.area_m2, 3.0)));
-        if (!(water.conveyance_m3s > before) || (depth >= base_depth && depth <= reach->peak_depth_m && froude > 0.9))
+        if (!(water.conveyance_m3s > before) ||
+            (depth >= base_depth && depth <= reach->peak_depth_m && froude > most_froude))
             return false;
         before = water.conveyance_m3s;
         if (flow >= 0.5 * (reach->flood.base_m3s + reach->flood.rise_m3s) && depth <= reach->peak_depth_m)
