@@ -26,7 +26,7 @@
 #define METHOD_KINEMATIC_LIMIT 85.0 /* rise S0 u / h: from here on a kinematic wave is within 5 % */
 #define METHOD_DIFFUSION_LIMIT 15.0 /* rise S0 sqrt(g / h): from here on a diffusion wave is */
 #define METHOD_RAISE_LIMIT 0.10     /* of normal depth: a level raised by more from below is backwater */
-#define METHOD_FROUDE_LIMIT 0.9     /* at the peak: faster flow is not for the full equations here */
+#define METHOD_FROUDE_LIMIT 1.15    /* at the peak: faster flow has not been tried by the full equations */
 enum { METHOD_MOST_FULL_CELLS = 400 };
 
 /* The words people write and read: "muskingum-cunge"; "auto" for NETWORK_AUTO. */

@@ -160,7 +160,8 @@ static void write_table(size_t count, const struct verdict verdicts[], const cha
     for (size_t i = 0; i < count; i++) {
         const struct random_reach *reach = &verdicts[i].reach;
         const struct reach_errors *errors = &verdicts[i].errors;
-        fprintf(file, "%zu,%s,%zu,%.6g,%.6g,%.5g,%.5g,%.5g,%.6g,%.6g,%.6g,%.4g,%.4g,%.6g,%.3g,%.3g,%s,%s,%.4g,%.4g,",
+        fprintf(file,
+                "%zu,%s,%zu,%.6g,%.6g,%.5g,%.5g,%.5g,%.6g,%.6g,%.6g,%.4g,%.4g,%.6g,%.3g,%.3g,%s,\"%s\",%.4g,%.4g,",
                 reach->number, random_reach_class_name(reach->class), reach->drawn, reach->slope_m_per_m,
                 reach->length_m, reach->width_m, reach->bank_m, reach->peak_depth_m, reach->rise_s,
                 reach->flood.base_m3s, reach->flood.base_m3s + reach->flood.rise_m3s, reach->flood.sharpness,

@@ -146,7 +146,7 @@ static bool is_within_bounds(struct random_reach *reach, const struct full_shape
     double slope = reach->slope_m_per_m, before = 0.0;
     bool is_fast = reach->number >= RANDOM_FAST_FROM;
     double most_froude = is_fast ? 1.3 : 0.9;
-    if (is_fast && !(reach->froude > 0.9))
+    if (reach->froude > most_froude || (is_fast && !(reach->froude > 0.9)))
         return false;
     reach->slowest_m_s = (double)INFINITY;
     for (size_t i = 1; i <= 200; i++) {
