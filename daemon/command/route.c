@@ -238,7 +238,7 @@ static enum fw_status choose_method(struct route_plan *plan, const char *name, s
     return FW_OK;
 }
 
-/* What goes on from a gauge in mid-river is read at the head of the reach below it, or at the end of the river. */
+/* What goes on from a gauge in mid-river is read at the head of the reach below it; at the end of the river nothing goes on. */
 static enum fw_status place_gauge_points(struct route_plan *plan, struct fw_error *error)
 {
     size_t gauges = plan->settings->gauge_count;
@@ -252,15 +252,12 @@ static enum fw_status place_gauge_points(struct route_plan *plan, struct fw_erro
     for (size_t gauge = 0; gauge < gauges; gauge++) {
         size_t node = plan->settings->gauges[gauge].node;
         plan->gauge_point[gauge] = NETWORK_NONE;
-        if (!is_inner(plan, gauge))
+        size_t below = network_reach_from(&plan->river, node);
+        if (!is_inner(plan, gauge) || below == NETWORK_NONE)
             continue;
-        size_t below = network_reach_from(&plan->river, node), above = network_reach_into(&plan->river, node);
-        size_t reach = below != NETWORK_NONE ? below : above;
         plan->gauge_point[gauge] = plan->river.point_count;
         plan->points[plan->river.point_count++] =
-            (struct network_point){.id = plan->settings->gauges[gauge].id,
-                                   .reach_index = reach,
-                                   .at_m = below != NETWORK_NONE ? 0.0 : plan->reaches[reach].length_m};
+            (struct network_point){.id = plan->settings->gauges[gauge].id, .reach_index = below, .at_m = 0.0};
     }
     return FW_OK;
 }
@@ -532,7 +529,8 @@ enum fw_status command_route(int argument_count, char *arguments[], struct fw_er
     const struct option_spec options[] = {
         {"config", "FILE", "the configuration; gauges, sections, reaches and points are enough", &config},
         {"inflow", "GAUGE=FILE.csv",
-         "columns time (RFC 3339, or seconds) and discharge_m3s or stage_m; one per gauge", &inflow},
+         "columns time (RFC 3339, or seconds) and discharge_m3s or stage_m; one per gauge, optional in mid-river",
+         &inflow},
         {"method", "NAME", "kinematic-linear, kinematic, muskingum-cunge, diffusive, dynamic, auto", &method},
         {"step", "SECONDS", "fixes the time step", &step},
         {"cells", "N", "fixes the number of cells of every reach", &cells},

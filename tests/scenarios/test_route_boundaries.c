@@ -106,6 +106,41 @@ static void an_outlet_follows_a_series(void **state)
     run_clear(&run);
 }
 
+/* At the river's end a gauge changes nothing: its own column is what it measured, where it did. */
+static void a_gauge_at_the_end_of_the_river_changes_nothing(void **state)
+{
+    static const char config[] =
+        "{ \"gauges\": [ { \"id\": \"scar\" }, { \"id\": \"end\", \"measures\": \"discharge\" } ],\n"
+        "  \"sections\": [ { \"id\": \"s\", \"shape\": \"wide\", \"bottom_m\": 30, \"n\": 0.03 } ],\n"
+        "  \"reaches\": [ { \"id\": \"r\", \"from\": \"scar\", \"to\": \"end\", \"length_m\": 4000, \"slope\": "
+        "0.002,\n"
+        "    \"section\": \"s\" } ], \"points\": [ { \"id\": \"foot\", \"reach\": \"r\", \"at_m\": 4000 } ] }\n";
+    const char *path = scratch_file(*state, "x.json", config);
+    struct run alone = RUN(NULL, "route", "--config", path, "--inflow", scratch_inflow(*state, "scar", scar));
+    struct run with = RUN(NULL, "route", "--config", path, "--inflow", scratch_inflow(*state, "scar", scar),
+                          "--inflow", scratch_inflow(*state, "end", mid), "--every", "3600");
+    assert_run(&alone, EX_OK);
+    assert_run(&with, EX_OK);
+    struct routed first = routed_read(&alone), second = routed_read(&with);
+    assert_int_equal(first.row_count, second.row_count);
+    for (size_t row = 0; row < first.row_count; row++) {
+        double time_s = atof(routed_time(&second, row));
+        size_t own = (row + 1) * second.column_count + routed_column(&second, "end.discharge_m3s");
+        assert_true(routed_value(&first, row, "foot.discharge_m3s") ==
+                    routed_value(&second, row, "foot.discharge_m3s"));
+        assert_string_equal(first.cell[(row + 1) * first.column_count + routed_column(&first, "end.discharge_m3s")],
+                            "nan");
+        if (time_s >= 1800.0 && time_s <= 5400.0)
+            assert_true(fabs(atof(second.cell[own]) - line_at(time_s, 1800.0, 27.0, 5400.0, 41.0)) <= printed_m3s);
+        else
+            assert_string_equal(second.cell[own], "nan");
+    }
+    routed_clear(&first);
+    routed_clear(&second);
+    run_clear(&alone);
+    run_clear(&with);
+}
+
 /* Q = 1.7 x 12 H^1.5 over a crest of 1.1 m; auto takes the full equations there. By a method that cannot, it is refused. */
 static void a_weir_at_a_foot_gives_the_level_above_it(void **state)
 {
@@ -167,6 +202,7 @@ int main(void)
                                         close_scratch),
         cmocka_unit_test_setup_teardown(an_outlet_follows_the_level_of_a_gauge, open_scratch, close_scratch),
         cmocka_unit_test_setup_teardown(an_outlet_follows_a_series, open_scratch, close_scratch),
+        cmocka_unit_test_setup_teardown(a_gauge_at_the_end_of_the_river_changes_nothing, open_scratch, close_scratch),
         cmocka_unit_test_setup_teardown(a_weir_at_a_foot_gives_the_level_above_it, open_scratch, close_scratch),
         cmocka_unit_test_setup_teardown(what_is_missing_or_unfit_is_named, open_scratch, close_scratch),
     };
