@@ -17,19 +17,27 @@ static struct passage_curves share_curves(const struct cycle *cycle)
                                    .step_s = cycle->settings->time_step_s};
 }
 
-static void fill_water(struct cycle *cycle, size_t point)
+/* False: no run wets the deck, at no step. */
+static bool fill_water(struct cycle *cycle, size_t point)
 {
     const struct settings *settings = cycle->settings;
     const double *stage_m = cycle_stage_m(cycle, point, 0);
     const double *discharge_m3s = cycle_discharge_m3s(cycle, point, 0);
+    double level_m = settings->points[point].deck.level_m;
+    bool is_wet = false;
     for (size_t step = 0; step <= cycle->step_count; step++)
         for (size_t index = 0; index < cycle->forecast_column_count; index++) {
             size_t column = cycle->forecast_columns[index];
             size_t place = step * cycle->member_count + column;
+            cycle->deck_water[place] = (struct hazard_water){0};
+            if (!(stage_m[place] > level_m))
+                continue;
+            is_wet = true;
             cycle->deck_water[place] =
                 deck_water(settings, &cycle->season.river, point, stage_m[place], discharge_m3s[place],
                            settings->roughness_factors[column / CYCLE_FUTURES]);
         }
+    return is_wet;
 }
 
 struct run_peak {
@@ -96,10 +104,13 @@ static enum hazard_measure first_measure(const struct cycle *cycle, const struct
 static enum fw_status find_passage(struct cycle *cycle, enum hazard_whom whom, int64_t now_utc_s,
                                    struct deck_picture *deck)
 {
-    size_t count = (cycle->step_count + 1) * cycle->member_count;
     const struct hazard_limit *limit = hazard_limit_for(whom);
-    for (size_t place = 0; place < count; place++)
-        cycle->deck_share[place] = hazard_share_of_limit(limit, &cycle->deck_water[place]);
+    for (size_t step = 0; step <= cycle->step_count; step++)
+        for (size_t index = 0; index < cycle->forecast_column_count; index++) {
+            size_t place = step * cycle->member_count + cycle->forecast_columns[index];
+            const struct hazard_water *water = &cycle->deck_water[place];
+            cycle->deck_share[place] = water->depth_m > 0.0 ? hazard_share_of_limit(limit, water) : 0.0;
+        }
     struct passage_curves curves = share_curves(cycle);
     enum fw_status status = passage_of_mark(&curves, now_utc_s, 1.0, &deck->over[whom]);
     if (status == FW_OK)
@@ -112,7 +123,11 @@ enum fw_status cycle_assess_deck(struct cycle *cycle, size_t point, size_t now_s
 {
     struct deck_picture deck = deck_picture_empty();
     enum fw_status status = FW_OK;
-    fill_water(cycle, point);
+    if (!fill_water(cycle, point)) {
+        deck.low = deck.likely = deck.high = (struct hazard_water){0};
+        *deck_out = deck;
+        return FW_OK;
+    }
     find_peaks(cycle, now_step, &deck);
     for (size_t whom = 0; whom < HAZARD_WHOM_COUNT && status == FW_OK; whom++)
         status = find_passage(cycle, (enum hazard_whom)whom, now_utc_s, &deck);
