@@ -1,11 +1,11 @@
 /* SPDX-License-Identifier: MIT */
 /*
- * All speed figures of the engine, as ratios to an in-cache triad and to a general library for differential equations,
- * both measured in the same run (docs/speed.md).
+ * All speed figures of the engine, as ratios to an in-cache triad and to a general library for differential
+ * equations, both measured in the same run (docs/speed.md).
  *
  *     ninja -C build/release bench_engine && build/release/tests/bench_engine [--smoke] [PART...]
- * Parts: storage, full, growth, rival; none named: all. The rival's rivers: published, flashy, flat; none named: all. --smoke takes seconds, asserts that accuracy is within wide bounds,
- * and nothing of speed.
+ * Parts: storage, full, growth, rival; none named: all. The rival's rivers: published, flashy, flat; none named: all.
+ * --smoke takes seconds, asserts that accuracy is within wide bounds, and nothing of speed.
  */
 #include <stdio.h>
 #include <stdlib.h>

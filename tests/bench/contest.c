@@ -4,7 +4,7 @@
 #include <math.h>
 #include <stdlib.h>
 
-enum { FINALISTS = 6, FINAL_REPEATS = 5 };
+enum { FINALISTS = 8, FINAL_REPEATS = 5 };
 
 bool contest_prepare(struct contest *contest)
 {
@@ -35,7 +35,7 @@ void contest_clear(struct contest *contest)
     contest->flow_m3s = NULL;
 }
 
-/* --- one trial ----------------------------------------------------------------------------------------------------- */
+/* --- one trial ------------------------------------------------------------------------------------------------ */
 
 struct rival_reach contest_reach(const struct contest *contest)
 {
@@ -64,6 +64,8 @@ struct rival_trial contest_try_rival(struct contest *contest, const struct rival
     if (!has_run)
         return trial;
     trial.seconds = laps_total_s(&laps);
+    trial.work = (double)(setup->cell_count * (setup->is_diffusive ? 1 : 2)) *
+                 (double)(counts.evaluations + counts.steps + 2 * counts.factorings);
     trial.accuracy = accuracy_of(contest->count, contest->river->time_step_s, contest->truth_m3s, contest->flow_m3s);
     return trial;
 }
@@ -114,7 +116,7 @@ struct engine_trial contest_try_engine(struct contest *contest, size_t cells, do
     return trial;
 }
 
-/* --- all of them --------------------------------------------------------------------------------------------------- */
+/* --- all of them ---------------------------------------------------------------------------------------------- */
 
 static void run_rival_trials(struct contest *contest)
 {
@@ -157,9 +159,7 @@ void contest_run_trials(struct contest *contest)
     run_engine_trials(contest);
 }
 
-/*
- * One run's time wavers: the cheapest few are run again, several times, and the best of them taken.
- */
+/* One run's time wavers: the few with the least work are run again, several times, and the cheapest of them taken. */
 struct rival_trial contest_cheapest_rival(struct contest *contest, const struct accuracy *goal, size_t cells)
 {
     bool is_out[MOST_RIVAL_TRIALS] = {false};
@@ -170,7 +170,7 @@ struct rival_trial contest_cheapest_rival(struct contest *contest, const struct 
             const struct rival_trial *trial = &contest->rival_trials[i];
             if (!is_out[i] && trial->seconds > 0.0 && (cells == 0 || trial->setup.cell_count == cells) &&
                 accuracy_reaches(&trial->accuracy, goal) &&
-                (next == MOST_RIVAL_TRIALS || trial->seconds < contest->rival_trials[next].seconds))
+                (next == MOST_RIVAL_TRIALS || trial->work < contest->rival_trials[next].work))
                 next = i;
         }
         if (next == MOST_RIVAL_TRIALS)

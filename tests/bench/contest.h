@@ -15,6 +15,7 @@ enum { CONTEST_MEMBERS = 32, MOST_RIVAL_TRIALS = 512, MOST_ENGINE_TRIALS = 128 }
 struct rival_trial {
     struct rival_setup setup;
     struct accuracy accuracy;
+    double work;    /* counted: unknowns by evaluations, steps and factorings; of no unit */
     double seconds; /* of one run; 0: none */
 };
 

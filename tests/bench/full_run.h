@@ -30,7 +30,7 @@ void full_run_clear(struct full_run *run);
 /* From a steady start through a flood of 12 h and more, in steps of 60 s; adds the time of the steps to the laps. */
 void full_run_advance(struct full_run *run, struct laps *laps);
 
-/* What came in, less what went out and is there, as a share of what came in; the worst of 64 members. Runs the flood. */
+/* What came in, less what went out and is there, as a share of what came in; the worst of 64. Runs the flood. */
 double full_run_imbalance(struct full_run *run);
 
 #endif

@@ -1,5 +1,5 @@
 /* SPDX-License-Identifier: MIT */
-/* What the cost of a step grows with: members, cells, nodes, reaches. Straight lines, and how far the figures are off them. */
+/* What the cost of a step grows with: members, cells, nodes, reaches. Straight lines, and how far off them it is. */
 #include <stdio.h>
 
 #include "tests/bench/engine_bench.h"

@@ -111,8 +111,8 @@ void network_run_clear(struct network_run *run)
     memset(run, 0, sizeof *run);
 }
 
-/* Steps that take a fraction of a millisecond. The arrays of one gauge and one point may be taken piece by piece; of more gauges,
- * only whole. */
+/* Steps that take a fraction of a millisecond. The arrays of one gauge and one point may be taken piece by piece; of
+ * more gauges, only whole. */
 static size_t steps_of_a_lap(const struct network_run *run)
 {
     size_t values = run->setup.group_count * run->setup.members_per_group * network_cell_count(run->network, 0);

@@ -37,7 +37,7 @@ struct rival {
     void *cvode;
 };
 
-/* --- the equations ------------------------------------------------------------------------------------------------- */
+/* --- the equations -------------------------------------------------------------------------------------------- */
 
 static inline struct rival_cell read_cell(const struct area_table *table, double area)
 {
@@ -193,7 +193,7 @@ static int full_derivatives(double t_s, N_Vector state, N_Vector rates, SUNMatri
     return 0;
 }
 
-/* --- rooms and handles --------------------------------------------------------------------------------------------- */
+/* --- rooms and handles ---------------------------------------------------------------------------------------- */
 
 static bool make_grid(struct rival *rival)
 {

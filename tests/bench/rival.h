@@ -43,7 +43,7 @@ struct rival; /* rooms and library handles: made once, run for any number of mem
 bool rival_create(struct rival **rival_out, const struct rival_reach *reach, const struct rival_setup *setup);
 void rival_destroy(struct rival *rival); /* NULL is fine */
 
-/* Flows at the reach's foot, one per output from 0 on; the time it took is added to the laps. False: the library gave up. */
+/* Flows at the reach's foot, one per output from 0 on; adds its time to the laps. False: the library gave up. */
 bool rival_run(struct rival *rival, double (*inflow)(double t_s, const void *parameters), const void *parameters,
                double outflow_m3s[], struct laps *laps, struct rival_counts *counts_out);
 

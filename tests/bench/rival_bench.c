@@ -36,7 +36,7 @@ struct match {
     double rival_s[RIVALS], rival_lone_s[RIVALS];
 };
 
-/* --- who takes part ------------------------------------------------------------------------------------------------- */
+/* --- who takes part ------------------------------------------------------------------------------------------- */
 
 static void choose_sides(struct match *match)
 {
@@ -55,11 +55,14 @@ static void choose_sides(struct match *match)
     match->engine[ASKED] = contest_cheapest_engine(contest, &match->goal[ASKED]);
     match->rival[NAMED_SAME_CELLS] = contest_cheapest_rival(contest, &match->goal[NAMED], river->cell_count);
     match->rival[NAMED_ANY_CELLS] = contest_cheapest_rival(contest, &match->goal[NAMED], 0);
+    if (match->rival[NAMED_SAME_CELLS].seconds > 0.0 &&
+        match->rival[NAMED_SAME_CELLS].seconds < match->rival[NAMED_ANY_CELLS].seconds)
+        match->rival[NAMED_ANY_CELLS] = match->rival[NAMED_SAME_CELLS];
     match->rival[ASKED_ANY] = contest_cheapest_rival(contest, &match->goal[ASKED], 0);
     match->rival[DAEMON_ANY] = contest_cheapest_rival(contest, &match->goal[DAEMON], 0);
 }
 
-/* --- timed in turns -------------------------------------------------------------------------------------------------- */
+/* --- timed in turns ------------------------------------------------------------------------------------------- */
 
 struct sides {
     struct network_run lone[WAYS], block[WAYS], many[WAYS];
@@ -162,7 +165,7 @@ static bool measure_costs(struct match *match)
     return is_well;
 }
 
-/* --- what is printed ------------------------------------------------------------------------------------------------- */
+/* --- what is printed ------------------------------------------------------------------------------------------ */
 
 static void print_accuracy(const struct accuracy *accuracy)
 {
@@ -245,7 +248,7 @@ static void print_match(const struct match *match)
     print_most_accurate(&match->contest);
 }
 
-/* --- a case ---------------------------------------------------------------------------------------------------------- */
+/* --- a case --------------------------------------------------------------------------------------------------- */
 
 /* Wide: a wrong build, or a rival that solves another problem, is far outside. */
 static bool is_within_bounds(const struct accuracy *accuracy)
