@@ -198,6 +198,7 @@ static void void_water(const struct settings_point *known, struct point_picture 
     point->measured_until_utc_s = 0;
     point->unmeasured_share = 0.0;
     point->is_peak_beyond_gauging = false;
+    point->is_peak_above_survey = false;
     point->below_since_utc_s = 0;
 }
 
@@ -226,6 +227,7 @@ static enum fw_status assess_water(struct cycle *cycle, const struct picture *pi
     point->measured_until_utc_s = measured_until(cycle, index);
     point->unmeasured_share = unmeasured_share(cycle, picture, index);
     point->is_peak_beyond_gauging = is_peak_beyond_gauging(cycle, now_utc_s);
+    point->is_peak_above_survey = cycle_is_above_survey(cycle, index, step_at(cycle, now_utc_s - PEAK_LOOK_BACK_S));
     point->below_since_utc_s =
         below_since(cycle, index, now_utc_s, known->marks[known->deck_mark].depth_m - known->reopen_below_m);
     return status;

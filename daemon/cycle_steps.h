@@ -103,6 +103,8 @@ FW_MUST_CHECK enum fw_status cycle_assess(struct cycle *cycle, int64_t now_utc_s
 /* Of 4: one point's deck. */
 FW_MUST_CHECK enum fw_status cycle_assess_deck(struct cycle *cycle, size_t point, size_t now_step, int64_t now_utc_s,
                                                struct deck_picture *deck_out);
+/* Of 4: whether a forecast run stands above the survey of a section at the point or above it, from a step on. Needs is_above. */
+bool cycle_is_above_survey(const struct cycle *cycle, size_t point, size_t from_step);
 /* 5 Record: messages, thinned forecast, ledger entry. */
 FW_MUST_CHECK enum fw_status cycle_record(struct cycle *cycle, int64_t now_utc_s, struct delta *delta);
 

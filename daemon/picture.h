@@ -84,8 +84,10 @@ struct point_picture {
     size_t trigger;              /* which one, when one holds */
     int64_t trigger_since_utc_s; /* since when (assumed: the moment the carried rise passes it) */
     bool is_peak_beyond_gauging; /* the flow behind the peak is above a gauge's highest gauging */
-    double chance_of_return;     /* see advice_facts */
-    int64_t below_since_utc_s;   /* computed level below closing mark - reopen margin since; 0: it is not */
+    bool
+        is_peak_above_survey; /* the water before or at the peak stands above a section's survey, there or upstream */
+    double chance_of_return;  /* see advice_facts */
+    int64_t below_since_utc_s; /* computed level below closing mark - reopen margin since; 0: it is not */
     struct road_fact road;
     int64_t crew_called_utc_s; /* when a person said CREW CALLED (or OUT) in this thread; 0: nobody did */
     struct water_fact water;

@@ -228,6 +228,7 @@ static void add_point(struct text *json, const struct settings_point *known, con
     else
         text_add(json, "null");
     add_bool(json, "peak_beyond_highest_gauging", point->is_peak_beyond_gauging);
+    add_bool(json, "peak_above_survey", point->is_peak_above_survey);
     add_number(json, "chance_of_return", 4, point->chance_of_return);
     add_whole(json, "closing_mark", (int64_t)known->closing_mark);
     add_whole(json, "deck_mark", (int64_t)known->deck_mark);

@@ -188,6 +188,7 @@ static enum fw_status allocate_values(struct network *network)
     layout->foot_m3 = take(layout, river->reach_count, members);
     layout->lent_m3 = take(layout, river->reach_count, members);
     layout->lent_before_m3 = take(layout, river->reach_count, members);
+    layout->above_survey = take(layout, river->reach_count, members);
     layout->gauge = take(layout, river->gauge_count * network->ring_count, members);
     layout->given = take(layout, river->gauge_count, members);
     layout->brought_m3s = take(layout, river->gauge_count, members);

@@ -280,6 +280,12 @@ size_t network_steps_above_tables(const struct network *network);
 size_t network_steps_below_zero(const struct network *network);
 
 /*
+ * Steps since the steady start, over all members, in which the level at a reach's head or foot stood above the lower end of its
+ * surveyed section (section_survey_top_m): walls are assumed there, and what was computed is a guess. The start counts as one.
+ */
+size_t network_steps_above_survey(const struct network *network, size_t reach_index);
+
+/*
  * Steps so far that the full equations could not take and a kinematic step without backwater replaced, over all
  * members and trees of such reaches. Water may run upstream there, which is not counted as below zero.
  */

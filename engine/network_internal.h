@@ -29,6 +29,7 @@ struct block_layout {
     size_t
         lent_m3; /* [reach] kept back from its head: what ran back out of it and must come again first, never above 0 */
     size_t lent_before_m3; /* [reach] a step ago */
+    size_t above_survey;   /* [reach] steps so far with the level at its head or foot above its survey */
     size_t gauge; /* [gauge][slot] flows, the newest in slot ring_at, older ones in the slots before it, cyclically */
     size_t given; /* [gauge] flows as given for this step, not a number where nothing was measured */
     size_t brought_m3s; /* [gauge] measured less routed, now */

@@ -23,6 +23,16 @@ size_t network_steps_below_zero(const struct network *network)
     return network->steps_below_zero;
 }
 
+size_t network_steps_above_survey(const struct network *network, size_t reach_index)
+{
+    size_t members = network->members_per_group;
+    double sum = 0.0;
+    for (size_t group = 0; group < network->group_count; group++)
+        for (size_t member = 0; member < members; member++)
+            sum += network_block_of(network, group)[network->layout.above_survey + reach_index * members + member];
+    return (size_t)sum;
+}
+
 size_t network_steps_replaced(const struct network *network)
 {
     size_t count = 0;

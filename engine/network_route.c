@@ -148,6 +148,24 @@ static void count_flows_outside(struct network *network, const double *block, si
     network->steps_below_zero += below;
 }
 
+/* By the depths computed where the full equations rule, else by the flow that fills the survey. */
+static void count_levels_above_survey(const struct network *network, double *block, size_t group, size_t reach_index,
+                                      bool is_start)
+{
+    const struct routed_reach *reach = &network->reaches[reach_index];
+    size_t members = network->members_per_group, last = (reach->stop_count - 1) * members;
+    double *count = block + network->layout.above_survey + reach_index * members;
+    bool has_depths = network->tree_of_reach[reach_index] != NETWORK_NONE;
+    const double *values = has_depths ? network->stop_depth_m : network->stop_m3;
+    double most = has_depths ? reach->survey_top_m
+                             : network->time_step_s * reach->survey_conveyance_m3s *
+                                   sqrt(reach->source->slope_m_per_m) / network->roughness_factors[group];
+    for (size_t member = 0; member < members; member++) {
+        bool is_above = values[member] > most || values[last + member] > most;
+        count[member] = (is_start ? 0.0 : count[member]) + (is_above ? 1.0 : 0.0);
+    }
+}
+
 /* The heads of a tree, and then all of it at once, when its outlet's turn comes. */
 static void move_tree(struct network *network, size_t group, double *block, struct routed_tree *tree,
                       size_t newest_slot, bool is_start)
@@ -179,6 +197,7 @@ static void move_tree(struct network *network, size_t group, double *block, stru
         routed_tree_read_stops(tree, group, branch, &network->reaches[reach_index], state, network->stop_m3,
                                network->stop_depth_m);
         keep_flows(network, block, reach_index);
+        count_levels_above_survey(network, block, group, reach_index, is_start);
         if (!is_start)
             count_flows_outside(network, block, group, reach_index);
     }
@@ -284,6 +303,7 @@ static enum fw_status move_reaches(struct network *network, size_t group, double
         if (status != FW_OK)
             return status;
         keep_flows(network, block, reach_index);
+        count_levels_above_survey(network, block, group, reach_index, is_start);
         if (!is_start)
             count_flows_outside(network, block, group, reach_index);
     }

@@ -36,6 +36,17 @@ static enum fw_status make_curve(struct routed_reach *reach, const struct networ
                            table_headroom * options->largest_discharge_m3s * most / root_slope);
 }
 
+static void find_survey_top(struct routed_reach *reach)
+{
+    struct section_properties at_top;
+    reach->survey_top_m = section_survey_top_m(reach->source->section);
+    reach->survey_conveyance_m3s = (double)INFINITY;
+    if (!isfinite(reach->survey_top_m))
+        return;
+    section_properties_at(reach->source->section, reach->survey_top_m, &at_top);
+    reach->survey_conveyance_m3s = at_top.conveyance_m3s;
+}
+
 static size_t choose_cell_count(struct routed_reach *reach, const struct method_flood *flood,
                                 const struct network_options *options)
 {
@@ -192,6 +203,7 @@ enum fw_status routed_reach_init_curve(struct routed_reach *reach, const struct 
     reach->source = source;
     reach->group_count = options->group_count;
     reach->time_step_s = options->time_step_s;
+    find_survey_top(reach);
     return make_curve(reach, options);
 }
 

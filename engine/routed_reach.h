@@ -29,7 +29,9 @@ struct routed_reach {
     size_t cell_count;
     double cell_m;
     double time_step_s;
-    double diffusion_length_m; /* D/c at the peak, as the section is given */
+    double survey_top_m;          /* see section_survey_top_m, */
+    double survey_conveyance_m3s; /* and what the section carries there, as it is given */
+    double diffusion_length_m;    /* D/c at the peak, as the section is given */
     struct flow_curve curve;
     struct muskingum_cunge_table *tables; /* per group; the storage form's */
     struct kinematic_channel *channels;   /* per group; the linear scheme's */

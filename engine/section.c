@@ -372,6 +372,14 @@ static double next_corner_m(const struct section *section, double depth_m)
     return corner_m;
 }
 
+double section_survey_top_m(const struct section *section)
+{
+    if (section->shape != SECTION_POINTS)
+        return (double)INFINITY;
+    double ends_m = fmin(section->point_elevation_m[0], section->point_elevation_m[section->point_count - 1]);
+    return ends_m - start_of_bed(section).invert_m;
+}
+
 bool section_conveyance_falls(const struct section *section, double *from_depth_out_m)
 {
     for (double corner_m = next_corner_m(section, 0); isfinite(corner_m);

@@ -78,6 +78,9 @@ size_t section_panel_count(const struct section *section);
 void section_panel_at(const struct section *section, size_t panel, double depth_m,
                       struct section_properties *properties_out);
 
+/* The depth at the lower end of a survey, above which walls are assumed; INFINITY for the other shapes. */
+double section_survey_top_m(const struct section *section);
+
 /*
  * Whether conveyance falls somewhere as the water rises, and from which depth on: water that spreads over a berm
  * within one panel adds perimeter before area, and the divided-channel rule then takes flow away. The cure is a panel

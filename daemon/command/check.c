@@ -10,6 +10,7 @@
 #include "daemon/command/check_facts.h"
 #include "daemon/command/check_json.h"
 #include "daemon/command/check_season.h"
+#include "daemon/command/check_survey.h"
 #include "daemon/command/options.h"
 
 /* --- reaches ------------------------------------------------------------------------------------------------------ */
@@ -163,6 +164,7 @@ static enum fw_status print_all(const struct check_facts *facts, struct fw_error
     if (status == FW_OK)
         status = check_season_print(facts, error);
     printf("\n");
+    check_survey_print(facts);
     bool is_protected = true;
     for (size_t point = 0; point < settings->point_count && status == FW_OK; point++)
         is_protected &= print_point(facts, point, is_above);

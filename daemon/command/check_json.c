@@ -8,6 +8,7 @@
 
 #include "daemon/command/check_deck.h"
 #include "daemon/command/check_season.h"
+#include "daemon/command/check_survey.h"
 #include "daemon/tell/sentence.h"
 
 /* null for what is not known */
@@ -39,6 +40,9 @@ static void add_reach(cJSON *array, const struct check_reach *found)
     add(object, "bank_full_m3s", found->bank_full_m3s);
     add(object, "peak_m3s", found->peak_m3s);
     add(object, "fit_for_rises_longer_than_s", found->least_rise_s);
+    struct check_survey survey = check_survey_of(found->reach);
+    add(object, "surveyed_to_m", survey.top_m);
+    add(object, "surveyed_to_m3s", survey.top_m3s);
     cJSON *flows = cJSON_AddArrayToObject(object, "flows");
     for (size_t index = 0; index < found->flow_count; index++) {
         cJSON *flow = add_object(flows);

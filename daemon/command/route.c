@@ -404,6 +404,20 @@ static double point_stage_at(const struct route_plan *plan, const struct network
                                                  : network_point_stage_m(network, point, 0, flow_m3s);
 }
 
+static void print_above_survey(const struct route_plan *plan, const struct network *network, size_t step_count)
+{
+    for (size_t reach = 0; reach < plan->river.reach_count; reach++) {
+        size_t above = network_steps_above_survey(network, reach);
+        if (above > 0)
+            fprintf(stderr,
+                    "forewater: note: reach '%s': in %zu of %zu steps the water stands above the survey of its "
+                    "section, more than %.2f m deep; upright walls are assumed there, and its levels and flows are "
+                    "a guess\n",
+                    plan->river.reaches[reach].id, above, step_count + 1,
+                    section_survey_top_m(plan->river.reaches[reach].section));
+    }
+}
+
 static void print_rows(const struct route_plan *plan, const struct network *network, size_t step_count,
                        const double inflow_m3s[], const double point_m3s[], const double stage_m[])
 {
@@ -510,6 +524,8 @@ static enum fw_status route(const struct route_plan *plan, struct fw_error *erro
                 "forewater: note: in %zu of %zu steps the full equations could not be solved; simpler ones without "
                 "backwater took their place (fronts into a nearly dry bed do that)\n",
                 network_steps_replaced(network), step_count);
+    if (status == FW_OK)
+        print_above_survey(plan, network, step_count);
     if (status == FW_OK && (fflush(stdout) != 0 || ferror(stdout)))
         status = fw_error_set(error, FW_IO, "standard output: %s", strerror(errno));
 cleanup:

@@ -84,6 +84,14 @@ static void check_section(struct settings_work *work, const struct section *sect
         {"has_plain", "sections[].plain"},
     };
     const char *fault = "";
+    const struct json_value *points = settings_work_member(object, "sections[].points");
+    for (size_t i = 1; points != NULL && i < section->point_count; i++)
+        if (section->point_offset_m[i] < section->point_offset_m[i - 1]) {
+            json_tree_fault(work->report, &points->children[i].children[0],
+                            "folds back, the point before it stands at %g: expected offsets that never decrease",
+                            section->point_offset_m[i - 1]);
+            return;
+        }
     if (section_check(section, &fault) != FW_OK)
         settings_work_engine_fault(work, object, fault, sizeof names / sizeof names[0], names);
 }

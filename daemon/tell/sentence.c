@@ -232,6 +232,8 @@ static void put_rests(struct parts *parts)
         put(parts, PART_HAND, SHORT_HAND, fields);
     if (state->is_peak_beyond_gauging || sentence_any_above(view, is_beyond_gauging))
         put(parts, PART_BEYOND, SHORT_BEYOND_GAUGING, fields);
+    else if (state->is_peak_above_survey)
+        put(parts, PART_BEYOND, SHORT_ABOVE_SURVEY, fields);
     if (view->after.reasons & (ADVICE_BY_TRIGGER | ADVICE_BY_ASSUMED_TRIGGER))
         put(parts, PART_TRIGGER, SHORT_TRIGGER, fields);
 }

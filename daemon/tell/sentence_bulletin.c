@@ -347,6 +347,9 @@ static void add_levels(struct bulletin *bulletin)
     bool is_said = bulletin->detail == DETAIL_LEAST && sentence_any_above(view, is_beyond_gauging);
     if (state->is_peak_beyond_gauging && !is_said)
         fill(&paragraph, bulletin, RESTS_PEAK_BEYOND, NULL);
+    if (state->is_peak_above_survey &&
+        !(bulletin->detail == DETAIL_LEAST && (is_said || state->is_peak_beyond_gauging)))
+        fill(&paragraph, bulletin, RESTS_PEAK_ABOVE_SURVEY, NULL);
     end_paragraph(bulletin, &paragraph);
 }
 

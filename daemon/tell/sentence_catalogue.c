@@ -85,6 +85,7 @@ static const struct sentence_catalogue english = {
             [SHORT_OVER_DECK_SILENT] = "Computed at or over deck, no reading since {since}. ",
             [SHORT_TRIGGER] = "Signed trigger. ",
             [SHORT_BEYOND_GAUGING] = "Beyond highest gauging. ",
+            [SHORT_ABOVE_SURVEY] = "Above the survey. ",
             [SHORT_HAND] = "Hand reading {newest}. ",
             [SHORT_NEXT_LOOK] = "Next look {next}. ",
             [SHORT_ALSO] = "{count} more crossings changed. ",
@@ -171,6 +172,7 @@ static const struct sentence_catalogue english = {
             [RESTS_REPLACED] =
                 " In {replaced} % of its steps the routing had to do without backwater: levels are less sure.",
             [RESTS_PEAK_BEYOND] = " The peak is beyond the highest gauging and may be well off.",
+            [RESTS_PEAK_ABOVE_SURVEY] = " The water stands above the survey and may be well off.",
             [RESTS_STAGE_RATING] = "Level there is from a stage rating of its own.",
             [RESTS_PART_BLOCKED] =
                 "Level there is from a stage rating of its own; part-blocked by debris the peak would be "

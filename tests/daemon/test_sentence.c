@@ -507,6 +507,9 @@ static void hand_readings_triggers_and_gauging_limits_are_said_while_there_is_ro
     night->decision.after.reasons = 0;
     night->point_pictures[FORD].is_peak_beyond_gauging = true;
     expect_words(short_of(night, text), "Beyond highest gauging.");
+    night->point_pictures[FORD].is_peak_beyond_gauging = false;
+    night->point_pictures[FORD].is_peak_above_survey = true;
+    expect_words(short_of(night, text), "Above the survey.");
     free(night);
 }
 
@@ -844,6 +847,11 @@ static void with_beyond(struct night *night)
     night->point_pictures[FORD].is_peak_beyond_gauging = true;
 }
 
+static void with_water_above_survey(struct night *night)
+{
+    night->point_pictures[FORD].is_peak_above_survey = true;
+}
+
 static void with_hand(struct night *night)
 {
     night->gauge_pictures[0].is_blind = false;
@@ -1054,6 +1062,7 @@ static void what_is_special_tonight_is_said(void **state)
         {"it was away", "Forewater was away from 20:31;", with_gap},
         {"gauge beyond gauging", "[//] BLIND (limit 25 min), beyond highest gauging 2.38 m.", with_beyond},
         {"peak beyond gauging", "The peak is beyond the highest gauging and may be well off.", with_beyond},
+        {"above the survey", "The water stands above the survey and may be well off.", with_water_above_survey},
         {"by hand", "seen 21:15, 45 min old, hand reading.", with_hand},
         {"held", "held unconfirmed: 6.91 m at 20:35.", with_held},
         {"frozen and falling",
@@ -1163,6 +1172,7 @@ static void make_worst(struct night *night)
     snprintf(night->picture.store_trouble, FACT_NOTE_SIZE, "%s", place_names[3]);
     with_gap(night);
     with_beyond(night);
+    with_water_above_survey(night);
     with_held(night);
     with_frozen(night);
     with_wet(night);

@@ -466,7 +466,7 @@ static void a_section_must_have_what_its_shape_needs(void **state)
     DEMAND_ALL(SETTINGS_EXAMPLE, changes);
     static const struct change others[] = {
         {"a survey that folds back", "[9.7, 0.6]", "[1.7, 0.6]", NULL,
-         "sections[0].points: an array cannot be used: folds back"},
+         "sections[0].points[3][0]: 1.7 folds back, the point before it stands at "},
         {"panels short of the end", "\"to_m\": 13.3", "\"to_m\": 12.3", "\"panels\"",
          "sections[0].panels: an array cannot be used: the last panel does not reach"},
         {"points on a wide bed", "\"bottom_m\": 31", "\"bottom_m\": 31, \"points\": [[0, 1], [1, 0], [2, 1]]", NULL,

@@ -287,6 +287,8 @@ static void water_above_either_end_of_the_survey_is_flagged_and_rubs_on_the_end_
 {
     (void)state;
     /* ends 5.18 and 5.88 m above the invert at 407.72 */
+    assert_near(section_survey_top_m(&natural), 5.18, ROUNDING, "the lower end");
+    assert_true(isinf(section_survey_top_m(&ildra))); /* banks of a shape have no upper end */
     assert_false(properties_of(&natural, 5.17).is_above_survey);
     assert_true(properties_of(&natural, 5.19).is_above_survey);
     struct section_properties low = properties_of(&natural, 6.3), high = properties_of(&natural, 7.3);
