@@ -78,19 +78,19 @@ static double head_flow(const struct dynamic_tree *tree, const struct dynamic_st
 }
 
 void dynamic_replace_step(const struct dynamic_tree *tree, const struct dynamic_step_data *data,
-                          struct dynamic_state *state, struct dynamic_work *work)
+                          const double old_area_m2[], const double old_head_m3s[], struct dynamic_state *state)
 {
     size_t node = 0;
     double dt = data->time_step_s;
     for (size_t i = 0; i < tree->branch_count; i++) {
         const struct dynamic_branch *branch = &tree->branches[i];
-        double coming = head_volume(tree, data, state, i, work->old_discharge[node]);
+        double coming = head_volume(tree, data, state, i, old_head_m3s[i]);
         double above_m = 0.0; /* half the interval above */
         for (size_t k = 0; k <= branch->interval_count; k++, node++) {
             bool is_foot = k == branch->interval_count;
             double below_m = is_foot ? 0.0 : 0.5 * branch->interval_m[k];
             double slope = branch->slope_m_per_m[is_foot ? k - 1 : k];
-            double old_area = work->old_area[node];
+            double old_area = old_area_m2[node];
             const struct outflow outflow = {.branch = branch,
                                             .root_slope = sqrt(fmax(slope, flattest_slope)),
                                             .is_structure = is_foot && branch->foot == DYNAMIC_FOOT_STRUCTURE};

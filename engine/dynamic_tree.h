@@ -27,6 +27,7 @@
 #include "engine/area_table.h"
 #include "engine/stage_structure.h"
 #include "engine/status.h"
+#include "engine/vector.h"
 
 #define DYNAMIC_NOWHERE ((size_t)-1)
 #define DYNAMIC_TIME_WEIGHT 0.55
@@ -84,11 +85,17 @@ struct dynamic_counts { /* over steps and members since the caller last set them
     size_t replaced;        /* nor without inertia: a kinematic step took its place */
 };
 
-/* Room for dynamic_tree_step. FW_NO_MEMORY. The caller clears. */
+/*
+ * Room for dynamic_tree_step on this tree and on any other of the same branches and sides. FW_NO_MEMORY. The caller
+ * destroys. Members are solved in blocks, a vector of the processor's widest at a time.
+ */
 struct dynamic_work;
 FW_MUST_CHECK enum fw_status dynamic_work_create(struct dynamic_work **work_out, const struct dynamic_tree *tree,
                                                  size_t member_count);
 void dynamic_work_destroy(struct dynamic_work *work); /* NULL is fine */
+
+/* No wider vectors than these from now on, to be compared or timed; returns what is used. The results are the same. */
+enum vector_level dynamic_work_set_vectors(struct dynamic_work *work, enum vector_level widest);
 
 /*
  * The steady, gradually varied flow of each member: flows add up downstream from state->inflow_m3s, levels are solved

@@ -241,7 +241,7 @@ void muskingum_cunge_step(const struct muskingum_cunge_table *table, size_t cell
                           double state_m3[restrict], double passing_m3[restrict], double implicit_m3[restrict])
 {
 #if defined(FW_VECTOR_AVX2)
-    if (table->vectors == VECTOR_AVX2) {
+    if (table->vectors >= VECTOR_AVX2) {
         muskingum_cunge_kernel_avx2(table, cell_count, member_count, state_m3, passing_m3, implicit_m3);
         return;
     }

@@ -46,7 +46,8 @@ struct muskingum_cunge_table {
     struct bit_index by_potential; /* H to row */
     struct muskingum_cunge_row *rows;
     void *row_memory;
-    enum vector_level vectors;   /* the widest present; another that is present may be set, with the same results */
+    enum vector_level
+        vectors; /* the widest present; another that is present may be set, with the same results. AVX-512 is served by AVX2. */
     struct bit_index by_outflow; /* dt O to the row it begins in */
     uint32_t *first_row;
     double *row_outflow;          /* dt O at which a row begins; one more than rows, the last infinite */

@@ -13,6 +13,7 @@
 enum vector_level {
     VECTOR_BASELINE, /* what the compiler's target has: 2 doubles on x86-64 (SSE2) and on arm64 (NEON) */
     VECTOR_AVX2,     /* 4 doubles: all that a kernel needs of x86-64-v3 */
+    VECTOR_AVX512,   /* 8 doubles: all that a kernel needs of x86-64-v4; for kernels that gain by it */
     VECTOR_LEVEL_COUNT
 };
 

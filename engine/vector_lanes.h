@@ -14,7 +14,9 @@
 #include <immintrin.h>
 #endif
 
-#if defined(__AVX2__)
+#if defined(FW_KERNEL_AVX512)
+enum { VECTOR_LANES = 8 };
+#elif defined(__AVX2__)
 enum { VECTOR_LANES = 4 };
 #else
 enum { VECTOR_LANES = 2 };
@@ -40,10 +42,17 @@ static inline vector_double vector_of(double value)
     return value - (vector_double){0.0};
 }
 
+static inline vector_double vector_absolute(vector_double value)
+{
+    return (vector_double)((vector_bits)value & ~(vector_bits)vector_of(-0.0));
+}
+
 /* a > b ? a : b in every lane, and a < b ? a : b: where a is not a number, b. */
 static inline vector_double vector_larger(vector_double a, vector_double b)
 {
-#if defined(__AVX2__)
+#if defined(FW_KERNEL_AVX512)
+    return (vector_double)_mm512_max_pd((__m512d)a, (__m512d)b);
+#elif defined(__AVX2__)
     return (vector_double)_mm256_max_pd((__m256d)a, (__m256d)b);
 #elif defined(__SSE2__)
     return (vector_double)_mm_max_pd((__m128d)a, (__m128d)b);
@@ -55,7 +64,9 @@ static inline vector_double vector_larger(vector_double a, vector_double b)
 
 static inline vector_double vector_smaller(vector_double a, vector_double b)
 {
-#if defined(__AVX2__)
+#if defined(FW_KERNEL_AVX512)
+    return (vector_double)_mm512_min_pd((__m512d)a, (__m512d)b);
+#elif defined(__AVX2__)
     return (vector_double)_mm256_min_pd((__m256d)a, (__m256d)b);
 #elif defined(__SSE2__)
     return (vector_double)_mm_min_pd((__m128d)a, (__m128d)b);

@@ -13,8 +13,7 @@ static const double time_step_s = 60.0, interval_m = 130.0, slope = 0.0009;
 
 static bool set_level(struct dynamic_work *work, enum vector_level level)
 {
-    (void)work;
-    return level == VECTOR_BASELINE;
+    return dynamic_work_set_vectors(work, level) == level;
 }
 
 static double *take(double **room, size_t count)
