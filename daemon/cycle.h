@@ -16,8 +16,21 @@
  */
 struct cycle;
 
-/* Readings are kept (and loaded) for longer than the warm-up by what its alignment may take, and as much again. */
-enum { CYCLE_READINGS_BEYOND_WARM_UP_S = 12 * 3600 };
+enum { CYCLE_ALIGN_S = 6 * 3600 }; /* routing starts at these fixed instants, whatever was routed before */
+
+static inline int64_t cycle_aligned_utc_s(int64_t utc_s)
+{
+    return utc_s - utc_s % CYCLE_ALIGN_S;
+}
+
+/*
+ * Readings are kept (and loaded) from twelve hours before the routing's start on, and like it from a fixed instant: what the oldest of them
+ * says of those after it (a stretch that stands still, for one) then changes with the start, not from cycle to cycle.
+ */
+static inline int64_t cycle_readings_from_utc_s(const struct settings *settings, int64_t now_utc_s)
+{
+    return cycle_aligned_utc_s(now_utc_s - settings->warm_up_s) - INT64_C(12) * 3600;
+}
 
 FW_MUST_CHECK enum fw_status cycle_create(const struct settings *settings, struct cycle **cycle_out,
                                           struct fw_error *error);

@@ -87,8 +87,7 @@ enum fw_status cycle_collect(struct cycle *cycle, const struct news *news, int64
 {
     struct picture *next = delta->next;
     for (size_t gauge = 0; gauge < next->gauge_count; gauge++)
-        forget_old_readings(&next->gauges[gauge],
-                            now_utc_s - cycle->settings->warm_up_s - CYCLE_READINGS_BEYOND_WARM_UP_S);
+        forget_old_readings(&next->gauges[gauge], cycle_readings_from_utc_s(cycle->settings, now_utc_s));
     forget_settled_messages(next, now_utc_s - MESSAGES_KEPT_S);
 
     enum fw_status status = FW_OK;

@@ -249,8 +249,7 @@ static enum fw_status ready_the_coming_track(struct cycle *cycle, int64_t now_ut
 /* From where levels are looked at, for this pass's assessment. */
 static void look_back(struct cycle *cycle, int64_t now_utc_s, size_t step_count)
 {
-    int64_t from_utc_s = now_utc_s - CYCLE_LOOK_BACK_S;
-    from_utc_s -= from_utc_s % CYCLE_ALIGN_S;
+    int64_t from_utc_s = cycle_aligned_utc_s(now_utc_s - CYCLE_LOOK_BACK_S);
     const struct track *track = cycle->present;
     cycle->first_step = from_utc_s > track->start_utc_s ? steps_between(cycle, track->start_utc_s, from_utc_s) : 0;
     cycle->start_utc_s = track->start_utc_s + (int64_t)cycle->first_step * cycle->settings->time_step_s;
@@ -263,8 +262,7 @@ enum fw_status cycle_route(struct cycle *cycle, int64_t now_utc_s, const struct 
                            struct fw_error *error)
 {
     const struct settings *settings = cycle->settings;
-    int64_t earliest_utc_s = now_utc_s - settings->warm_up_s;
-    choose_track(cycle, earliest_utc_s - earliest_utc_s % CYCLE_ALIGN_S);
+    choose_track(cycle, cycle_aligned_utc_s(now_utc_s - settings->warm_up_s));
     size_t step_count = steps_between(cycle, cycle->present->start_utc_s, now_utc_s + settings->horizon_s);
     enum fw_status status = FW_OK;
     for (size_t gauge = 0; gauge < settings->gauge_count && status == FW_OK; gauge++)

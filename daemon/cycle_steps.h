@@ -12,7 +12,6 @@ enum {
     CYCLE_FUTURES = TRACK_FUTURES, /* members of a roughness group: three forecasts, two envelope edges */
     CYCLE_FORECASTS_MAX =
         8 * ASSUMED_FORECAST_COUNT, /* as many roughness factors as the settings take, times the futures */
-    CYCLE_ALIGN_S = 6 * 3600,       /* routing starts at these fixed instants, whatever was routed before */
     CYCLE_LOOK_BACK_S = 24 * 3600   /* how far before now levels are looked at, to such an instant */
 };
 

@@ -138,8 +138,8 @@ enum fw_status station_store_load(struct station *station, struct fw_error *erro
     if (status != FW_OK)
         return fw_error_set(error, status, "no memory for the picture");
     if (station->store != NULL)
-        status = store_load_picture(station->store, settings,
-                                    now - settings->warm_up_s - CYCLE_READINGS_BEYOND_WARM_UP_S, picture, error);
+        status =
+            store_load_picture(station->store, settings, cycle_readings_from_utc_s(settings, now), picture, error);
     if (status != FW_OK) {
         picture_destroy(picture);
         return status;
