@@ -28,7 +28,7 @@ struct river_case {
     struct flood flood;
     double duration_s, time_step_s;
     size_t cell_count;
-    bool is_for_storage_form; /* by the rule of engine/method.h, or nearly; else the full equations alone */
+    bool is_for_storage_form; /* too; else the full equations alone */
     size_t truth_cell_count;  /* of the fine grid that judges */
 };
 
