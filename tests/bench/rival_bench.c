@@ -55,9 +55,6 @@ static void choose_sides(struct match *match)
     match->engine[ASKED] = contest_cheapest_engine(contest, &match->goal[ASKED]);
     match->rival[NAMED_SAME_CELLS] = contest_cheapest_rival(contest, &match->goal[NAMED], river->cell_count);
     match->rival[NAMED_ANY_CELLS] = contest_cheapest_rival(contest, &match->goal[NAMED], 0);
-    if (match->rival[NAMED_SAME_CELLS].seconds > 0.0 &&
-        match->rival[NAMED_SAME_CELLS].seconds < match->rival[NAMED_ANY_CELLS].seconds)
-        match->rival[NAMED_ANY_CELLS] = match->rival[NAMED_SAME_CELLS];
     match->rival[ASKED_ANY] = contest_cheapest_rival(contest, &match->goal[ASKED], 0);
     match->rival[DAEMON_ANY] = contest_cheapest_rival(contest, &match->goal[DAEMON], 0);
 }
@@ -162,6 +159,13 @@ static bool measure_costs(struct match *match)
         match->rival_lone_s[i] = laps_total_s(&sides.rival_laps[i][0]);
     }
     clear_sides(&sides);
+    /* as many cells are some of any: what was chosen by a few runs, many runs may correct */
+    if (match->rival[NAMED_SAME_CELLS].seconds > 0.0 &&
+        match->rival_s[NAMED_SAME_CELLS] < match->rival_s[NAMED_ANY_CELLS]) {
+        match->rival[NAMED_ANY_CELLS] = match->rival[NAMED_SAME_CELLS];
+        match->rival_s[NAMED_ANY_CELLS] = match->rival_s[NAMED_SAME_CELLS];
+        match->rival_lone_s[NAMED_ANY_CELLS] = match->rival_lone_s[NAMED_SAME_CELLS];
+    }
     return is_well;
 }
 
