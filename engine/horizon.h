@@ -10,6 +10,8 @@
 
 #include <stddef.h>
 
+#include "engine/network.h"
+
 /*
  *   low_stage_m, high_stage_m  stages at step 0 .. count-1, stride doubles apart (members innermost): the first
  *                              value of each is its member's; which of the two lies above does not matter
@@ -18,5 +20,16 @@
  */
 double horizon_measured_until_s(size_t count, size_t stride, const double low_stage_m[], const double high_stage_m[],
                                 double step_s, double tolerance_m);
+
+/*
+ * The hard lower bound: before this nothing that begins at a reach's head can be felt at all length_m further down, since nothing runs faster
+ * than the characteristic u + sqrt(g A / B) of the full equations (Chow, Open-Channel Hydraulics (1959), sections 18-1, 20-4).
+ * It is far earlier than a level moves, and says nothing of when one does: a check on the estimate above, not in place of it.
+ *
+ *   flows  flow_count uniform flows, over all from the least in the reach now to the largest of the upper edge: where water leaves
+ *          the channel the fastest is within the range and not at its end
+ * 0 without a flow, or where one does not move.
+ */
+double horizon_not_felt_before_s(double length_m, size_t flow_count, const struct network_reach_flow flows[]);
 
 #endif

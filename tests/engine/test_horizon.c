@@ -73,6 +73,22 @@ static void a_wider_tolerance_never_shortens_the_horizon(void **state)
     }
 }
 
+/* A rectangle 3.7 m deep with 2.9 m/s: 2.9 + sqrt(9.80665 3.7) = 8.92359 m/s; a plain beside it slows the characteristic. */
+static void nothing_is_felt_before_the_fastest_characteristic(void **state)
+{
+    (void)state;
+    const struct network_reach_flow flows[] = {
+        {.discharge_m3s = 5.0 * 1.2 * 1.7, .top_width_m = 5.0, .velocity_m_s = 1.7},
+        {.discharge_m3s = 5.0 * 3.7 * 2.9, .top_width_m = 5.0, .velocity_m_s = 2.9},
+        {.discharge_m3s = 5.0 * 3.9 * 2.9, .top_width_m = 60.0, .velocity_m_s = 2.9}};
+    const double expected_s = 8920.0 / (2.9 + sqrt(9.80665 * 3.7));
+    assert_true(fabs(horizon_not_felt_before_s(8920.0, 3, flows) - expected_s) < 1e-9 * expected_s);
+    assert_true(fabs(expected_s - 999.6) < 0.1); /* by hand */
+    assert_true(horizon_not_felt_before_s(8920.0, 0, flows) == 0.0);
+    const struct network_reach_flow still[] = {flows[0], {.discharge_m3s = 0.0, .top_width_m = 5.0}};
+    assert_true(horizon_not_felt_before_s(8920.0, 2, still) == 0.0);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -80,6 +96,7 @@ int main(void)
         cmocka_unit_test(members_innermost_are_read_by_stride),
         cmocka_unit_test(nothing_routed_rests_on_nothing_measured),
         cmocka_unit_test(a_wider_tolerance_never_shortens_the_horizon),
+        cmocka_unit_test(nothing_is_felt_before_the_fastest_characteristic),
     };
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

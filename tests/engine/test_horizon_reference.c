@@ -20,7 +20,8 @@
 #include "tests/independent/full_flow.h"
 
 static const double TOLERANCE_M = 0.02;
-enum { LOW, HIGH, EDGES };
+static const double FELT_M = 1e-5;
+enum { LOW, HIGH, EDGES, FLOWS = 64 };
 
 struct river_case {
     const char *name;
@@ -128,7 +129,24 @@ static double fastest_at_s(const struct gamma_flood *flood, double sign, double 
 
 /* --- the judge and the engine --------------------------------------------------------------------------------------- */
 
-static double judged_horizon_s(const struct river_case *river, const struct edge edges[EDGES], double from_s)
+struct judged {
+    double horizon_s;
+    double felt_s; /* when the level first moves by FELT_M */
+};
+
+static double parting_s(const struct full_flow_result results[EDGES], double step_s, double tolerance_m)
+{
+    double before_m = 0.0;
+    for (size_t i = 0; i < results[LOW].count; i++) {
+        double apart_m = fabs(full_flow_depth_at(&results[HIGH], 0)[i] - full_flow_depth_at(&results[LOW], 0)[i]);
+        if (apart_m > tolerance_m)
+            return step_s * ((double)i - 1.0 + (tolerance_m - before_m) / (apart_m - before_m));
+        before_m = apart_m;
+    }
+    return INFINITY;
+}
+
+static struct judged judge(const struct river_case *river, const struct edge edges[EDGES], double from_s)
 {
     enum { OUTPUT_STEP_S = 15 };
     struct full_flow_result results[EDGES];
@@ -146,21 +164,17 @@ static double judged_horizon_s(const struct river_case *river, const struct edge
             fail_msg("%s: the judge failed", river->name);
         assert_true(fabs(results[i].imbalance) < 1e-9);
     }
-    double until_s = INFINITY, before_m = 0.0;
-    for (size_t i = 0; i < results[LOW].count && !isfinite(until_s); i++) {
-        double apart_m = fabs(full_flow_depth_at(&results[HIGH], 0)[i] - full_flow_depth_at(&results[LOW], 0)[i]);
-        if (apart_m > TOLERANCE_M)
-            until_s = OUTPUT_STEP_S * ((double)i - 1.0 + (TOLERANCE_M - before_m) / (apart_m - before_m));
-        before_m = apart_m;
-    }
+    const struct judged judged = {parting_s(results, OUTPUT_STEP_S, TOLERANCE_M) - from_s,
+                                  parting_s(results, OUTPUT_STEP_S, FELT_M) - from_s};
     full_flow_result_clear(&results[LOW]);
     full_flow_result_clear(&results[HIGH]);
-    return until_s - from_s;
+    return judged;
 }
 
 struct said {
     enum network_method method;
     double horizon_s, step_s;
+    double not_before_s;
 };
 
 static struct said engine_horizon(const struct river_case *river, const struct edge edges[EDGES], double from_s,
@@ -207,10 +221,20 @@ static struct said engine_horizon(const struct river_case *river, const struct e
             flows[step * EDGES + edge] = edge_m3s((double)step * step_s, &edges[edge]);
     assert_int_equal(network_start_steady(network, flows), FW_OK);
     assert_int_equal(network_advance_with_stage(network, count, flows, point_m3s, stage_m), FW_OK);
+    struct network_reach_steps steps;
+    struct network_reach_flow uniform[FLOWS];
+    double range_m3s[FLOWS];
+    for (size_t i = 0; i < FLOWS;
+         i++) /* from the base to what the upper edge has come to after the judge's whole run */
+        range_m3s[i] = river->flood.base_m3s *
+                       pow(edge_m3s(from_s + 3600.0 * river->ahead_h, &edges[HIGH]) / river->flood.base_m3s,
+                           (double)i / (FLOWS - 1));
+    assert_int_equal(network_reach_summary(network, 0, 1.0, FLOWS, range_m3s, &steps, uniform), FW_OK);
     double until_s = horizon_measured_until_s(count + 1, EDGES, stage_m + LOW, stage_m + HIGH, step_s, TOLERANCE_M);
     network_destroy(network);
     free(flows);
-    return (struct said){choice.method, until_s - from_s, step_s};
+    return (struct said){choice.method, until_s - from_s, step_s,
+                         horizon_not_felt_before_s(river->length_m, FLOWS, uniform)};
 }
 
 /* --- held against each other ------------------------------------------------------------------------------------------ */
@@ -220,7 +244,8 @@ static void the_horizon_is_the_judges_and_never_a_step_later(void **state)
     (void)state;
     static const char *const when[] = {"rise", "peak", "fall"};
     size_t faults = 0;
-    print_message("%-64s %5s %9s %8s %7s %6s\n", "river", "t0", "judge/min", "engine", "off", "%");
+    print_message("%-64s %5s %9s %8s %7s %6s %6s %6s\n", "river", "t0", "judge/min", "engine", "off", "%", "bound",
+                  "felt");
     for (size_t i = 0; i < sizeof rivers / sizeof *rivers; i++) {
         const struct river_case *river = &rivers[i];
         double rise_m3s2, fall_m3s2;
@@ -233,16 +258,20 @@ static void the_horizon_is_the_judges_and_never_a_step_later(void **state)
         for (size_t k = 0; k < 3; k++) {
             const struct edge edges[EDGES] = {
                 [LOW] = {&river->flood, from_s[k], -fall_m3s2}, [HIGH] = {&river->flood, from_s[k], rise_m3s2}};
-            double truth_s = judged_horizon_s(river, edges, from_s[k]);
+            const struct judged judged = judge(river, edges, from_s[k]);
+            double truth_s = judged.horizon_s;
             struct said said = engine_horizon(river, edges, from_s[k], step_s);
             double off_s = said.horizon_s - truth_s;
             bool is_full = network_method_is_full(said.method);
             double allowed_s = is_full ? fmax(180.0, 0.03 * truth_s) : 0.10 * truth_s;
-            print_message("%-64s %5s %9.2f %8.2f %+7.2f %+6.1f%s\n", k == 0 ? river->name : "", when[k],
+            print_message("%-64s %5s %9.2f %8.2f %+7.2f %+6.1f %6.1f %6.1f%s\n", k == 0 ? river->name : "", when[k],
                           truth_s / 60.0, said.horizon_s / 60.0, off_s / 60.0, 100.0 * off_s / truth_s,
-                          is_full ? "  full" : "");
+                          said.not_before_s / 60.0, judged.felt_s / 60.0, is_full ? "  full" : "");
             assert_true(isfinite(truth_s) && truth_s > 10.0 * step_s);
             assert_int_equal(said.method, river->method);
+            /* the bound bounds: nothing is felt before it, in the judge or here */
+            assert_true(said.not_before_s > 0.0 && said.not_before_s <= judged.felt_s);
+            assert_true(said.not_before_s <= said.horizon_s);
             faults += fabs(off_s) <= allowed_s && off_s <= said.step_s ? 0 : 1;
         }
     }
