@@ -47,9 +47,9 @@ void bench_measure_triads(struct engine_bench *bench)
         }
 }
 
-double bench_widest_triad_ns(const struct engine_bench *bench)
+double bench_widest_triad_ns(const struct engine_bench *bench, enum vector_level most)
 {
-    return bench->triad_ns[vector_level_widest()];
+    return bench->triad_ns[vector_level_widest() < most ? vector_level_widest() : most];
 }
 
 const char *bench_verdict_below(double value, double floor, double aim)

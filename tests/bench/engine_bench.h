@@ -18,7 +18,10 @@ struct engine_bench {
 extern const struct section bench_channel;
 
 void bench_measure_triads(struct engine_bench *bench);
-double bench_widest_triad_ns(const struct engine_bench *bench);
+/* At the widest level that the processor and a kernel have. */
+double bench_widest_triad_ns(const struct engine_bench *bench, enum vector_level most);
+#define BENCH_STORAGE_WIDEST VECTOR_AVX2 /* engine/muskingum_cunge.h */
+#define BENCH_FULL_WIDEST VECTOR_AVX512
 
 bool bench_storage(struct engine_bench *bench);
 bool bench_full(struct engine_bench *bench);

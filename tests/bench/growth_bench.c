@@ -77,6 +77,10 @@ bool bench_growth(struct engine_bench *bench)
            "tributary)\n");
     bench_measure_triads(bench);
     for (size_t i = 0; i < GROWTHS && is_well; i++)
-        is_well = print_growth(&growths[i], bench_widest_triad_ns(bench), bench->is_smoke);
+        is_well =
+            print_growth(&growths[i],
+                         bench_widest_triad_ns(bench, growths[i].method == NETWORK_DYNAMIC ? BENCH_FULL_WIDEST
+                                                                                           : BENCH_STORAGE_WIDEST),
+                         bench->is_smoke);
     return is_well;
 }

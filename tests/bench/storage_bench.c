@@ -129,13 +129,13 @@ struct level_kernels {
 
 static void measure_levels(struct storage *storage, int rounds, struct level_kernels kernels[VECTOR_LEVEL_COUNT])
 {
-    for (int level = 0; level <= VECTOR_AVX2; level++) {
+    for (int level = 0; level <= BENCH_STORAGE_WIDEST; level++) {
         kernels[level].single = (struct kernel){(enum vector_level)level, true, 32, 0, 1e9};
         for (size_t i = 0; i < COUNTS; i++)
             kernels[level].by_members[i] = (struct kernel){(enum vector_level)level, false, member_counts[i], 0, 1e9};
     }
     for (int round = 0; round < rounds; round++)
-        for (int level = 0; level <= VECTOR_AVX2; level++) {
+        for (int level = 0; level <= BENCH_STORAGE_WIDEST; level++) {
             if (!vector_level_is_present((enum vector_level)level))
                 continue;
             measure_stretch(storage, &kernels[level].single);
@@ -225,7 +225,7 @@ static bool print_thousand(const struct engine_bench *bench)
         "  %zu members x %d cells x %g h at %g s through the network, %zu groups: %.3f s of one core, %.2f ns, %.1f "
         "triads; tables %.1f ms\n",
         members, CELLS, (double)setup.step_count * time_step_s / 3600.0, time_step_s, setup.group_count, seconds, ns,
-        ns / bench_widest_triad_ns(bench), 1e3 * run.create_s);
+        ns / bench_widest_triad_ns(bench, BENCH_STORAGE_WIDEST), 1e3 * run.create_s);
     network_run_clear(&run);
     return seconds > 0.0;
 }
@@ -241,7 +241,7 @@ bool bench_storage(struct engine_bench *bench)
     bench_measure_triads(bench);
     printf("\nStorage form: one step of one reach of %d cells; per member-cell-step\n", CELLS);
     printf("  %-10s %8s %8s %8s\n", "vectors", "members", "ns", "triads");
-    for (int level = 0; level <= VECTOR_AVX2; level++)
+    for (int level = 0; level <= BENCH_STORAGE_WIDEST; level++)
         if (vector_level_is_present((enum vector_level)level))
             print_level(&kernels[level], (enum vector_level)level, bench->triad_ns[level]);
     struct single_figures figures = measure_single_precision(&storage);
