@@ -41,8 +41,14 @@ static void fill_inflow(struct network_run *run)
         struct flood flood = flood_of_member(&setup->flood, member);
         for (size_t step = 0; step <= setup->step_count; step++) {
             double flow = flood_m3s(setup->time_step_s * (double)step, &flood) / (double)run->gauge_count;
-            for (size_t gauge = 0; gauge < run->gauge_count; gauge++)
-                run->inflow_m3s[(gauge * (setup->step_count + 1) + step) * members + member] = flow;
+            for (size_t gauge = 0; gauge < run->gauge_count; gauge++) {
+                if (run->gauge_count == 1)
+                    run->inflow_m3s[step * members + member] = flow;
+                if (run->gauge_count > 1 && step > 0)
+                    run->inflow_m3s[(((step - 1) * run->gauge_count + gauge) * 2 + 1) * members + member] = flow;
+                if (run->gauge_count > 1 && step < setup->step_count)
+                    run->inflow_m3s[((step * run->gauge_count + gauge) * 2) * members + member] = flow;
+            }
         }
     }
 }
@@ -59,7 +65,7 @@ bool network_run_init(struct network_run *run, const struct network_run_setup *s
     if (run->reaches == NULL || run->gauge_node == NULL || run->gauge_floods == NULL || run->factors == NULL)
         goto failed;
     lay_reaches(run);
-    run->inflow_m3s = calloc(run->gauge_count * values, sizeof *run->inflow_m3s);
+    run->inflow_m3s = calloc(2 * run->gauge_count * values, sizeof *run->inflow_m3s);
     run->first_m3s = calloc(run->gauge_count * setup->group_count * setup->members_per_group, sizeof *run->first_m3s);
     run->outflow_m3s = calloc(values, sizeof *run->outflow_m3s);
     if (run->inflow_m3s == NULL || run->first_m3s == NULL || run->outflow_m3s == NULL)
@@ -111,21 +117,21 @@ void network_run_clear(struct network_run *run)
     memset(run, 0, sizeof *run);
 }
 
-/* Steps that take a fraction of a millisecond. The arrays of one gauge and one point may be taken piece by piece; of
- * more gauges, only whole. */
+/* Steps that take a fraction of a millisecond; of several gauges, whose arrays are laid out for it, one. */
 static size_t steps_of_a_lap(const struct network_run *run)
 {
     size_t values = run->setup.group_count * run->setup.members_per_group * network_cell_count(run->network, 0);
     size_t wanted = network_method_is_full(run->setup.method) ? VALUES_OF_A_FULL_LAP : VALUES_OF_A_LAP;
     size_t fewest = 1 + run->setup.step_count / (MOST_LAPS - 1);
-    return run->gauge_count > 1 ? run->setup.step_count : wanted / values > fewest ? wanted / values : fewest;
+    return run->gauge_count > 1 ? 1 : wanted / values > fewest ? wanted / values : fewest;
 }
 
 bool network_run_advance(struct network_run *run, struct laps *laps)
 {
     size_t members = run->setup.group_count * run->setup.members_per_group, steps = run->setup.step_count;
+    size_t of_a_step = run->gauge_count > 1 ? 2 * run->gauge_count * members : members;
     for (size_t gauge = 0; gauge < run->gauge_count; gauge++)
-        memcpy(run->first_m3s + gauge * members, run->inflow_m3s + gauge * (steps + 1) * members,
+        memcpy(run->first_m3s + gauge * members, run->inflow_m3s + 2 * gauge * members,
                members * sizeof *run->first_m3s);
     if (network_start_steady(run->network, run->first_m3s) != FW_OK)
         return false;
@@ -133,7 +139,7 @@ bool network_run_advance(struct network_run *run, struct laps *laps)
     laps_start(laps);
     for (size_t at = 0; at < steps; at += piece) {
         size_t count = piece < steps - at ? piece : steps - at;
-        if (network_advance(run->network, count, run->inflow_m3s + at * members, run->outflow_m3s + at * members) !=
+        if (network_advance(run->network, count, run->inflow_m3s + at * of_a_step, run->outflow_m3s + at * members) !=
             FW_OK)
             return false;
         laps_mark(laps);

@@ -27,7 +27,8 @@ struct network_run {
     size_t *gauge_node;
     size_t gauge_count;
     struct method_flood *gauge_floods;
-    double *factors, *inflow_m3s;
+    double *factors;
+    double *inflow_m3s;  /* [step][member]; of several gauges [step][gauge][before and after it][member] */
     double *first_m3s;   /* [gauge][member] */
     double *outflow_m3s; /* [step, 0 the present][member] */
     struct network_river river;
