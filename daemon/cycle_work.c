@@ -6,47 +6,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-/* The largest flow the tables are built for: every gauge at the top of its believed range, side water added. */
-static double largest_discharge_m3s(const struct settings *settings, bool is_at_highest_gauging)
-{
-    double total = 0.0;
-    for (size_t index = 0; index < settings->gauge_count; index++) {
-        const struct settings_gauge *gauge = &settings->gauges[index];
-        if (gauge->gives_level_only ||
-            network_gauge_is_inner(&settings->river, index)) /* no more water comes there */
-            continue;
-        double value = gauge->quality.highest;
-        if (gauge->measures == SETTINGS_STAGE && is_at_highest_gauging && isfinite(gauge->rating.highest_gauged_m))
-            value = gauge->rating.highest_gauged_m;
-        if (!isfinite(value))
-            value = gauge->measures == SETTINGS_STAGE ? 10.0 : 1000.0;
-        total += cycle_quantity_discharge(gauge, value);
-    }
-    double with_side_water = total;
-    for (size_t side = 0; side < settings->river.side_inflow_count; side++) {
-        const struct network_side_inflow *inflow = &settings->river.side_inflows[side];
-        with_side_water += inflow->share_of_gauge == NETWORK_NONE ? inflow->constant_m3s : inflow->share * total;
-    }
-    return with_side_water;
-}
-
-static enum fw_status create_network(const struct settings *settings, const struct network_river *river,
-                                     struct network **network_out, struct fw_error *error)
-{
-    struct network_options options = {
-        .time_step_s = (double)settings->time_step_s,
-        .group_count = settings->roughness_factor_count,
-        .roughness_factors = settings->roughness_factors,
-        .members_per_group = CYCLE_FUTURES,
-        .largest_discharge_m3s = largest_discharge_m3s(settings, false),
-        .typical_peak_m3s = largest_discharge_m3s(settings, true),
-    };
-    struct network_fault fault = {{0}};
-    enum fw_status status = network_create(river, &options, network_out, &fault);
-    if (status != FW_OK)
-        return fw_error_set(error, status, "%s: %s", settings->file, fault.text[0] ? fault.text : "no memory");
-    return FW_OK;
-}
+#include "daemon/forecast_network.h"
 
 static enum fw_status allocate_work_space(struct cycle *cycle)
 {
@@ -92,7 +52,7 @@ enum fw_status cycle_take_season(struct cycle *cycle, int64_t now_utc_s, struct 
     struct cycle fresh = {.network = NULL}; /* of which only these four are used */
     enum fw_status status = season_river_make(settings, season_day(settings, now_utc_s), &fresh.season);
     if (status == FW_OK)
-        status = create_network(settings, &fresh.season.river, &fresh.network, error);
+        status = forecast_network_create(settings, &fresh.season.river, CYCLE_FUTURES, &fresh.network, error);
     if (status == FW_OK)
         status = track_create(settings, fresh.network, cycle->step_capacity, &fresh.present);
     if (status == FW_OK)

@@ -75,20 +75,41 @@ double method_diffusion_number(double rise_s, double slope_m_per_m, double depth
     return rise_s * slope_m_per_m * sqrt(SECTION_GRAVITY_M_S2 / depth_m);
 }
 
+struct method_flood method_flood_of(size_t count, const double time_s[], const double discharge_m3s[])
+{
+    struct method_flood flood = {discharge_m3s[0], discharge_m3s[0], INFINITY};
+    double lowest_m3s = discharge_m3s[0], steepest_m3s2 = 0.0;
+    for (size_t i = 1; i < count; i++) {
+        double rise_m3s = discharge_m3s[i] - discharge_m3s[i - 1];
+        steepest_m3s2 = fmax(steepest_m3s2, rise_m3s / (time_s[i] - time_s[i - 1]));
+        lowest_m3s = fmin(lowest_m3s, discharge_m3s[i]);
+        if (discharge_m3s[i] > flood.peak_m3s) {
+            flood.peak_m3s = discharge_m3s[i];
+            flood.base_m3s = lowest_m3s;
+        }
+    }
+    if (flood.peak_m3s > flood.base_m3s)
+        flood.rise_s = (flood.peak_m3s - flood.base_m3s) / steepest_m3s2;
+    return flood;
+}
+
 double method_time_step_s(const struct method_flood *flood, double data_interval_s)
 {
     double longest = longest_step_s;
-    if (flood != NULL && flood->peak_m3s > 0.0)
+    if (flood != NULL && flood->rise_s > 0.0)
         longest = fmin(longest, flood->rise_s / steps_in_a_rise);
-    double step = fmax(1.0, floor(longest));
-    while (step > 1.0 && fmod(data_interval_s, step) != 0.0)
-        step -= 1.0;
-    return step;
+    double whole_s = fmax(1.0, floor(longest));
+    while (whole_s > 0.5 * longest && fmod(data_interval_s, whole_s) != 0.0)
+        whole_s -= 1.0;
+    return whole_s > 0.5 * longest ? whole_s : data_interval_s / ceil(data_interval_s / fmax(1.0, longest));
 }
 
 /* --- the choice --------------------------------------------------------------------------------------------------- */
 
-/* The storage number of one part of the range of flows, by the chords of its curve: celerity jumps at bank full. */
+/*
+ * The storage number of one part of the range of flows, by the chords of its curve: celerity jumps at bank full. The parts
+ * have equal weight, as a flood spends its rise in all of them; a wave that just touches its plain is hardly slowed by it.
+ */
 static void number_of_part(const struct method_reach *reach, const struct method_flood *flood, double low_m3s,
                            double high_m3s, struct method_choice *choice)
 {
@@ -108,12 +129,13 @@ static void number_of_part(const struct method_reach *reach, const struct method
         choice->early_number = early_number;
         choice->early_s = early_s;
     }
-    double number = method_storage_number(reach->length_m, celerity, diffusivity, flood->rise_s);
-    if (number <= choice->storage_number)
+    double number = method_storage_number(choice->path_length_m, celerity, diffusivity, flood->rise_s);
+    choice->storage_number += number / RANGE_PARTS;
+    if (!(number > choice->worst_number))
         return;
-    choice->storage_number = number;
+    choice->worst_number = number;
     choice->spread_number = diffusivity / (celerity * celerity * flood->rise_s);
-    choice->length_number = reach->length_m / (celerity * flood->rise_s);
+    choice->length_number = choice->path_length_m / (celerity * flood->rise_s);
     choice->at_discharge_m3s = middle_m3s;
 }
 
@@ -122,9 +144,10 @@ static void numbers_of_range(const struct method_reach *reach, const struct meth
 {
     double from_m3s = fmax(flood->base_m3s, smallest_share * flood->peak_m3s);
     double part_m3s = (flood->peak_m3s - from_m3s) / RANGE_PARTS;
-    choice->storage_number = 0.0;
+    choice->storage_number = choice->worst_number = choice->spread_number = choice->length_number = 0.0;
     choice->early_s = choice->early_number = 0.0;
-    for (int part = 0; part < RANGE_PARTS; part++)
+    choice->at_discharge_m3s = flood->peak_m3s;
+    for (int part = 0; part < RANGE_PARTS && part_m3s > 0.0; part++)
         number_of_part(reach, flood, from_m3s + part * part_m3s, from_m3s + (part + 1) * part_m3s, choice);
 }
 
@@ -155,9 +178,9 @@ static enum method_reason reason_for(const struct method_reach *reach, const str
         return METHOD_HELD_LEVEL;
     if (reach->has_structure)
         return METHOD_STRUCTURE;
-    if (!(choice->flood.peak_m3s > 0.0))
+    if (!(choice->flood.rise_s > 0.0))
         return METHOD_NO_FLOOD;
-    bool is_peak_right = choice->storage_number < METHOD_STORAGE_LIMIT;
+    bool is_peak_right = !(choice->storage_number >= METHOD_STORAGE_LIMIT);
     if (is_peak_right && !(choice->early_number > 1.0) && !is_raised)
         return METHOD_WITHIN_LIMIT;
     if (choice->froude > METHOD_FROUDE_LIMIT)
@@ -172,6 +195,7 @@ void method_choose(const struct method_reach *reach, const struct method_flood *
 {
     *choice_out = (struct method_choice){.flood = *flood,
                                          .storage_number = NAN,
+                                         .worst_number = NAN,
                                          .spread_number = NAN,
                                          .length_number = NAN,
                                          .at_discharge_m3s = NAN,
@@ -181,8 +205,9 @@ void method_choose(const struct method_reach *reach, const struct method_flood *
                                          .diffusion_length_m = NAN,
                                          .kinematic_number = NAN,
                                          .diffusion_number = NAN,
+                                         .path_length_m = fmax(reach->path_length_m, reach->length_m),
                                          .raise_share = reach->raise_share};
-    if (flood->peak_m3s > 0.0) {
+    if (flood->rise_s > 0.0 && flood->peak_m3s > 0.0) {
         numbers_of_range(reach, flood, choice_out);
         numbers_at_peak(reach, flood, choice_out);
     }

@@ -1,12 +1,13 @@
 /* SPDX-License-Identifier: MIT */
 /*
  * Which method a reach is computed with: what the methods are called, and which is fit for a reach and a flood.
- * Two numbers without units decide, at the flows from the flood's base to its peak:
+ * Two numbers without units decide, taken over the flows from the flood's base to its peak:
  *     eps = D / (c^2 T)   the time a wave needs to spread by itself, against its rise
  *     lam = L / (c T)     how long the reach is, against the rise
  * with the celerity c, the hydraulic diffusivity D, the reach length L and the rise time T = (Qpeak - Qbase) / max(dQ/dt). The
- * storage form's peak stays within 1 % of the full equations' while eps^1.5 lam < METHOD_STORAGE_LIMIT; beyond, it
- * comes out late and low. The number is the project's own, found on random reaches.
+ * storage form's peak stays within 1 % of the full equations' while the mean of eps^1.5 lam < METHOD_STORAGE_LIMIT; beyond, it
+ * comes out late and low. The number is the project's own, found on random reaches. As errors add up on the way, L is the
+ * length of the whole path through the reach: a river cut into many reaches is computed as the uncut one.
  * On a rise water stands below the normal stage of its flow (Jones 1916): the storage form's levels, which are normal stages,
  * are reached D/c^2 early. Where that is more than a minute and a hundredth of the travel time the full equations are chosen.
  * The published applicability limits of simplified waves are of the same kind and are given beside it: Ponce, Li and
@@ -34,18 +35,19 @@ const char *method_name(enum network_method method);
 /* False, and nothing written, for any other word. */
 bool method_from_name(const char *name, enum network_method *method_out);
 
-struct method_flood { /* the severest flood that the choice must be right for; peak_m3s 0: none is known */
+struct method_flood { /* the severest flood that the choice must be right for */
     double base_m3s, peak_m3s;
-    double rise_s; /* (peak - base) / steepest rise */
+    double rise_s; /* (peak - base) / steepest rise; INFINITY: the flow is steady; 0: no flood is known */
 };
 
 struct method_reach {
     const struct flow_curve *curve;
     double length_m, slope_m_per_m;
-    bool is_level_held; /* at its foot: an outlet's level */
-    bool has_structure; /* at its foot, or a drop of the bed */
-    bool has_control;   /* what raises the level at its foot is computed by the full equations */
-    double raise_share; /* of the depth at its foot above normal, by normal depth, at the flow where it is most */
+    double path_length_m; /* of the longest way through it from a head to the outlet; length_m if it is less */
+    bool is_level_held;   /* at its foot: an outlet's level */
+    bool has_structure;   /* at its foot, or a drop of the bed */
+    bool has_control;     /* what raises the level at its foot is computed by the full equations */
+    double raise_share;   /* of the depth at its foot above normal, by normal depth, at the flow where it is most */
 };
 
 enum method_reason {
@@ -67,13 +69,15 @@ struct method_choice {
     enum method_reason reason;
     enum network_method advised; /* by the rule; another than method only where that is stated */
     struct method_flood flood;   /* at this reach */
-    /* the worst of the flood's range; all NAN where no flood is known */
-    double storage_number; /* eps^1.5 lam, against METHOD_STORAGE_LIMIT */
+    /* all NAN where no flood is known */
+    double storage_number; /* eps^1.5 lam, mean over the flood's flows, against METHOD_STORAGE_LIMIT */
+    double worst_number;   /* the worst of its range */
     double spread_number;  /* eps there */
-    double length_number;  /* lam there */
+    double length_number;  /* lam there, of the path */
     double at_discharge_m3s;
-    double early_s;      /* D/c^2, where it is most against what is allowed: normal stages come so much early */
-    double early_number; /* against 1 */
+    double early_s;       /* D/c^2, where it is most against what is allowed: normal stages come so much early */
+    double early_number;  /* against 1 */
+    double path_length_m; /* as given, or the reach's */
     /* at the peak */
     double froude;
     double diffusion_length_m; /* D/c; cells of the full equations are at most twice as long */
@@ -102,8 +106,14 @@ double method_kinematic_number(double rise_s, double slope_m_per_m, double veloc
 double method_diffusion_number(double rise_s, double slope_m_per_m, double depth_m);
 
 /*
- * The longest time step, in whole seconds, of which data_interval_s is a multiple and which is neither above a minute
- * nor a fortieth of the flood's rise; at least 1 s. No flood known: as for a slow one.
+ * The flood in a series of at least one flow: from its lowest flow before the peak, with its steepest rise from one to the
+ * next. Times rise.
+ */
+struct method_flood method_flood_of(size_t count, const double time_s[], const double discharge_m3s[]);
+
+/*
+ * The longest time step of which data_interval_s is a multiple and which is neither above a minute nor a fortieth of the
+ * flood's rise, but at least 1 s: in whole seconds, unless that would halve it. No flood known: as for a slow one.
  */
 double method_time_step_s(const struct method_flood *flood, double data_interval_s);
 

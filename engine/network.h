@@ -174,7 +174,7 @@ struct network_options {
     double largest_discharge_m3s; /* the tables reach several octaves above it */
     double typical_peak_m3s; /* where no flood is known cells are sized by the celerity at this flow; 0: largest */
     /*
-     * Per gauge, the flood that NETWORK_AUTO must be right for; NULL, or one with a peak of 0: none is known, AUTO is
+     * Per gauge, the flood that NETWORK_AUTO must be right for; NULL, or one with a rise of 0: none is known, AUTO is
      * then the storage form (the full equations where a level is held). A reach's flood is the sum of those above it, side
      * inflow shares included, with the shortest of their rises.
      */

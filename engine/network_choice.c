@@ -32,38 +32,61 @@ static void add_sides(const struct network_river *river, const struct network_op
             continue;
         flood->base_m3s += side->constant_m3s;
         flood->peak_m3s += side->constant_m3s;
-        if (side->share_of_gauge != NETWORK_NONE && options->gauge_floods[side->share_of_gauge].peak_m3s > 0.0)
+        if (side->share_of_gauge != NETWORK_NONE && options->gauge_floods[side->share_of_gauge].rise_s > 0.0)
             add_flood(flood, &options->gauge_floods[side->share_of_gauge], side->share);
     }
 }
 
-/* Of all reaches, in their order; a reach below a gauge whose flood is not known gets none. */
-static void gather_floods(struct network *network, const struct network_options *options)
+static const struct method_flood unknown_flood = {0.0, 0.0, 0.0};
+
+/* At the head of a reach: the gauge's, which knows the water from above, if it is known; else the sum of what flows in. */
+static struct method_flood head_flood(const struct network *network, const struct network_options *options,
+                                      size_t reach_index)
 {
     const struct network_river *river = &network->river;
-    for (size_t i = 0; i < river->reach_count; i++)
-        network->choices[i].flood = (struct method_flood){0.0, 0.0, INFINITY};
-    if (options->gauge_floods == NULL)
-        return;
-    for (size_t i = 0; i < river->reach_count; i++) {
+    size_t node = river->reaches[reach_index].from_node;
+    size_t gauge = network_gauge_at(river, node);
+    struct method_flood sum = {0.0, 0.0, INFINITY};
+    if (gauge != NETWORK_NONE && (options->gauge_floods[gauge].rise_s > 0.0 || !network_gauge_is_inner(river, gauge)))
+        return options->gauge_floods[gauge];
+    for (size_t above = 0; above < river->reach_count; above++)
+        if (river->reaches[above].to_node == node)
+            add_flood(&sum, &network->choices[above].flood, 1.0);
+    return sum.rise_s > 0.0 ? sum : unknown_flood; /* one that is not known makes the sum so */
+}
+
+static void gather_floods(struct network *network, const struct network_options *options)
+{
+    for (size_t i = 0; i < network->river.reach_count; i++) {
         size_t reach = network->order[i];
         struct method_flood *flood = &network->choices[reach].flood;
-        size_t gauge = network_gauge_at(river, river->reaches[reach].from_node);
-        if (gauge != NETWORK_NONE && network_gauge_is_inner(river, gauge) &&
-            !(options->gauge_floods[gauge].peak_m3s > 0.0))
-            gauge = NETWORK_NONE; /* its own flood is not known: what comes from above */
-        bool is_known = gauge == NETWORK_NONE || options->gauge_floods[gauge].peak_m3s > 0.0;
-        if (gauge != NETWORK_NONE) /* a gauge in mid-river knows the water from above */
-            *flood = options->gauge_floods[gauge];
-        for (size_t above = 0; gauge == NETWORK_NONE && above < river->reach_count; above++)
-            if (river->reaches[above].to_node == river->reaches[reach].from_node) {
-                is_known = is_known && network->choices[above].flood.peak_m3s > 0.0;
-                add_flood(flood, &network->choices[above].flood, 1.0);
-            }
-        if (is_known)
-            add_sides(river, options, reach, flood);
-        else
-            *flood = (struct method_flood){0.0, 0.0, INFINITY};
+        *flood = options->gauge_floods != NULL ? head_flood(network, options, reach) : unknown_flood;
+        if (flood->rise_s > 0.0)
+            add_sides(&network->river, options, reach, flood);
+    }
+}
+
+/* --- paths -------------------------------------------------------------------------------------------------------- */
+
+/* From the head that is farthest upstream to the outlet; what a gauge in mid-river will say later comes down all of it too. */
+static void measure_paths(struct network *network)
+{
+    const struct network_river *river = &network->river;
+    struct method_choice *choices = network->choices;
+    for (size_t i = 0; i < river->reach_count; i++) { /* down to each foot */
+        size_t reach = network->order[i];
+        size_t node = river->reaches[reach].from_node;
+        double longest_m = 0.0;
+        for (size_t above = 0; above < river->reach_count; above++)
+            if (river->reaches[above].to_node == node)
+                longest_m = fmax(longest_m, choices[above].path_length_m);
+        choices[reach].path_length_m = longest_m + river->reaches[reach].length_m;
+    }
+    for (size_t i = river->reach_count; i-- > 0;) { /* and what is below */
+        size_t reach = network->order[i];
+        for (size_t below = network_reach_from(river, river->reaches[reach].to_node); below != NETWORK_NONE;
+             below = network_reach_from(river, river->reaches[below].to_node))
+            choices[reach].path_length_m += river->reaches[below].length_m;
     }
 }
 
@@ -118,6 +141,7 @@ enum fw_status network_choose_methods(struct network *network, const struct netw
     if (levels == NULL)
         return FW_NO_MEMORY;
     gather_floods(network, options);
+    measure_paths(network);
     for (size_t i = river->reach_count; i-- > 0;) {
         size_t reach = network->order[i];
         struct network_reach *source = &network->river_reaches[reach];
@@ -129,6 +153,7 @@ enum fw_status network_choose_methods(struct network *network, const struct netw
             .slope_m_per_m = source->slope_m_per_m,
             .is_level_held = network_reach_has_held_foot(source),
             .has_structure = network_reach_has_control(source),
+            .path_length_m = network->choices[reach].path_length_m,
             .has_control = below != NETWORK_NONE && network_method_is_full(river->reaches[below].method),
             .raise_share = follow_levels(network, reach, levels),
         };

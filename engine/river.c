@@ -178,23 +178,23 @@ static enum fw_status check_point(const struct network_river *river, size_t poin
     return check_stage_rating(point, fault_out);
 }
 
-/* Every gauge's flood, where any is stated; a peak of 0 says that this one's is not known. */
+/* Every gauge's flood, where any is stated; a rise of 0 says that this one's is not known. */
 static enum fw_status check_floods(const struct network_river *river, const struct network_options *options,
                                    struct network_fault *fault_out)
 {
     for (size_t i = 0; options->gauge_floods != NULL && i < river->gauge_count; i++) {
         const struct method_flood *flood = &options->gauge_floods[i];
-        if (flood->peak_m3s == 0.0)
+        if (!(flood->rise_s >= 0.0)) /* endless: steady */
+            return fault(fault_out, "gauge_floods[%zu]: rise_s %g: expected more than 0, or 0 (not known)", i,
+                         flood->rise_s);
+        if (flood->rise_s == 0.0)
             continue;
-        if (!is_positive(flood->peak_m3s) || flood->peak_m3s > options->largest_discharge_m3s)
-            return fault(fault_out,
-                         "gauge_floods[%zu]: peak_m3s %g: expected 0 (not known) to largest_discharge_m3s %g", i,
+        if (!is_not_negative(flood->peak_m3s) || flood->peak_m3s > options->largest_discharge_m3s)
+            return fault(fault_out, "gauge_floods[%zu]: peak_m3s %g: expected 0 to largest_discharge_m3s %g", i,
                          flood->peak_m3s, options->largest_discharge_m3s);
-        if (!is_not_negative(flood->base_m3s) || flood->base_m3s >= flood->peak_m3s)
-            return fault(fault_out, "gauge_floods[%zu]: base_m3s %g: expected 0 or more, below the peak %g", i,
-                         flood->base_m3s, flood->peak_m3s);
-        if (!is_positive(flood->rise_s))
-            return fault(fault_out, "gauge_floods[%zu]: rise_s %g: expected more than 0", i, flood->rise_s);
+        if (!is_not_negative(flood->base_m3s) || flood->base_m3s > flood->peak_m3s)
+            return fault(fault_out, "gauge_floods[%zu]: base_m3s %g: expected 0 to the peak %g", i, flood->base_m3s,
+                         flood->peak_m3s);
     }
     return FW_OK;
 }

@@ -47,6 +47,18 @@ static void find_survey_top(struct routed_reach *reach)
     reach->survey_conveyance_m3s = at_top.conveyance_m3s;
 }
 
+/* Of all flows of a flood; 0 where it is not known or steady. */
+static double mean_celerity_m_s(const struct routed_reach *reach, const struct method_flood *flood)
+{
+    double root_slope = sqrt(reach->source->slope_m_per_m);
+    struct flow_curve_place base, peak;
+    if (!(flood->rise_s > 0.0 && flood->base_m3s < flood->peak_m3s))
+        return 0.0;
+    flow_curve_at(&reach->curve, flood->base_m3s / root_slope, &base);
+    flow_curve_at(&reach->curve, flood->peak_m3s / root_slope, &peak);
+    return (flood->peak_m3s - flood->base_m3s) / (peak.area_m2 - base.area_m2);
+}
+
 static size_t choose_cell_count(struct routed_reach *reach, const struct method_flood *flood,
                                 const struct network_options *options)
 {
@@ -64,7 +76,7 @@ static size_t choose_cell_count(struct routed_reach *reach, const struct method_
         return options->fixed_cell_count;
     if (source->cell_m > 0.0)
         return (size_t)fmax(1.0, round(source->length_m / source->cell_m));
-    double wanted_m = celerity * options->time_step_s;
+    double wanted_m = fmax(celerity, mean_celerity_m_s(reach, flood)) * options->time_step_s;
     if (!is_full)
         return (size_t)fmin(MOST_CELLS, fmax(FEWEST_CELLS, round(source->length_m / wanted_m)));
     /* a slow flood needs no short ones; at its low flows D/c is short, and levels set from below want it resolved */

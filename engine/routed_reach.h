@@ -57,8 +57,9 @@ struct routed_flows { /* arrays of one group of members, and what a step reads a
 FW_MUST_CHECK enum fw_status routed_reach_init_curve(struct routed_reach *reach, const struct network_reach *source,
                                                      const struct network_options *options);
 /*
- * Cells for the celerity at the flood's peak and, by the full equations, its rise (0: not known), tables, sides and stops. The
- * source's method must be one by now. FW_NO_MEMORY.
+ * Cells, tables, sides and stops. Cells are sized by the celerity at the flood's peak, or by the mean one of the flood (rise 0: not
+ * known) if that is faster: just above bank full the wave is slow, most of the flood is not; by the full equations also by its
+ * rise. The source's method must be one by now. FW_NO_MEMORY.
  */
 FW_MUST_CHECK enum fw_status routed_reach_init_cells(struct routed_reach *reach, const struct network_river *river,
                                                      size_t reach_index, const struct method_flood *flood,

@@ -9,53 +9,10 @@
 #include "daemon/command/check_deck.h"
 #include "daemon/command/check_facts.h"
 #include "daemon/command/check_json.h"
+#include "daemon/command/check_reach.h"
 #include "daemon/command/check_season.h"
 #include "daemon/command/check_survey.h"
 #include "daemon/command/options.h"
-
-/* --- reaches ------------------------------------------------------------------------------------------------------ */
-
-static void print_flows(const struct check_reach *reach)
-{
-    const struct network_reach_flow *flows = reach->flows;
-    for (size_t flow = 0; flow < reach->flow_count; flow++)
-        printf("    %8.1f m3/s  depth %5.2f m  wave %4.2f m/s  travel %5.0f min  Courant %4.2f%s\n",
-               flows[flow].discharge_m3s, flows[flow].depth_m, flows[flow].celerity_m_s,
-               flows[flow].travel_time_s / 60.0, flows[flow].courant_number,
-               flows[flow].discharge_m3s == reach->bank_full_m3s ? "  bank full" : "");
-    for (size_t flow = 1; flow < reach->flow_count; flow++)
-        if (flows[flow].travel_time_s > 1.05 * flows[flow - 1].travel_time_s) {
-            printf(
-                "    note: above %.0f m3/s the wave is SLOWER (water spreads): the peak of a bigger flood can arrive "
-                "later; its front does not\n",
-                flows[flow - 1].discharge_m3s);
-            break;
-        }
-}
-
-static enum fw_status print_reach(const struct check_facts *facts, size_t index, struct fw_error *error)
-{
-    struct check_reach found;
-    enum fw_status status = check_facts_reach(facts, index, &found, error);
-    if (status != FW_OK)
-        return status;
-    printf("reach %s: %.0f m, slope %g, method %s, %zu cells of %.0f m, steps of %g s\n", found.reach->id,
-           found.reach->length_m, found.reach->slope_m_per_m, found.method, found.steps.cell_count,
-           found.steps.cell_m, found.steps.time_step_s);
-    print_flows(&found);
-    if (isfinite(found.least_rise_s))
-        printf(
-            "    fit for floods that rise to %.0f m3/s in %.0f min or more; in quicker ones this method's peak comes "
-            "out LATE and low\n",
-            found.peak_m3s, ceil(found.least_rise_s / 60.0));
-    else
-        printf("    knows backwater; at %.0f m3/s a wave evens out over D/c = %.0f m%s\n", found.peak_m3s,
-               found.diffusion_length_m,
-               found.steps.cell_m > 2.0 * found.diffusion_length_m
-                   ? ": cells longer than twice that give WRONG LEVELS, this reach is too steep for the method"
-                   : "");
-    return FW_OK;
-}
 
 /* --- points ------------------------------------------------------------------------------------------------------- */
 
@@ -159,10 +116,12 @@ static enum fw_status print_all(const struct check_facts *facts, struct fw_error
     printf("%s: no faults. District %s, datum %s, settings %.8s\n\n", settings->file, settings->district_name,
            settings->datum, settings->digest);
     enum fw_status status = FW_OK;
+    check_reach_print_floods(settings);
     for (size_t reach = 0; reach < settings->river.reach_count && status == FW_OK; reach++)
-        status = print_reach(facts, reach, error);
+        status = check_reach_print(facts, reach, error);
     if (status == FW_OK)
         status = check_season_print(facts, error);
+    check_reach_print_legend();
     printf("\n");
     check_survey_print(facts);
     bool is_protected = true;

@@ -3,47 +3,27 @@
 
 #include <math.h>
 
+#include "daemon/forecast_network.h"
 #include "engine/method.h"
 
 enum { FLOW_COUNT = CHECK_FLOW_COUNT, SEARCH_COUNT = 256 };
 
-static double largest_flow_m3s(const struct settings *settings)
+static void spread_flows(double peak_m3s, double flows_out[FLOW_COUNT])
 {
-    double total_m3s = 0.0;
-    for (size_t gauge = 0; gauge < settings->gauge_count; gauge++) {
-        const struct settings_gauge *known = &settings->gauges[gauge];
-        if (known->gives_level_only ||
-            network_gauge_is_inner(&settings->river, gauge)) /* no more water comes there */
-            continue;
-        double value = isfinite(known->quality.highest) ? known->quality.highest : 10.0;
-        if (known->measures == SETTINGS_STAGE && isfinite(known->rating.highest_gauged_m))
-            value = 1.25 * known->rating.highest_gauged_m;
-        total_m3s += known->measures == SETTINGS_STAGE ? rating_discharge_m3s(&known->rating, value, NULL) : value;
-    }
-    return total_m3s;
+    for (size_t flow = 0; flow < FLOW_COUNT; flow++)
+        flows_out[flow] = peak_m3s * pow(2.0, (double)flow - (FLOW_COUNT - 2.0));
 }
 
 enum fw_status check_facts_open(struct check_facts *facts, const struct settings *settings, struct fw_error *error)
 {
     *facts = (struct check_facts){.settings = settings};
-    static const double one = 1.0;
-    double largest_m3s = largest_flow_m3s(settings);
-    struct network_fault fault = {{0}};
-    struct network_options options = {.time_step_s = (double)settings->time_step_s,
-                                      .group_count = 1,
-                                      .roughness_factors = &one,
-                                      .members_per_group = 1,
-                                      .largest_discharge_m3s = 4.0 * largest_m3s,
-                                      .typical_peak_m3s = largest_m3s};
-    for (size_t flow = 0; flow < FLOW_COUNT; flow++)
-        facts->flows_m3s[flow] = largest_m3s * pow(2.0, (double)flow - (FLOW_COUNT - 2.0));
+    spread_flows(forecast_network_peak_m3s(settings), facts->flows_m3s);
     facts->fastest_roughness = facts->slowest_roughness = 1.0;
     for (size_t index = 0; index < settings->roughness_factor_count; index++) {
         facts->fastest_roughness = fmin(facts->fastest_roughness, settings->roughness_factors[index]);
         facts->slowest_roughness = fmax(facts->slowest_roughness, settings->roughness_factors[index]);
     }
-    enum fw_status status = network_create(&settings->river, &options, &facts->network, &fault);
-    return status == FW_OK ? FW_OK : fw_error_set(error, status, "%s: %s", settings->file, fault.text);
+    return forecast_network_create_as_given(settings, &facts->network, error);
 }
 
 void check_facts_clear(struct check_facts *facts)
@@ -64,43 +44,71 @@ static double bank_full_m3s(const struct network_reach *reach)
 }
 
 /* The flows of the table, and bank full among them where it is known; how many. */
-static size_t reach_flows(const struct check_facts *facts, double bank_full, double flows_out[FLOW_COUNT + 1])
+static size_t reach_flows(double peak_m3s, double bank_full, double flows_out[FLOW_COUNT + 1])
 {
+    double even_m3s[FLOW_COUNT];
     size_t count = 0;
-    bool has_bank_full = bank_full > facts->flows_m3s[0] && bank_full < facts->flows_m3s[FLOW_COUNT - 1];
+    spread_flows(peak_m3s, even_m3s);
+    bool has_bank_full = bank_full > even_m3s[0] && bank_full < even_m3s[FLOW_COUNT - 1];
     for (size_t flow = 0; flow < FLOW_COUNT; flow++) {
-        if (has_bank_full && bank_full <= facts->flows_m3s[flow]) {
+        if (has_bank_full && bank_full <= even_m3s[flow]) {
             flows_out[count++] = bank_full;
             has_bank_full = false;
         }
-        if (count == 0 || facts->flows_m3s[flow] > flows_out[count - 1])
-            flows_out[count++] = facts->flows_m3s[flow];
+        if (count == 0 || even_m3s[flow] > flows_out[count - 1])
+            flows_out[count++] = even_m3s[flow];
     }
     return count;
+}
+
+/* What the flows do with the roughness times a factor. */
+static enum fw_status flows_at(const struct check_facts *facts, size_t index, double roughness_factor, size_t count,
+                               const double flows_m3s[], struct network_reach_flow found[FLOW_COUNT + 1])
+{
+    struct network_reach_steps steps;
+    return network_reach_summary(facts->network, index, roughness_factor, count, flows_m3s, &steps, found);
+}
+
+static enum fw_status fill_flows(const struct check_facts *facts, size_t index, struct check_reach *found)
+{
+    static const double factors[] = {1.0, 0.8, 1.2};
+    double flows_m3s[FLOW_COUNT + 1];
+    struct network_reach_flow at[3][FLOW_COUNT + 1];
+    enum fw_status status = FW_OK;
+    found->flow_count = reach_flows(found->peak_m3s, found->bank_full_m3s, flows_m3s);
+    for (size_t i = 0; i < 3 && status == FW_OK; i++)
+        status = flows_at(facts, index, factors[i], found->flow_count, flows_m3s, at[i]);
+    for (size_t flow = 0; flow < found->flow_count && status == FW_OK; flow++)
+        found->flows[flow] = (struct check_flow){at[0][flow], at[1][flow], at[2][flow]};
+    return status;
+}
+
+/* The number falls with the rise to the power of 5/2. */
+static double least_rise_s(const struct method_choice *choice, double length_m, const struct network_reach_flow *peak)
+{
+    if (choice->flood.rise_s > 0.0 && choice->storage_number > 0.0)
+        return choice->flood.rise_s * pow(choice->storage_number / METHOD_STORAGE_LIMIT, 0.4);
+    return method_storage_least_rise_s(length_m, peak->celerity_m_s, peak->diffusivity_m2_s);
 }
 
 enum fw_status check_facts_reach(const struct check_facts *facts, size_t index, struct check_reach *reach_out,
                                  struct fw_error *error)
 {
     const struct network_reach *reach = &facts->settings->river.reaches[index];
-    struct method_choice choice;
-    network_reach_choice(facts->network, index, &choice);
-    struct check_reach found = {.reach = reach,
-                                .method = method_name(choice.method),
-                                .bank_full_m3s = bank_full_m3s(reach),
-                                .peak_m3s = facts->flows_m3s[FLOW_COUNT - 2]};
-    double flows_m3s[FLOW_COUNT + 1];
+    struct check_reach found = {.reach = reach, .bank_full_m3s = bank_full_m3s(reach)};
     struct network_reach_flow peak;
-    found.flow_count = reach_flows(facts, found.bank_full_m3s, flows_m3s);
+    network_reach_choice(facts->network, index, &found.choice);
+    found.peak_m3s =
+        found.choice.flood.peak_m3s > 0.0 ? found.choice.flood.peak_m3s : facts->flows_m3s[FLOW_COUNT - 2];
     enum fw_status status =
-        network_reach_summary(facts->network, index, 1.0, found.flow_count, flows_m3s, &found.steps, found.flows);
+        network_reach_summary(facts->network, index, 1.0, 1, &found.peak_m3s, &found.steps, &peak);
     if (status == FW_OK)
-        status = network_reach_summary(facts->network, index, 1.0, 1, &found.peak_m3s, &found.steps, &peak);
+        status = fill_flows(facts, index, &found);
     if (status != FW_OK)
         return fw_error_set(error, status, "reach '%s': its flows cannot be computed", reach->id);
-    found.least_rise_s = network_method_is_full(choice.method)
+    found.least_rise_s = network_method_is_full(found.choice.method)
                              ? NAN
-                             : method_storage_least_rise_s(reach->length_m, peak.celerity_m_s, peak.diffusivity_m2_s);
+                             : least_rise_s(&found.choice, found.choice.path_length_m, &peak);
     found.diffusion_length_m = peak.diffusivity_m2_s / peak.celerity_m_s;
     *reach_out = found;
     return FW_OK;

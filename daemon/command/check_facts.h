@@ -9,20 +9,25 @@ enum { CHECK_FLOW_COUNT = 6 };
 
 struct check_facts {
     const struct settings *settings;
-    struct network *network;
-    double
-        flows_m3s[CHECK_FLOW_COUNT]; /* from low to twice what the gauges have at 1.25 times their highest gauging */
+    struct network *network;            /* one member, the roughness as given */
+    double flows_m3s[CHECK_FLOW_COUNT]; /* from low to twice the peak of the gauges' floods together */
     double slowest_roughness, fastest_roughness;
+};
+
+struct check_flow {
+    struct network_reach_flow as_given;
+    struct network_reach_flow smoother, rougher; /* roughness -20 %, +20 % */
 };
 
 struct check_reach {
     const struct network_reach *reach;
-    const char *method;
+    struct method_choice choice;
     struct network_reach_steps steps;
-    size_t flow_count; /* the flows above, and bank full among them where it is known */
-    struct network_reach_flow flows[CHECK_FLOW_COUNT + 1];
+    size_t
+        flow_count; /* from low to twice the peak of the reach's flood, and bank full among them where it is known */
+    struct check_flow flows[CHECK_FLOW_COUNT + 1];
     double bank_full_m3s; /* NAN: not known */
-    double peak_m3s;      /* the flow whose rise the next line speaks of */
+    double peak_m3s;      /* the flow whose rise the next lines speak of */
     double least_rise_s;  /* quicker floods than this are not for this method (engine/method.h); NAN: no such limit */
     double diffusion_length_m; /* D/c at the peak */
 };

@@ -7,6 +7,7 @@
 #include <stdlib.h>
 
 #include "daemon/command/check_deck.h"
+#include "daemon/command/check_reach.h"
 #include "daemon/command/check_season.h"
 #include "daemon/command/check_survey.h"
 #include "daemon/tell/sentence.h"
@@ -27,11 +28,58 @@ static cJSON *add_object(cJSON *array)
     return object;
 }
 
+static void add_flood(cJSON *object, const struct method_flood *flood)
+{
+    bool is_known = flood->rise_s > 0.0;
+    add(object, "base_m3s", is_known ? flood->base_m3s : NAN);
+    add(object, "peak_m3s", is_known ? flood->peak_m3s : NAN);
+    add(object, "rise_s", is_known ? flood->rise_s : NAN);
+}
+
+static void add_gauge(cJSON *array, const struct settings_gauge *gauge)
+{
+    cJSON *object = add_object(array);
+    cJSON_AddStringToObject(object, "id", gauge->id);
+    cJSON *flood = cJSON_AddObjectToObject(object, "flood");
+    cJSON_AddStringToObject(flood, "from", check_reach_flood_word(gauge->flood_from));
+    add_flood(flood, &gauge->flood);
+}
+
+static void add_choice(cJSON *object, const struct method_choice *choice)
+{
+    cJSON_AddStringToObject(object, "why", method_reason_text(choice->reason));
+    cJSON_AddStringToObject(object, "auto_would_take", method_name(choice->advised));
+    add_flood(cJSON_AddObjectToObject(object, "flood"), &choice->flood);
+    add(object, "way_m", choice->path_length_m);
+    add(object, "eps", choice->spread_number);
+    add(object, "lam", choice->length_number);
+    add(object, "number", choice->storage_number);
+    add(object, "number_limit", METHOD_STORAGE_LIMIT);
+    add(object, "worst_number", choice->worst_number);
+    add(object, "worst_at_m3s", choice->at_discharge_m3s);
+    add(object, "froude_at_peak", choice->froude);
+    add(object, "raised_at_foot_share", choice->raise_share);
+    cJSON *published = cJSON_AddObjectToObject(object, "ponce_li_simons_1978");
+    add(published, "kinematic_number", choice->kinematic_number);
+    add(published, "kinematic_from", METHOD_KINEMATIC_LIMIT);
+    add(published, "diffusion_number", choice->diffusion_number);
+    add(published, "diffusion_from", METHOD_DIFFUSION_LIMIT);
+}
+
+static void add_roughness(cJSON *flow, const char *name, const struct network_reach_flow *changed,
+                          const struct network_reach_flow *as_given)
+{
+    cJSON *object = cJSON_AddObjectToObject(flow, name);
+    add(object, "travel_time_s", changed->travel_time_s - as_given->travel_time_s);
+    add(object, "depth_m", changed->depth_m - as_given->depth_m);
+}
+
 static void add_reach(cJSON *array, const struct check_reach *found)
 {
     cJSON *object = add_object(array);
     cJSON_AddStringToObject(object, "id", found->reach->id);
-    cJSON_AddStringToObject(object, "method", found->method);
+    cJSON_AddStringToObject(object, "method", method_name(found->choice.method));
+    add_choice(object, &found->choice);
     add(object, "length_m", found->reach->length_m);
     add(object, "slope_m_per_m", found->reach->slope_m_per_m);
     add(object, "cells", (double)found->steps.cell_count);
@@ -45,12 +93,15 @@ static void add_reach(cJSON *array, const struct check_reach *found)
     add(object, "surveyed_to_m3s", survey.top_m3s);
     cJSON *flows = cJSON_AddArrayToObject(object, "flows");
     for (size_t index = 0; index < found->flow_count; index++) {
+        const struct network_reach_flow *as_given = &found->flows[index].as_given;
         cJSON *flow = add_object(flows);
-        add(flow, "discharge_m3s", found->flows[index].discharge_m3s);
-        add(flow, "depth_m", found->flows[index].depth_m);
-        add(flow, "celerity_m_s", found->flows[index].celerity_m_s);
-        add(flow, "travel_time_s", found->flows[index].travel_time_s);
-        add(flow, "courant_number", found->flows[index].courant_number);
+        add(flow, "discharge_m3s", as_given->discharge_m3s);
+        add(flow, "depth_m", as_given->depth_m);
+        add(flow, "celerity_m_s", as_given->celerity_m_s);
+        add(flow, "travel_time_s", as_given->travel_time_s);
+        add(flow, "courant_number", as_given->courant_number);
+        add_roughness(flow, "with_roughness_x0.8", &found->flows[index].smoother, as_given);
+        add_roughness(flow, "with_roughness_x1.2", &found->flows[index].rougher, as_given);
     }
 }
 
@@ -148,6 +199,9 @@ enum fw_status check_json_print(const struct check_facts *facts, struct fw_error
     cJSON_AddStringToObject(object, "schema", "forewater.check.1");
     cJSON_AddStringToObject(object, "settings", settings->digest);
     cJSON_AddStringToObject(object, "caution", SENTENCE_CAUTION);
+    cJSON *gauges = cJSON_AddArrayToObject(object, "gauges");
+    for (size_t index = 0; index < settings->gauge_count; index++)
+        add_gauge(gauges, &settings->gauges[index]);
     cJSON *reaches = cJSON_AddArrayToObject(object, "reaches");
     cJSON *points = cJSON_AddArrayToObject(object, "points");
     for (size_t index = 0; index < settings->river.reach_count && status == FW_OK; index++) {

@@ -17,7 +17,8 @@
 enum {
     STEPS_MOST = 4000000,
     HIGHEST_STAGE_M = 1000,
-    LARGEST_M3S = 100000 /* the whole flow of all gauges must stay under the 1e6 that a network takes */
+    SHORTEST_INTERVAL_S = 10, /* rows nearer than that do not set the pace */
+    LARGEST_M3S = 100000      /* the whole flow of all gauges must stay under the 1e6 that a network takes */
 };
 
 struct hydrograph { /* at a gauge, at uneven times */
@@ -32,7 +33,8 @@ struct route_plan {
     struct network_reach *reaches; /* a copy, with the method asked for */
     struct network_point *points;  /* likewise, with one more for every gauge in mid-river */
     struct network_river river;
-    struct hydrograph *inflow; /* [gauge] */
+    struct hydrograph *inflow;   /* [gauge] */
+    struct method_flood *floods; /* [gauge] */
     size_t *gauge_point;   /* [gauge]: where the flow that goes on from it is read; NETWORK_NONE: it is the inflow */
     bool is_in_seconds;    /* times came as plain numbers */
     struct when_zone zone; /* else: the offset they came with */
@@ -275,6 +277,33 @@ static enum fw_status take_season(struct route_plan *plan, struct fw_error *erro
     return FW_OK;
 }
 
+/* By which methods and steps are chosen: the configuration's where it states one, else what the files bring. */
+static enum fw_status plan_floods(struct route_plan *plan, struct fw_error *error)
+{
+    plan->floods = calloc(plan->settings->gauge_count + 1, sizeof *plan->floods);
+    if (plan->floods == NULL)
+        return fw_error_set(error, FW_NO_MEMORY, "no memory");
+    for (size_t gauge = 0; gauge < plan->settings->gauge_count; gauge++) {
+        const struct settings_gauge *known = &plan->settings->gauges[gauge];
+        const struct hydrograph *inflow = &plan->inflow[gauge];
+        if (known->flood_from == SETTINGS_FLOOD_STATED)
+            plan->floods[gauge] = known->flood;
+        else if (!known->gives_level_only)
+            plan->floods[gauge] = method_flood_of(inflow->count, inflow->time_s, inflow->discharge_m3s);
+    }
+    return FW_OK;
+}
+
+/* As stated; else short enough for the quickest flood, and a whole part of the shortest interval of the input. */
+static double chosen_step_s(const struct route_plan *plan, double shortest_s)
+{
+    double step_s = (double)plan->settings->time_step_s;
+    bool has_interval = shortest_s >= SHORTEST_INTERVAL_S && isfinite(shortest_s);
+    for (size_t gauge = 0; gauge < plan->settings->gauge_count && !plan->settings->is_time_step_stated; gauge++)
+        step_s = fmin(step_s, method_time_step_s(&plan->floods[gauge], has_interval ? shortest_s : step_s));
+    return step_s;
+}
+
 static enum fw_status plan_times(struct route_plan *plan, const char *until, long every_s, long step_s,
                                  struct fw_error *error)
 {
@@ -304,7 +333,7 @@ static enum fw_status plan_times(struct route_plan *plan, const char *until, lon
     }
     if (until != NULL && plan->until_s < plan->start_s)
         return fw_error_set(error, FW_USAGE, "--until: '%s' is before the first inflow", until);
-    plan->step_s = step_s > 0 ? (double)step_s : (double)plan->settings->time_step_s;
+    plan->step_s = step_s > 0 ? (double)step_s : chosen_step_s(plan, shortest_s);
     plan->every_s = every_s > 0 ? (double)every_s : (isfinite(shortest_s) ? shortest_s : plan->step_s);
     if ((plan->until_s - plan->start_s) / plan->step_s > STEPS_MOST)
         return fw_error_set(error, FW_USAGE, "--step: more than %d steps of %g s: expected a longer one", STEPS_MOST,
@@ -459,12 +488,25 @@ static enum fw_status build_network(const struct route_plan *plan, double larges
                                       .roughness_factors = &one,
                                       .members_per_group = 1,
                                       .largest_discharge_m3s = largest_m3s,
-                                      .typical_peak_m3s = largest_m3s};
+                                      .typical_peak_m3s = largest_m3s,
+                                      .gauge_floods = plan->floods};
     struct network_fault fault = {{0}};
     enum fw_status status = network_create(&plan->river, &options, network_out, &fault);
     if (status != FW_OK)
         return fw_error_set(error, status, "%s: %s", plan->settings->file, fault.text);
     return FW_OK;
+}
+
+/* Where the storage form stands in for the full equations, the reader must know. */
+static void tell_stand_ins(const struct route_plan *plan, const struct network *network)
+{
+    for (size_t reach = 0; reach < plan->river.reach_count; reach++) {
+        struct method_choice choice;
+        network_reach_choice(network, reach, &choice);
+        if (choice.reason == METHOD_TOO_STEEP || choice.reason == METHOD_TOO_FAST)
+            fprintf(stderr, "forewater: note: reach '%s': method %s: %s\n", plan->river.reaches[reach].id,
+                    method_name(choice.method), method_reason_text(choice.reason));
+    }
 }
 
 static enum fw_status route(const struct route_plan *plan, struct fw_error *error)
@@ -494,6 +536,7 @@ static enum fw_status route(const struct route_plan *plan, struct fw_error *erro
             inflow_m3s[gauge * (step_count + 1) + step] = flow;
             peak_m3s = fmax(peak_m3s, flow); /* a number, where the other is none */
         }
+        peak_m3s = fmax(peak_m3s, plan->floods[gauge].peak_m3s);
         start_m3s[gauge] = inflow_m3s[gauge * (step_count + 1)];
         largest_m3s += is_inner(plan, gauge) ? 0.0 : peak_m3s;
         largest_inner_m3s = fmax(largest_inner_m3s, is_inner(plan, gauge) ? peak_m3s : 0.0);
@@ -511,6 +554,8 @@ static enum fw_status route(const struct route_plan *plan, struct fw_error *erro
                            ? plan->river.side_inflows[side].constant_m3s
                            : plan->river.side_inflows[side].share * largest_m3s;
     status = build_network(plan, fmax(largest_m3s, 0.001), &network, error);
+    if (status == FW_OK)
+        tell_stand_ins(plan, network);
     if (status == FW_OK)
         status = network_start_steady_at(network, start_m3s, start_level_m);
     if (status == FW_OK)
@@ -584,6 +629,8 @@ enum fw_status command_route(int argument_count, char *arguments[], struct fw_er
     if (status == FW_OK)
         status = read_inflows(&plan, &inflow, error);
     if (status == FW_OK)
+        status = plan_floods(&plan, error);
+    if (status == FW_OK)
         status = plan_times(&plan, option_text(&until, NULL), every_s, step_s, error);
     if (status == FW_OK)
         status = take_season(&plan, error);
@@ -595,6 +642,7 @@ enum fw_status command_route(int argument_count, char *arguments[], struct fw_er
         free(plan.inflow[gauge].stage_m);
     }
     free(plan.inflow);
+    free(plan.floods);
     free(plan.reaches);
     season_river_clear(&plan.season);
     free(plan.points);

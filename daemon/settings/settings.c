@@ -57,8 +57,10 @@ static const char *absolute_path(struct arena *arena, const char *file)
 
 static bool build(struct settings_work *work)
 {
-    return settings_build_base(work) && settings_build_channels(work) && settings_build_gauges(work) &&
-           settings_build_river(work) && settings_build_points(work) &&
+    if (!settings_build_base(work) || !settings_build_channels(work) || !settings_build_gauges(work))
+        return false;
+    settings_build_floods(work);
+    return settings_build_river(work) && settings_build_points(work) &&
            (settings_report_has_faults(work->report) || settings_check_river(work));
 }
 

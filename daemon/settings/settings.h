@@ -19,6 +19,7 @@
 #include "engine/advice.h"
 #include "engine/assumed_inflow.h"
 #include "engine/hazard.h"
+#include "engine/method.h"
 #include "engine/network.h"
 #include "engine/quality.h"
 #include "engine/rating.h"
@@ -46,6 +47,13 @@ struct settings_feed {
     struct when_zone zone;
 };
 
+enum settings_flood { /* where a gauge's flood comes from */
+                      SETTINGS_FLOOD_UNKNOWN,
+                      SETTINGS_FLOOD_STATED,
+                      SETTINGS_FLOOD_FROM_GAUGING, /* assumed from the highest gauging and the fastest rise */
+                      SETTINGS_FLOOD_FROM_BELIEF   /* assumed from the highest value believed and the fastest rise */
+};
+
 struct settings_gauge {
     const char *id, *name;
     enum settings_measure measures;
@@ -58,6 +66,8 @@ struct settings_gauge {
     struct quality_rules quality; /* in the measured quantity, SI */
     double rising_rate_per_s;     /* above this it counts as rising */
     struct assumed_rules assumed;
+    struct method_flood flood; /* that the choice of method must be right for */
+    enum settings_flood flood_from;
     size_t node;           /* index of its node in the river; SETTINGS_NONE: it gives a level only */
     bool gives_level_only; /* of an outlet; it has no rating, and its flow is not known */
 };
@@ -165,6 +175,7 @@ struct settings {
     int64_t warm_up_s;   /* how far before now the routing starts */
     size_t member_count; /* stated for the ensemble to come; not used by the stated set of runs */
     int64_t time_step_s;
+    bool is_time_step_stated; /* else it was chosen by the gauges' floods */
     size_t roughness_factor_count;
     double roughness_factors[8]; /* 0.8 1.0 1.2 */
 

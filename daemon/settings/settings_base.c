@@ -89,14 +89,13 @@ static void build_forecast(struct settings_work *work)
     settings->forecast_every_s = settings_work_seconds(forecast, "forecast.every_min", MINUTE_S);
     settings->horizon_s = settings_work_seconds(forecast, "forecast.horizon_h", HOUR_S);
     settings->warm_up_s = settings_work_seconds(forecast, "forecast.warm_up_h", HOUR_S);
+    settings->is_time_step_stated = settings_work_has(forecast, "forecast.time_step_s");
     settings->time_step_s = settings_work_seconds(forecast, "forecast.time_step_s", 1);
     settings->member_count = (size_t)settings_work_seconds(forecast, "forecast.members", 1);
     build_roughness(work, forecast);
     struct json_value *step = settings_work_member(forecast, "forecast.time_step_s");
-    struct json_value *every = settings_work_member(forecast, "forecast.every_min");
-    struct json_value *blamed = step != NULL ? step : every;
-    if (settings->time_step_s > 0 && settings->forecast_every_s % settings->time_step_s != 0 && blamed != NULL)
-        json_tree_fault(work->report, blamed, "does not fit: expected a cycle (%lld s) of whole time steps (%lld s)",
+    if (step != NULL && settings->time_step_s > 0 && settings->forecast_every_s % settings->time_step_s != 0)
+        json_tree_fault(work->report, step, "does not fit: expected a cycle (%lld s) of whole time steps (%lld s)",
                         (long long)settings->forecast_every_s, (long long)settings->time_step_s);
 }
 

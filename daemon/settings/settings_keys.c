@@ -105,8 +105,15 @@ static const struct settings_key keys[] = {
     NUMBER("forecast.warm_up_h", OPTIONAL, "h", 1, 240, "24",
            "How far before now the routing starts, so that it has forgotten its start. Longer than the longest "
            "travel time."),
-    INTEGER("forecast.time_step_s", OPTIONAL, "s", 1, 3600, "60",
-            "Time step of the routing. The cycle must be a whole multiple of it."),
+    {.path = "forecast.time_step_s",
+     .type = SETTINGS_TYPE_INTEGER,
+     .unit = "s",
+     .lowest = 1,
+     .highest = 3600,
+     .otherwise =
+         "chosen: a minute, or a fortieth of the quickest flood's rise if that is less, in whole parts of the "
+         "cycle",
+     .meaning = "Time step of the routing. The cycle must be a whole multiple of it."},
     ARRAY("forecast.roughness_factors", OPTIONAL, 1, 8, "[0.8, 1, 1.2]",
           "Every future is routed with the roughness of all sections times each of these, rising."),
     NUMBER("forecast.roughness_factors[]", WANTED, "", 0.3, 3, NULL, "A factor on Manning's n."),
@@ -185,6 +192,15 @@ static const struct settings_key keys[] = {
     OTHERWISE("gauges[].rising_m3s_h", OPTIONAL, "m3/s per h", 0, 1e6,
               "none; the daemon needs it where a gauge measures discharge",
               "The same for a gauge that measures discharge."),
+    OBJECT(
+        "gauges[].flood", OPTIONAL,
+        "The severest flood that the choice of method must be right for. Without it one is assumed and `check` says "
+        "so: up to the flow a quarter further above the stage of no flow than the highest gauging (else to the "
+        "highest value believed), from a twentieth of it, at the fastest rise."),
+    NUMBER("gauges[].flood.base_m3s", WANTED, "m3/s", 0, 1e5, NULL, "Flow before it rises."),
+    NUMBER("gauges[].flood.peak_m3s", WANTED, "m3/s", 0.001, 1e5, NULL, "Its peak, above the base."),
+    NUMBER("gauges[].flood.rise_h", WANTED, "h", 0.05, 1000, NULL,
+           "Its rise from base to peak over its steepest rise of flow: (peak - base) / max(dQ/dt)."),
     OBJECT("gauges[].quality", FOR_RUN, "What is believed of a reading. No raw value is ever overwritten."),
     OTHERWISE("gauges[].quality.lowest_m", OPTIONAL, "m", -50, 200, "no limit",
               "A stage below this is out of range."),
@@ -272,11 +288,12 @@ static const struct settings_key keys[] = {
     NUMBER("reaches[].length_m", WANTED, "m", 1, 1e6, NULL, "Length along the channel."),
     NUMBER("reaches[].slope", WANTED, "", 1e-6, 0.3, NULL, "Bed slope, m per m."),
     REFERS("reaches[].section", WANTED, SECTION, "Its cross-section."),
-    WORD("reaches[].method", OPTIONAL, "auto|muskingum-cunge|kinematic|kinematic-linear|diffusive|dynamic",
-         "\"auto\"",
-         "How it is routed. auto is dynamic above an outlet and muskingum-cunge elsewhere. dynamic solves the full "
-         "equations and knows backwater, diffusive the same without inertia: for flat reaches, not for steep or dry "
-         "ones."),
+    WORD(
+        "reaches[].method", OPTIONAL, "auto|muskingum-cunge|kinematic|kinematic-linear|diffusive|dynamic", "\"auto\"",
+        "How it is routed. auto chooses by the gauges' floods: muskingum-cunge where that is enough, dynamic where "
+        "the "
+        "reach is too flat for it or a level is held; `check` says which, and why. dynamic solves the full equations "
+        "and knows backwater, diffusive the same without inertia: for flat reaches, not for steep or dry ones."),
     OTHERWISE("reaches[].cell_m", OPTIONAL, "m", 0.1, 1e6, "chosen from celerity and time step",
               "Length of its cells."),
     ARRAY("reaches[].side_inflow", OPTIONAL, 0, 20, NULL, "Water that no gauge measures, by assumption."),

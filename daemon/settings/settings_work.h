@@ -69,6 +69,7 @@ void settings_check_outlets(struct settings_work *work, const struct json_value 
 bool settings_build_base(struct settings_work *work);
 bool settings_build_channels(struct settings_work *work);
 bool settings_build_gauges(struct settings_work *work);
+void settings_build_floods(struct settings_work *work); /* and the time step */
 bool settings_build_river(struct settings_work *work);
 bool settings_build_points(struct settings_work *work);
 /* Of one section, once it is built; false: no memory. */

@@ -33,7 +33,7 @@ static const struct stage_structure weir = {1, &opening};
 static void every_failed_allocation_is_told_and_nothing_leaks(void **state)
 {
     (void)state;
-    for (int method = NETWORK_MUSKINGUM_CUNGE; method <= NETWORK_DIFFUSIVE; method++) {
+    for (int method = NETWORK_MUSKINGUM_CUNGE; method <= NETWORK_AUTO; method++) {
         enum fw_status status = FW_NO_MEMORY;
         size_t allowed = 0;
         for (; status != FW_OK; allowed++) {

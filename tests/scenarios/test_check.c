@@ -100,6 +100,7 @@ static double celerity_m_s(double depth_m) /* dQ/dA by central differences */
 
 struct row {
     double flow_m3s, depth_m, wave_m_s, travel_min;
+    double smoother_min, smoother_cm, rougher_min, rougher_cm; /* what a roughness 20 % less or more changes */
     bool is_bank_full;
 };
 
@@ -109,8 +110,9 @@ static size_t reach_rows(const char *block, size_t most, struct row rows[])
     for (const char *line = strchr(block, '\n'); line != NULL && line[1] != '\0'; line = strchr(line + 1, '\n')) {
         struct row row = {0};
         char rest[64] = "";
-        if (sscanf(line + 1, " %lf m3/s depth %lf m wave %lf m/s travel %lf min Courant %*f%63[^\n]", &row.flow_m3s,
-                   &row.depth_m, &row.wave_m_s, &row.travel_min, rest) < 4)
+        if (sscanf(line + 1, " %lf %lf %lf %lf %*f %lf %lf %lf %lf%63[^\n]", &row.flow_m3s, &row.depth_m,
+                   &row.wave_m_s, &row.travel_min, &row.smoother_min, &row.smoother_cm, &row.rougher_min,
+                   &row.rougher_cm, rest) < 8)
             continue;
         row.is_bank_full = strstr(rest, "bank full") != NULL;
         assert_true(count < most);
@@ -144,6 +146,12 @@ static void travel_times_fall_with_the_flow_up_to_bank_full_and_rise_above(void 
             assert_near(manning_m3s(rows[row].depth_m), rows[row].flow_m3s, 0.025 * rows[row].flow_m3s);
             assert_near(rows[row].wave_m_s, celerity_m_s(rows[row].depth_m), 0.02 * rows[row].wave_m_s);
             assert_near(rows[row].travel_min, 9400 / rows[row].wave_m_s / 60, 0.5 + 0.006 * rows[row].travel_min);
+            /* the same flow at another depth: by hand for the smoother bed, where it stays within banks */
+            double smoother_m = rows[row].depth_m + rows[row].smoother_cm / 100;
+            assert_near(manning_m3s(smoother_m) / 0.8, rows[row].flow_m3s, 0.04 * rows[row].flow_m3s);
+            assert_near(rows[row].travel_min + rows[row].smoother_min, 9400 / (celerity_m_s(smoother_m) / 0.8) / 60,
+                        1.0 + 0.012 * rows[row].travel_min);
+            assert_true(rows[row].rougher_min > 0.0 && rows[row].rougher_cm > 0.0);
         }
         assert_near(rows[bank_full].flow_m3s, manning_m3s(2.60), 0.3); /* a hair below it */
         assert_says(block,
@@ -163,9 +171,18 @@ static void method_cells_and_steps_are_told_per_reach(void **state)
     struct run run = RUN(NULL, "check", "--config", FW_SOURCE_DIR "/tests/data/settings/every_other_key.json");
     assert_run(&run, EX_OK);
     assert_says(run.output,
-                "reach beck-foot: 5300 m, slope 0.0071, method kinematic, 14 cells of 379 m, steps of 60 s\n");
-    assert_says(run.output, "reach scar-meeting: 13000 m, slope 0.0024, method muskingum-cunge, ");
-    char *block = block_of(run.output, "reach scar-meeting:");
+                "gauge upper-sethick: methods are chosen for a flood from 4.2 to 85.0 m3/s that rises in 2.18 h, "
+                "assumed from the highest value believed and the fastest rise: 'flood' states a better one\n");
+    assert_says(run.output, "gauge orlin-scar: no flood is known to choose methods by: ");
+    char *block = block_of(run.output, "reach beck-foot:");
+    assert_says(block, "reach beck-foot: 5300 m, slope 0.0071; flood from 4.2 to 85.0 m3/s; on a way of 14.4 km\n");
+    assert_says(block, "    method kinematic, 14 cells of 379 m, steps of 60 s; eps^1.5 lam ");
+    assert_says(block, ": stated, not chosen; auto would take muskingum-cunge\n");
+    free(block);
+    block = block_of(run.output, "reach scar-meeting:");
+    assert_says(block,
+                "reach scar-meeting: 13000 m, slope 0.0024; on a way of 22.1 km\n    method muskingum-cunge, ");
+    assert_says(block, ": no flood is known to choose by\n");
     assert_null(strstr(block, "SLOWER")); /* no plain */
     free(block);
     run_clear(&run);
