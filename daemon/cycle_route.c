@@ -5,6 +5,7 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "daemon/forecast_network.h"
 #include "engine/series.h"
 
 enum {
@@ -179,6 +180,7 @@ static enum fw_status fill_inflow(struct cycle *cycle, size_t index, const struc
     if (network_gauge_is_inner(&cycle->settings->river, index))
         return fill_inner_inflow(cycle, index, gauge, step_count);
     size_t used = known->gives_level_only ? 0 : used_samples(cycle, known, gauge, false);
+    double least_m3s = forecast_network_least_inflow_m3s(cycle->settings, cycle->network, index);
     size_t measured = 0;
     if (used == 0) {
         measured = step_count + 1;
@@ -196,6 +198,8 @@ static enum fw_status fill_inflow(struct cycle *cycle, size_t index, const struc
         if (measured <= step_count)
             status = append_future(cycle, known, gauge, (enum assumed_future)future, measured, step_count,
                                    inflow + future * row);
+        for (size_t step = 0; step <= step_count; step++)
+            inflow[future * row + step] = fmax(inflow[future * row + step], least_m3s);
     }
     return status;
 }

@@ -8,6 +8,8 @@
 static const double unknown_stage_m = 10.0;
 static const double unknown_discharge_m3s = 1000.0;
 
+static const double trickle_share = 1e-3; /* of the flood's peak: a centimetre or two of depth */
+
 static double highest_believed_m3s(const struct settings_gauge *gauge)
 {
     if (gauge->gives_level_only)
@@ -22,6 +24,20 @@ static double highest_believed_m3s(const struct settings_gauge *gauge)
 static double peak_m3s(const struct settings_gauge *gauge)
 {
     return gauge->flood_from == SETTINGS_FLOOD_UNKNOWN ? highest_believed_m3s(gauge) : gauge->flood.peak_m3s;
+}
+
+double forecast_network_least_inflow_m3s(const struct settings *settings, const struct network *network, size_t gauge)
+{
+    const struct network_river *river = &settings->river;
+    size_t node = settings->gauges[gauge].node;
+    for (size_t reach = 0; reach < river->reach_count; reach++) {
+        struct method_choice choice;
+        network_reach_choice(network, reach, &choice);
+        if (network_method_is_full(choice.method) && node != SETTINGS_NONE &&
+            network_leads_to(river, node, river->reaches[reach].to_node))
+            return trickle_share * peak_m3s(&settings->gauges[gauge]);
+    }
+    return 0.0;
 }
 
 double forecast_network_peak_m3s(const struct settings *settings)

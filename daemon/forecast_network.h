@@ -20,6 +20,13 @@ FW_MUST_CHECK enum fw_status forecast_network_create(const struct settings *sett
 FW_MUST_CHECK enum fw_status forecast_network_create_as_given(const struct settings *settings,
                                                               struct network **network_out, struct fw_error *error);
 
+/*
+ * The least inflow to route from a gauge: nothing, but a thousandth of its flood's peak where the full equations rule below it, as
+ * they do not solve a bed gone dry.
+ */
+double forecast_network_least_inflow_m3s(const struct settings *settings, const struct network *network,
+                                         size_t gauge);
+
 /* The sum of the gauges' floods: what the whole river must carry in them, side water left out. */
 double forecast_network_peak_m3s(const struct settings *settings);
 

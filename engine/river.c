@@ -23,11 +23,6 @@ __attribute__((format(printf, 2, 3))) static enum fw_status fault(struct network
     return FW_BAD_INPUT;
 }
 
-static bool is_positive(double value)
-{
-    return value > 0.0 && isfinite(value);
-}
-
 static bool is_not_negative(double value)
 {
     return value >= 0.0 && isfinite(value);
