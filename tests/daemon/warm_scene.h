@@ -11,8 +11,8 @@ struct warm_change {
     const char *instead_of, *text;
 };
 
-static const struct warm_change warm_full_equations = {"\"length_m\": 9400,",
-                                                       "\"length_m\": 9400, \"method\": \"dynamic\","};
+static const struct warm_change warm_full_equations = {"\"method\": \"muskingum-cunge\" },\n        // Sethick",
+                                                       "\"method\": \"dynamic\" },\n        // Sethick"};
 #define WARM_FORECAST "\"every_min\": 5, \"horizon_h\": 12, \"warm_up_h\": 12, \"time_step_s\": 60"
 
 /* The demonstration's configuration with up to two pieces of text put in place of others. */

@@ -158,8 +158,9 @@ static const struct choice_case cases[] = {
 static void every_reason_is_given_where_it_holds(void **state)
 {
     (void)state;
-    bool is_given[METHOD_REASON_COUNT] = {
-        [METHOD_STATED] = true /* by the network */, [METHOD_EARLY_LEVELS] = true /* above */};
+    bool is_given[METHOD_REASON_COUNT] = {[METHOD_STATED] = true /* by the network */,
+                                          [METHOD_EARLY_LEVELS] = true /* below */,
+                                          [METHOD_STRUCTURE] = true /* by the network */};
     for (size_t i = 0; i < sizeof cases / sizeof *cases; i++) {
         const struct choice_case *row = &cases[i];
         const struct section wide = {.shape = SECTION_WIDE, .bottom_m = 47.0, .roughness_n = row->roughness_n};

@@ -466,7 +466,8 @@ static void every_method_delays_and_none_raises_the_peak(void **state)
     }
     assert_string_not_equal(runs[0].output, runs[1].output);
     assert_string_not_equal(runs[1].output, runs[2].output);
-    assert_string_equal(runs[2].output, runs[3].output);
+    assert_string_equal(runs[3].output,
+                        runs[4].output); /* a quick flood: the storage form's levels would come early */
     assert_string_not_equal(runs[2].output, runs[4].output);
     assert_string_not_equal(runs[4].output, runs[5].output);
     for (size_t i = 0; i < 6; i++)
@@ -494,7 +495,7 @@ static void steps_that_were_replaced_are_told(void **state)
 {
     struct run run = RUN(NULL, "route", "--config", DATA "one_reach.json", "--inflow",
                          scratch_inflow(*state, "head", "time,discharge_m3s\n0,0\n60,0\n120,150\n3600,150\n"),
-                         "--method", "dynamic");
+                         "--method", "dynamic", "--step", "60");
     assert_run(&run, EX_OK);
     assert_says(run.errors, "forewater: note: in ");
     assert_says(run.errors,
