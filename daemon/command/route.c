@@ -288,7 +288,7 @@ static enum fw_status plan_floods(struct route_plan *plan, struct fw_error *erro
         const struct hydrograph *inflow = &plan->inflow[gauge];
         if (known->flood_from == SETTINGS_FLOOD_STATED)
             plan->floods[gauge] = known->flood;
-        else if (!known->gives_level_only)
+        else if (!known->gives_level_only && inflow->count > 0 && inflow->discharge_m3s != NULL)
             plan->floods[gauge] = method_flood_of(inflow->count, inflow->time_s, inflow->discharge_m3s);
     }
     return FW_OK;
