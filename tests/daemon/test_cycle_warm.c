@@ -332,7 +332,7 @@ static void a_box_switched_off_and_on_in_mid_night_gives_the_same_bytes(void **s
         text_clear(&payloads[box]);
         static const char *const ends[] = {"", "-wal", "-shm", ".lock"};
         for (size_t end = 0; end < 4; end++) {
-            char file[80];
+            char file[160];
             snprintf(file, sizeof file, "%s%s", files[box], ends[end]);
             unlink(file);
         }
