@@ -108,7 +108,8 @@ static void a_weir_with_a_level_of_its_own_is_drowned_by_the_normal_depth_below(
     assert_true(fabs(water.product_m2_s - 1.7 * pow(head_m, 1.5) * drowned) <= 1e-9);
     /* a rougher bed below drowns it more; a smoother one lets it fall free */
     assert_true(deck_water(settings, &settings->river, BRIDGE, 2.9, 112.0, 1.02).product_m2_s < water.product_m2_s);
-    assert_true(fabs(deck_water(settings, &settings->river, BRIDGE, 2.9, 112.0, 0.8).product_m2_s - 1.7 * pow(head_m, 1.5)) <= 1e-12);
+    assert_true(fabs(deck_water(settings, &settings->river, BRIDGE, 2.9, 112.0, 0.8).product_m2_s -
+                     1.7 * pow(head_m, 1.5)) <= 1e-12);
     settings_destroy(settings);
 }
 

@@ -206,7 +206,7 @@ static void a_missing_configuration_is_78(void **state)
 
 static void make_three_faults(struct work *work)
 {
-    scene_change_config(work, "\"slope\": 0.0024, \"section\": \"ildra\" } ],",
+    scene_change_config(work, "\"slope\": 0.0024, \"section\": \"ildra\", \"method\": \"muskingum-cunge\" } ],",
                         "\"slope\": -1, \"section\": \"x\" } ],");
     scene_change_config(work, "\"invert_m\": 84.04", "\"inwert_m\": 84.04");
 }
