@@ -214,10 +214,9 @@ static void a_reach_by_the_full_equations_brings_the_water_at_the_same_time(void
     (void)state;
     int64_t likely[2];
     for (size_t run = 0; run < 2; run++) {
-        struct scene scene = run == 0
-                                 ? scene_open(NULL, NULL)
-                                 : scene_open("\"method\": \"muskingum-cunge\" },\n        // Sethick",
-                                              "\"method\": \"dynamic\" },\n        // Sethick");
+        struct scene scene = run == 0 ? scene_open(NULL, NULL)
+                                      : scene_open("\"method\": \"muskingum-cunge\" },\n        // Sethick",
+                                                   "\"method\": \"dynamic\" },\n        // Sethick");
         struct delta delta = run_with_rise(&scene, 330);
         likely[run] = scene.picture->points[0].marks[1].passage.likely_utc_s;
         assert_true(likely[run] != PASSAGE_NEVER);
