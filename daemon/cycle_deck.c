@@ -66,7 +66,7 @@ static struct run_peak peak_of_run(const struct cycle *cycle, size_t column, siz
 /* The runs' peaks, rising; the middle of an even number is the higher, as with levels. */
 static void find_peaks(const struct cycle *cycle, size_t from_step, struct deck_picture *deck)
 {
-    struct run_peak peaks[CYCLE_FORECASTS_MAX];
+    struct run_peak peaks[CYCLE_FORECASTS_MAX] = {0};
     size_t count = cycle->forecast_column_count;
     for (size_t index = 0; index < count; index++) {
         struct run_peak peak = peak_of_run(cycle, cycle->forecast_columns[index], from_step);

@@ -11,7 +11,8 @@ enum { HEAD, OTHER, FORD = 0, CAUSEWAY, SHORE = 0, NIGHT_MINUTES = 9 * 60 };
 static const char first_reach[] = "\"to\": \"tallowick-ford\", \"length_m\": 9400,";
 /* The last reach, and a point at its very end, before the others: at the bridge a rating of its own outranks the level. */
 static const char last_reach[] = "\"to\": \"low-pintle-bridge\", \"length_m\": 8300,\n"
-                                 "          \"slope\": 0.0024, \"section\": \"ildra\", \"method\": \"muskingum-cunge\" }\n    ],\n\n    \"points\": [";
+                                 "          \"slope\": 0.0024, \"section\": \"ildra\", \"method\": "
+                                 "\"muskingum-cunge\" }\n    ],\n\n    \"points\": [";
 #define LAST_REACH_WITH(outlet)                                                                                      \
     "\"to\": \"low-pintle-bridge\", \"length_m\": 8300, \"slope\": 0.0024, \"section\": \"ildra\"," outlet           \
     "} ], \"points\": [ { \"id\": \"shore\", \"reach\": \"causeway-bridge\", \"at_m\": 8300, \"invert_m\": 64.0,"    \

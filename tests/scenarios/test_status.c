@@ -66,7 +66,8 @@ static void the_picture_is_shown_with_what_a_person_needs(void **state)
     expect_in(ending.out, "CREW OUT 20:30");
     expect_in(ending.out, "the inflow is assumed");
     expect_in(ending.out, "\nTallowick Ford, water on the deck, in the highest run ");
-    expect_in(ending.out, "\n    over the draft limit of 0.3 m2/s for a small car, stationary: in some runs, earliest 22:");
+    expect_in(ending.out,
+              "\n    over the draft limit of 0.3 m2/s for a small car, stationary: in some runs, earliest 22:");
     expect_in(ending.out, "\n" DECK_CAUTION "\n");
     assert_null(strstr(ending.out, "Marren Causeway, water on the deck")); /* its settings say nothing of it */
     scene_expect_caution(ending.out);
