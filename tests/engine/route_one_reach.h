@@ -145,4 +145,17 @@ static inline struct flood_peak flood_peak_of(size_t count, const double flow_m3
     return peak;
 }
 
+/* Nash and Sutcliffe (1970): 1 is perfect, 0 no better than the mean. */
+static inline double efficiency(size_t count, const double expected[], const double routed[])
+{
+    double mean = 0.0, square = 0.0, spread = 0.0;
+    for (size_t i = 0; i < count; i++)
+        mean += expected[i] / (double)count;
+    for (size_t i = 0; i < count; i++) {
+        square += (routed[i] - expected[i]) * (routed[i] - expected[i]);
+        spread += (expected[i] - mean) * (expected[i] - mean);
+    }
+    return 1.0 - square / spread;
+}
+
 #endif

@@ -179,18 +179,6 @@ static struct full_flow_result judge(const struct named_case *named, double step
     return result;
 }
 
-static double efficiency(size_t count, const double expected[], const double routed[])
-{
-    double mean = 0.0, square = 0.0, spread = 0.0;
-    for (size_t i = 0; i < count; i++)
-        mean += expected[i] / (double)count;
-    for (size_t i = 0; i < count; i++) {
-        square += (routed[i] - expected[i]) * (routed[i] - expected[i]);
-        spread += (expected[i] - mean) * (expected[i] - mean);
-    }
-    return 1.0 - square / spread;
-}
-
 static void check_case(const struct named_case *named)
 {
     const struct method_flood flood = {named->flood.base_m3s, named->flood.base_m3s + named->flood.rise_m3s,

@@ -84,19 +84,6 @@ static const struct river_case wide_plains = {.name = "as flashy, with plains of
                                                           .plain_roughness_n = 0.07},
                                               .time_step_s = 60.0};
 
-/* Nash and Sutcliffe (1970): 1 is perfect, 0 no better than the mean. */
-static double efficiency(size_t count, const double expected[], const double routed[])
-{
-    double mean = 0.0, square = 0.0, spread = 0.0;
-    for (size_t i = 0; i < count; i++)
-        mean += expected[i] / (double)count;
-    for (size_t i = 0; i < count; i++) {
-        square += (routed[i] - expected[i]) * (routed[i] - expected[i]);
-        spread += (expected[i] - mean) * (expected[i] - mean);
-    }
-    return 1.0 - square / spread;
-}
-
 /* --- the storage form against it
  * ------------------------------------------------------------------------------------ */
 
