@@ -84,7 +84,9 @@ static void print_conditions(struct engine_bench *bench)
     for (int level = 0; level < VECTOR_LEVEL_COUNT; level++)
         if (vector_level_is_present((enum vector_level)level))
             printf("  %s %.4f", vector_level_name((enum vector_level)level), bench->triad_ns[level]);
-    printf("\n");
+    printf("\nTwo ratios to it: 'plain', the triad as any x86-64 runs it (baseline), one yardstick for all levels; "
+           "'own', that of "
+           "the kernel's own flags.\n");
 }
 
 int main(int argument_count, char *arguments[])

@@ -29,18 +29,19 @@ static size_t list_rows(bool is_smoke, struct row rows[])
     return count;
 }
 
-static void print_row(const struct row *row, double triad_ns)
+static void print_row(const struct row *row, double triad_ns, double plain_triad_ns)
 {
     const struct full_run_setup *setup = &row->setup;
     const struct dynamic_counts *counts = &row->run.counts;
     double ns = 1e9 * laps_total_s(&row->laps) / ((double)counts->iterations * (double)(setup->intervals + 1));
     double triads = ns / triad_ns;
-    printf("  %-10s %8zu %8.2f %8.1f %10.2f %9.1e", vector_level_name(setup->level), setup->members, ns, triads,
-           (double)counts->iterations / (double)counts->steps, row->imbalance);
+    printf("  %-10s %8zu %8.2f %8.1f %8.1f %10.2f %9.1e", vector_level_name(setup->level), setup->members, ns,
+           ns / plain_triad_ns, triads, (double)counts->iterations / (double)counts->steps, row->imbalance);
     if (setup->is_diffusive)
         printf("  without inertia");
     else if (setup->members == 32)
-        printf("  floor %g, aim %g: %s", floor_triads, aim_triads,
+        printf("  floor %g, aim %g: %s / %s", floor_triads, aim_triads,
+               bench_verdict_below(ns / plain_triad_ns, floor_triads, aim_triads),
                bench_verdict_below(triads, floor_triads, aim_triads));
     printf("\n");
 }
@@ -69,11 +70,12 @@ bool bench_full(struct engine_bench *bench)
     }
     printf("\nFull equations: one reach of %zu nodes through a flood; per member-node-iteration\n",
            rows[0].setup.intervals + 1);
-    printf("  %-10s %8s %8s %8s %10s %9s\n", "vectors", "members", "ns", "triads", "iterations", "imbalance");
+    printf("  %-10s %8s %8s %8s %8s %10s %9s\n", "vectors", "members", "ns", "plain", "own", "iterations",
+           "imbalance");
     for (size_t i = 0; i < count; i++) {
         if (rows[i].run.work == NULL)
             continue;
-        print_row(&rows[i], bench->triad_ns[rows[i].setup.level]);
+        print_row(&rows[i], bench->triad_ns[rows[i].setup.level], bench->triad_ns[VECTOR_BASELINE]);
         is_well = is_well && rows[i].imbalance < 1e-12 && rows[i].run.counts.replaced == 0;
         full_run_clear(&rows[i].run);
     }

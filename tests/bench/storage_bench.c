@@ -144,19 +144,23 @@ static void measure_levels(struct storage *storage, int rounds, struct level_ker
         }
 }
 
-static void print_level(const struct level_kernels *kernels, enum vector_level level, double triad_ns)
+static void print_level(const struct level_kernels *kernels, enum vector_level level, const double level_triad_ns[])
 {
     const char *name = vector_level_name(level);
+    double triad_ns = level_triad_ns[level], plain_triad_ns = level_triad_ns[VECTOR_BASELINE];
     for (size_t i = 0; i < COUNTS; i++) {
         double triads = kernels->by_members[i].ns / triad_ns;
-        printf("  %-10s %8zu %8.3f %8.1f", name, member_counts[i], kernels->by_members[i].ns, triads);
+        double plain_triads = kernels->by_members[i].ns / plain_triad_ns;
+        printf("  %-10s %8zu %8.3f %8.1f %8.1f", name, member_counts[i], kernels->by_members[i].ns, plain_triads,
+               triads);
         if (member_counts[i] == 32)
-            printf("  floor %g, aim %g: %s", floor_triads, aim_triads,
+            printf("  floor %g, aim %g: %s / %s", floor_triads, aim_triads,
+                   bench_verdict_below(plain_triads, floor_triads, aim_triads),
                    bench_verdict_below(triads, floor_triads, aim_triads));
         printf("\n");
     }
-    printf("  %-10s %8d %8.3f %8.1f  single precision\n", name, 32, kernels->single.ns,
-           kernels->single.ns / triad_ns);
+    printf("  %-10s %8d %8.3f %8.1f %8.1f  single precision\n", name, 32, kernels->single.ns,
+           kernels->single.ns / plain_triad_ns, kernels->single.ns / triad_ns);
 }
 
 struct single_figures {
@@ -240,10 +244,10 @@ bool bench_storage(struct engine_bench *bench)
     measure_levels(&storage, bench->is_smoke ? SMOKE_ROUNDS : ROUNDS, kernels);
     bench_measure_triads(bench);
     printf("\nStorage form: one step of one reach of %d cells; per member-cell-step\n", CELLS);
-    printf("  %-10s %8s %8s %8s\n", "vectors", "members", "ns", "triads");
+    printf("  %-10s %8s %8s %8s %8s\n", "vectors", "members", "ns", "plain", "own");
     for (int level = 0; level <= BENCH_STORAGE_WIDEST; level++)
         if (vector_level_is_present((enum vector_level)level))
-            print_level(&kernels[level], (enum vector_level)level, bench->triad_ns[level]);
+            print_level(&kernels[level], (enum vector_level)level, bench->triad_ns);
     struct single_figures figures = measure_single_precision(&storage);
     printf("  single precision over an 8 h flood of 72 to 104 m3/s: outflow off by at most %.1e m3/s; imbalance "
            "%.1e, in "
