@@ -57,9 +57,9 @@ static bool print_gauge(const struct check_facts *facts, size_t index, size_t ga
     struct check_lead lead;
     check_facts_lead(facts, gauge, index, &lead);
     printf("    from %s: the closing mark's own flow, %.0f m3/s, travels %.0f min; the fastest wave, %.0f m3/s with "
-           "roughness x%.1f, %.0f min\n",
+           "roughness x%.1f, %.0f min; no change there is felt in less than %.0f min\n",
            known->name, lead.closing_m3s, lead.closing_travel_s / 60.0, lead.fastest_m3s, facts->fastest_roughness,
-           lead.fastest_travel_s / 60.0);
+           lead.fastest_travel_s / 60.0, floor(lead.not_felt_before_s / 60.0));
     printf(
         "    lead on measured water, less %.0f min (a reading every %.0f, delivery %.0f): %.0f min in a slow rise, "
         "%.0f in the fastest\n",

@@ -4,7 +4,8 @@
 #include <math.h>
 
 #include "daemon/forecast_network.h"
-#include "engine/method.h"
+#include "engine/horizon.h"
+#include "engine//method.h"
 
 enum { FLOW_COUNT = CHECK_FLOW_COUNT, SEARCH_COUNT = 256 };
 
@@ -158,6 +159,31 @@ static struct wave fastest_wave(const struct check_facts *facts, size_t gauge, s
     return fastest;
 }
 
+/* Down the path, reach by reach; 0 where it cannot be computed. */
+static double not_felt_before_s(const struct check_facts *facts, size_t gauge, size_t point, double roughness_factor)
+{
+    const struct network_river *river = &facts->settings->river;
+    const struct network_point *place = &river->points[point];
+    size_t node = facts->settings->gauges[gauge].node;
+    double octaves = log2(facts->flows_m3s[FLOW_COUNT - 1] / facts->flows_m3s[0]);
+    double flow_m3s[SEARCH_COUNT + 1], total_s = 0.0;
+    for (size_t index = 0; index <= SEARCH_COUNT; index++)
+        flow_m3s[index] = facts->flows_m3s[0] * exp2(octaves * (double)index / SEARCH_COUNT);
+    for (size_t reach; (reach = network_reach_from(river, node)) != NETWORK_NONE;
+         node = river->reaches[reach].to_node) {
+        struct network_reach_steps steps;
+        struct network_reach_flow flows[SEARCH_COUNT + 1];
+        double length_m = reach == place->reach_index ? place->at_m : river->reaches[reach].length_m;
+        if (network_reach_summary(facts->network, reach, roughness_factor, SEARCH_COUNT + 1, flow_m3s, &steps,
+                                  flows) != FW_OK)
+            return 0.0;
+        total_s += horizon_not_felt_before_s(length_m, SEARCH_COUNT + 1, flows);
+        if (reach == place->reach_index)
+            return total_s;
+    }
+    return 0.0;
+}
+
 /* The flow that brings the point's level to its closing mark, not above the table's range. */
 static double closing_flow_m3s(const struct check_facts *facts, size_t point)
 {
@@ -183,6 +209,7 @@ void check_facts_lead(const struct check_facts *facts, size_t gauge, size_t poin
     struct wave fastest = fastest_wave(facts, gauge, point, facts->fastest_roughness);
     lead.fastest_m3s = fastest.flow_m3s;
     lead.fastest_travel_s = fastest.travel_s;
+    lead.not_felt_before_s = not_felt_before_s(facts, gauge, point, facts->fastest_roughness);
     lead.slow_rise_s = lead.closing_travel_s - lead.lag_s;
     lead.fastest_rise_s = lead.fastest_travel_s - lead.lag_s;
     *lead_out = lead;

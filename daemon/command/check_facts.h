@@ -37,6 +37,7 @@ struct check_lead {
     double lag_s;                         /* reading interval + delivery */
     double closing_m3s, closing_travel_s; /* the flow of the closing mark, and its wave */
     double fastest_m3s, fastest_travel_s; /* the fastest wave over the smoothest bed */
+    double not_felt_before_s;             /* engine/horizon.h, over the table's range and the smoothest bed */
     double slow_rise_s, fastest_rise_s;   /* lead on measured water: travel less lag */
 };
 

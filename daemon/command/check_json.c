@@ -113,6 +113,7 @@ static void add_lead(cJSON *array, const char *gauge_id, const struct check_lead
     add(object, "closing_mark_travel_s", lead->closing_travel_s);
     add(object, "fastest_wave_m3s", lead->fastest_m3s);
     add(object, "fastest_wave_travel_s", lead->fastest_travel_s);
+    add(object, "not_felt_before_s", lead->not_felt_before_s);
     add(object, "reading_and_delivery_s", lead->lag_s);
     add(object, "lead_slow_rise_s", lead->slow_rise_s);
     add(object, "lead_fastest_rise_s", lead->fastest_rise_s);

@@ -245,7 +245,7 @@ static void what_stands_in_the_river_is_no_fault(void **state)
 /* --- need against lead ---------------------------------------------------------------------------------------- */
 
 struct told_lead {
-    double own_flow_m3s, own_min, fastest_flow_m3s, fastest_min, lag_min, slow_lead_min, fast_lead_min;
+    double own_flow_m3s, own_min, fastest_flow_m3s, fastest_min, unfelt_min, lag_min, slow_lead_min, fast_lead_min;
 };
 
 static struct told_lead lead_of(const char *block)
@@ -257,9 +257,10 @@ static struct told_lead lead_of(const char *block)
     assert_non_null(lead);
     assert_int_equal(sscanf(from,
                             "the closing mark's own flow, %lf m3/s, travels %lf min; the fastest wave, %lf m3/s with "
-                            "roughness x%*f, %lf min",
-                            &told.own_flow_m3s, &told.own_min, &told.fastest_flow_m3s, &told.fastest_min),
-                     4);
+                            "roughness x%*f, %lf min; no change there is felt in less than %lf min",
+                            &told.own_flow_m3s, &told.own_min, &told.fastest_flow_m3s, &told.fastest_min,
+                            &told.unfelt_min),
+                     5);
     assert_int_equal(
         sscanf(lead,
                "lead on measured water, less %lf min (a reading every %*f, delivery %*f): %lf min in a slow "
@@ -282,6 +283,10 @@ static void the_ford_cannot_be_protected_at_night_by_its_gauge_alone(void **stat
     /* the fastest: just below bank full, n a fifth smoother, so 1.25 times the flow and the speed */
     assert_near(told.fastest_flow_m3s, manning_m3s(2.60) / 0.8, 2.5);
     assert_near(told.fastest_min, 9400 / (celerity_m_s(2.60) / 0.8) / 60, 1.0);
+    /* u + sqrt(g A / B) just below bank full, on the smoother bed, by hand: area 14 h + 2 h^2, width 14 + 4 h */
+    double area_m2 = 14 * 2.60 + 2 * 2.60 * 2.60;
+    double ripple_m_s = manning_m3s(2.60) / 0.8 / area_m2 + sqrt(9.80665 * area_m2 / (14 + 4 * 2.60));
+    assert_near(told.unfelt_min, 9400 / ripple_m_s / 60, 1.0);
     assert_near(told.lag_min, 15 + 1, 0.0);
     assert_near(told.slow_lead_min, told.own_min - told.lag_min, 1.0);
     assert_near(told.fast_lead_min, told.fastest_min - told.lag_min, 1.0);
