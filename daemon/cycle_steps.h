@@ -94,6 +94,11 @@ FW_MUST_CHECK enum fw_status cycle_collect(struct cycle *cycle, const struct new
                                            struct delta *delta);
 /* 2 Judge: every gauge's readings; verdicts that changed are appended; what each gauge now says. */
 FW_MUST_CHECK enum fw_status cycle_judge(struct cycle *cycle, int64_t now_utc_s, struct delta *delta);
+/*
+ * The inflow of every gauge and the level of every outlet from the present track's start on, [gauge, then level][future][step_capacity + 1], into
+ * cycle->inflow_m3s. FW_NO_MEMORY.
+ */
+FW_MUST_CHECK enum fw_status cycle_fill_inflow(struct cycle *cycle, const struct picture *picture, size_t step_count);
 /* 3 Route: measured inflow, then the assumed futures, down the tree. */
 FW_MUST_CHECK enum fw_status cycle_route(struct cycle *cycle, int64_t now_utc_s, const struct picture *picture,
                                          struct fw_error *error);
