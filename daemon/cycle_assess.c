@@ -79,11 +79,8 @@ static double unmeasured_share(const struct cycle *cycle, const struct picture *
             measured_m3s += picture->gauges[gauge].newest_discharge_m3s;
     for (size_t side = 0; side < river->side_inflow_count; side++) {
         const struct network_side_inflow *inflow = &river->side_inflows[side];
-        bool is_above = inflow->reach_index == place->reach_index
-                            ? inflow->at_m < place->at_m
-                            : network_leads_to(river, river->reaches[inflow->reach_index].to_node,
-                                               river->reaches[place->reach_index].from_node);
-        if (is_above && !is_measured_below(cycle, picture, river->reaches[inflow->reach_index].to_node))
+        if (network_side_is_above(river, inflow, place) &&
+            !is_measured_below(cycle, picture, river->reaches[inflow->reach_index].to_node))
             unmeasured_m3s += inflow->share_of_gauge == NETWORK_NONE
                                   ? inflow->constant_m3s
                                   : inflow->share * picture->gauges[inflow->share_of_gauge].newest_discharge_m3s;

@@ -165,6 +165,16 @@ static inline bool network_leads_to(const struct network_river *river, size_t fr
 struct method_flood; /* engine/method.h */
 struct method_choice;
 
+/* Does a side inflow join above a point? */
+static inline bool network_side_is_above(const struct network_river *river, const struct network_side_inflow *side,
+                                         const struct network_point *point)
+{
+    return side->reach_index == point->reach_index
+               ? side->at_m < point->at_m
+               : network_leads_to(river, river->reaches[side->reach_index].to_node,
+                                  river->reaches[point->reach_index].from_node);
+}
+
 struct network_options {
     double time_step_s;
     size_t fixed_cell_count; /* per reach; 0: chosen */

@@ -58,11 +58,7 @@ static double side_share(const struct settings *settings, size_t gauge, size_t p
     double share = 0.0;
     for (size_t side = 0; side < river->side_inflow_count; side++) {
         const struct network_side_inflow *inflow = &river->side_inflows[side];
-        bool is_above = inflow->reach_index == place->reach_index
-                            ? inflow->at_m < place->at_m
-                            : network_leads_to(river, river->reaches[inflow->reach_index].to_node,
-                                               river->reaches[place->reach_index].from_node);
-        if (is_above && inflow->share_of_gauge == gauge)
+        if (network_side_is_above(river, inflow, place) && inflow->share_of_gauge == gauge)
             share += inflow->share;
     }
     return share;
