@@ -86,12 +86,11 @@ struct dynamic_counts { /* over steps and members since the caller last set them
 };
 
 /*
- * Room for dynamic_tree_step on this tree and on any other of the same branches and sides. FW_NO_MEMORY. The caller
+ * Room for dynamic_tree_step on this tree and on any other of the same branches and sides, for any number of members. FW_NO_MEMORY. The caller
  * destroys. Members are solved in blocks, a vector of the processor's widest at a time.
  */
 struct dynamic_work;
-FW_MUST_CHECK enum fw_status dynamic_work_create(struct dynamic_work **work_out, const struct dynamic_tree *tree,
-                                                 size_t member_count);
+FW_MUST_CHECK enum fw_status dynamic_work_create(struct dynamic_work **work_out, const struct dynamic_tree *tree);
 void dynamic_work_destroy(struct dynamic_work *work); /* NULL is fine */
 
 /* No wider vectors than these from now on, to be compared or timed; returns what is used. The results are the same. */

@@ -66,10 +66,8 @@ static size_t lay_out(struct dynamic_work *work, double *room, const struct size
     return count;
 }
 
-enum fw_status dynamic_work_create(struct dynamic_work **work_out, const struct dynamic_tree *tree,
-                                   size_t member_count)
+enum fw_status dynamic_work_create(struct dynamic_work **work_out, const struct dynamic_tree *tree)
 {
-    (void)member_count; /* the room serves any number, a block at a time */
     const struct sizes sizes = {dynamic_tree_node_count(tree), tree->branch_count, tree->side_count};
     struct dynamic_work *work = calloc(1, sizeof *work);
     if (work == NULL)

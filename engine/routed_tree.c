@@ -260,7 +260,7 @@ enum fw_status routed_tree_init(struct routed_tree *tree, const struct network_r
     place_branches(tree, river, reaches);
     place_sides(tree, reaches);
     place_gauges(tree, river, reaches);
-    status = dynamic_work_create(&tree->work, &tree->trees[0], tree->member_count);
+    status = dynamic_work_create(&tree->work, &tree->trees[0]);
 cleanup:
     if (status != FW_OK)
         routed_tree_clear(tree);

@@ -55,7 +55,7 @@ bool full_run_init(struct full_run *run, const struct full_run_setup *setup, con
                                           .below = DYNAMIC_NOWHERE};
     run->tree = (struct dynamic_tree){
         .branch_count = 1, .branches = &run->branch, .momentum_factor = 1.0, .is_diffusive = setup->is_diffusive};
-    if (dynamic_work_create(&run->work, &run->tree, members) == FW_OK && set_level(run->work, setup->level))
+    if (dynamic_work_create(&run->work, &run->tree) == FW_OK && set_level(run->work, setup->level))
         return true;
     full_run_clear(run);
     return false;

@@ -102,7 +102,7 @@ static inline void channel_init(struct channel *channel, const struct channel_ca
                               .side_node = &channel->side_node};
     assert_int_equal(dynamic_tree_check(&channel->tree), FW_OK);
     channel->state = dynamic_state_create(&channel->tree, 1);
-    assert_int_equal(dynamic_work_create(&channel->work, &channel->tree, 1), FW_OK);
+    assert_int_equal(dynamic_work_create(&channel->work, &channel->tree), FW_OK);
     channel->state.inflow_m3s[0] = from->flood(0.0, from->flood_parameters);
     dynamic_tree_start_steady(&channel->tree, 1, &from->side_m3s, &channel->held_depth_m, &channel->state);
 }

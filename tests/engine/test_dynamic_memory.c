@@ -47,7 +47,7 @@ static void every_failed_allocation_is_told_and_nothing_leaks(void **state)
         allocations_until_failure = allowed;
         status = area_table_init(&table, &curve, 1.0);
         if (status == FW_OK)
-            status = dynamic_work_create(&work, &tree, 3);
+            status = dynamic_work_create(&work, &tree);
         if (status == FW_OK) {
             double area[15], discharge[15], passed[15], inflow[3] = {3.7, 0.0, 41.0}, flood[3] = {4.1, 150.0, 39.0};
             struct dynamic_state now = {area, discharge, inflow, passed};

@@ -65,7 +65,7 @@ static void grove_start(struct grove *grove, const double inflow_m3s[], const do
 {
     assert_int_equal(dynamic_tree_check(&grove->tree), FW_OK);
     grove->state = dynamic_state_create(&grove->tree, grove->member_count);
-    assert_int_equal(dynamic_work_create(&grove->work, &grove->tree, grove->member_count), FW_OK);
+    assert_int_equal(dynamic_work_create(&grove->work, &grove->tree), FW_OK);
     memcpy(grove->state.inflow_m3s, inflow_m3s, grove->tree.branch_count * grove->member_count * sizeof *inflow_m3s);
     dynamic_tree_start_steady(&grove->tree, grove->member_count, side_m3s, foot_depth_m, &grove->state);
 }

@@ -129,7 +129,7 @@ static void runner_init(struct runner *runner, const struct river *river, size_t
                               .foot_depth_m = channel_room(BRANCHES * members),
                               .side_m3 = channel_room(BRANCHES * members)};
     runner->tree.gauged_m3s = runner->gauged_m3s;
-    assert_int_equal(dynamic_work_create(&runner->work, &runner->tree, members), FW_OK);
+    assert_int_equal(dynamic_work_create(&runner->work, &runner->tree), FW_OK);
     runner_set(runner, first_member, 0, 1.0);
     memcpy(runner->state.inflow_m3s, runner->inflow_m3s, BRANCHES * members * sizeof(double));
     dynamic_tree_start_steady(&runner->tree, members, runner->side_m3, runner->foot_depth_m, &runner->state);
